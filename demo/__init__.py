@@ -1,0 +1,1 @@
+"""An invented parts warehouse whose order log the demonstration watches."""

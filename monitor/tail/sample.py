@@ -1,0 +1,46 @@
+"""What a fit is given: distinct sizes and how often each occurred."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from storage.grid import edges
+
+
+@dataclass(frozen=True, slots=True)
+class Sample:
+    """Sizes with counts, ascending. Every event is in here; nothing is sampled.
+
+    sizes   float64 (k,), distinct, > 0, finite, ascending, in the stream's unit; on the grid the
+            lower edges of the cells
+    counts  int64 (k,), >= 1: events at each size
+    cells   int64 (k,) when the sample is on the grid (storage.grid), else None
+    """
+
+    sizes: NDArray[np.float64]
+    counts: NDArray[np.int64]
+    cells: NDArray[np.int64] | None = None
+
+    @property
+    def n(self) -> int:
+        """Number of events."""
+        return int(self.counts.sum())
+
+    @property
+    def resolution(self) -> str:
+        """'exact' or 'grid'."""
+        return "exact" if self.cells is None else "grid"
+
+    @classmethod
+    def of_sizes(cls, sizes: NDArray[np.float64]) -> Sample:
+        """Count raw sizes, float64 (n,) in any order, all > 0 and finite."""
+        distinct, counts = np.unique(np.asarray(sizes, np.float64), return_counts=True)
+        return cls(distinct, counts.astype(np.int64))
+
+    @classmethod
+    def of_cells(cls, cells: NDArray[np.int64], counts: NDArray[np.int64]) -> Sample:
+        """A sample on the grid: cells int64 (k,) ascending and distinct, counts int64 (k,) >= 1."""
+        return cls(edges(cells), np.asarray(counts, np.int64), np.asarray(cells, np.int64))

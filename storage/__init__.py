@@ -1,0 +1,1 @@
+"""The facts: what was seen and decided, kept in SQLite. Imports nothing from `monitor`."""

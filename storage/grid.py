@@ -76,5 +76,7 @@ def cell_of(sizes: NDArray[np.float64]) -> NDArray[np.int64]:
     for exponent in np.unique(decades):
         here = decades == exponent
         table = _decade(int(exponent))
-        step[here] = (sizes[here] >= table[places[here] + 1]).astype(np.int64) - (sizes[here] < table[places[here]])
+        step[here] = (sizes[here] >= table[places[here] + 1]).astype(np.int64) - (
+            sizes[here] < table[places[here]]
+        )
     return np.clip(guess + step, LOWEST_CELL, HIGHEST_CELL)

@@ -1,0 +1,262 @@
+"""Read-only questions to a store: what was known, from which data. Runs beside the daemon, on a copy, or years later."""
+
+from __future__ import annotations
+
+import sqlite3
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import Any
+from urllib.parse import quote
+
+import msgspec
+from sqlite_utils import Database
+
+from storage import pane as panes
+from storage.errors import StoreCorrupt
+from storage.facts import BaselineSet, ChainState, RefitJob, RefitStored, RejectedSample, StreamState
+from storage.store import check_file, named_errors
+from storage.window import Window, sum_window
+
+
+class PaneRow(msgspec.Struct, frozen=True, kw_only=True):
+    """A sealed pane without its content."""
+
+    stream: str
+    start: int
+    end: int
+    events: int
+    late: int
+    distinct_sizes: int
+    resolution: str
+    smallest: float
+    largest: float
+    digest: str
+
+
+class OpenPane(msgspec.Struct, frozen=True, kw_only=True):
+    """A pane that still takes events in."""
+
+    stream: str
+    start: int
+    end: int
+    events: int
+
+
+class Reader:
+    """Answers from one store. Each method is one read; `snapshot` makes several see the same state."""
+
+    def __init__(self, db: Database, path: Path) -> None:
+        self.db = db
+        self.path = path
+
+    def close(self) -> None:
+        """Close the file."""
+        self.db.close()
+
+    def __enter__(self) -> Reader:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+    @contextmanager
+    def snapshot(self) -> Iterator[None]:
+        """Everything read inside sees one state of the store. Keep it short: it holds the log back."""
+        with named_errors(self.path):
+            self.db.execute("begin")
+            try:
+                yield
+            finally:
+                self.db.execute("rollback")
+
+    def _rows(self, sql: str, *arguments: object) -> list[dict[str, Any]]:
+        with named_errors(self.path):
+            return list(self.db.query(sql, list(arguments)))
+
+    def meta(self) -> dict[str, str]:
+        """Name and fixed properties of the store."""
+        return {row["key"]: row["value"] for row in self._rows("select key, value from meta")}
+
+    def settings_text(self, digest: str | None = None) -> str | None:
+        """The settings taken last, or those of a digest."""
+        rows = self._rows(
+            "select text from settings where ? is null or digest = ? order by rowid desc limit 1",
+            digest,
+            digest,
+        )
+        return rows[0]["text"] if rows else None
+
+    def settings_digest(self) -> str | None:
+        """The digest of the settings taken last."""
+        rows = self._rows("select digest from settings order by rowid desc limit 1")
+        return rows[0]["digest"] if rows else None
+
+    def streams(self) -> list[StreamState]:
+        """All streams, by name."""
+        return [
+            StreamState(
+                stream=row["stream"], feed=row["feed"], unit=row["unit"], first=row["first_ns"],
+                newest=row["newest_ns"], events=row["events"], late=row["late"],
+            )
+            for row in self._rows("select * from stream order by stream")
+        ]  # fmt: skip
+
+    def chains(self) -> list[ChainState]:
+        """All chains with their positions and accounts."""
+        return [
+            ChainState(
+                **{
+                    **row,
+                    "idle": bool(row["idle"]),
+                    "skipped": msgspec.json.decode(row["skipped"]),
+                    "rejected": msgspec.json.decode(row["rejected"]),
+                }
+            )
+            for row in self._rows("select * from chain order by feed, chain")
+        ]
+
+    def rejected_samples(self, feed: str | None = None) -> list[RejectedSample]:
+        """The rejected lines that were kept, oldest first."""
+        return [
+            RejectedSample(**row)
+            for row in self._rows(
+                "select feed, chain, reason, position, text, known_at from rejected_sample"
+                " where ? is null or feed = ? order by id",
+                feed,
+                feed,
+            )
+        ]
+
+    def watermarks(self) -> dict[str, int]:
+        """For each set of feeds, the furthest watermark that came from the clock and not from lines."""
+        return {
+            row["feeds"]: row["top"]
+            for row in self._rows("select feeds, max(to_ns) as top from advance group by 1")
+        }
+
+    def sealed_edges(self) -> dict[str, int]:
+        """End of the last sealed pane of each stream."""
+        return {
+            row["stream"]: row["top"]
+            for row in self._rows("select stream, max(to_ns) as top from pane group by 1")
+        }
+
+    def open_panes(self, stream: str | None = None) -> list[OpenPane]:
+        """Panes that are not sealed yet, by stream and time."""
+        return [
+            OpenPane(stream=row["stream"], start=row["from_ns"], end=row["to_ns"], events=row["events"])
+            for row in self._rows(
+                "select stream, from_ns, to_ns, sum(events) as events from pane_part"
+                " where ? is null or stream = ? group by stream, from_ns order by stream, from_ns",
+                stream,
+                stream,
+            )
+        ]
+
+    def panes(
+        self, stream: str | None = None, start: int | None = None, end: int | None = None
+    ) -> list[PaneRow]:
+        """Sealed panes inside [start, end), by stream and time."""
+        return [
+            PaneRow(**{**_without(row, "from_ns", "to_ns"), "start": row["from_ns"], "end": row["to_ns"]})
+            for row in self._rows(
+                "select stream, from_ns, to_ns, events, late, distinct_sizes, resolution, smallest, largest, digest"
+                " from pane where (?1 is null or stream = ?1) and (?2 is null or from_ns >= ?2)"
+                " and (?3 is null or to_ns <= ?3) order by stream, from_ns",
+                stream,
+                start,
+                end,
+            )
+        ]
+
+    def window(self, stream: str, start: int, end: int, window_distinct: int) -> Window:
+        """The sum of the sealed panes of a stream inside [start, end).
+
+        Raises StoreCorrupt naming the pane whose content does not match its checksum or digest.
+        """
+        found = []
+        for row in self._rows(
+            "select from_ns, digest, content from pane where stream = ? and from_ns >= ? and to_ns <= ? order by from_ns",
+            stream,
+            start,
+            end,
+        ):
+            try:
+                found.append((row["digest"], panes.decode(row["content"])))
+            except StoreCorrupt as error:
+                raise StoreCorrupt(f"{self.path}: pane {stream} at {row['from_ns']}: {error}") from None
+        return sum_window(start, end, found, window_distinct)
+
+    def open_content(self, stream: str, start: int) -> panes.Pane:
+        """The content so far of an open pane."""
+        distinct = int(self.meta()["distinct"])
+        rows = self._rows("select content from pane_part where stream = ? and from_ns = ?", stream, start)
+        return panes.add((panes.decode(row["content"]) for row in rows), distinct)
+
+    def refit_jobs(self) -> list[RefitJob]:
+        """Windows still waiting to be judged, in window order."""
+        return [
+            RefitJob(stream=row["stream"], start=row["from_ns"], end=row["to_ns"], settings=row["settings"],
+                     attempts=row["attempts"])
+            for row in self._rows("select * from refit_job order by to_ns, stream")
+        ]  # fmt: skip
+
+    def refits(
+        self,
+        stream: str | None = None,
+        start: int | None = None,
+        end: int | None = None,
+        last: int | None = None,
+    ) -> list[RefitStored]:
+        """Refits whose window ends inside [start, end], newest last; with `last`, the newest so many a stream."""
+        found = self._rows(
+            "select * from (select *, row_number() over (partition by stream order by to_ns desc) as place from refit"
+            " where (?1 is null or stream = ?1) and (?2 is null or to_ns >= ?2) and (?3 is null or to_ns <= ?3))"
+            " where ?4 is null or place <= ?4 order by to_ns, stream",
+            stream,
+            start,
+            end,
+            last,
+        )
+        return [
+            RefitStored(
+                **{**_without(row, "from_ns", "to_ns", "place"), "start": row["from_ns"], "end": row["to_ns"]}
+            )
+            for row in found
+        ]
+
+    def baselines(self, stream: str | None = None) -> list[BaselineSet]:
+        """All baselines, in the order they came into force."""
+        return [
+            BaselineSet(**{**row, "plausible": None if row["plausible"] is None else bool(row["plausible"])})
+            for row in self._rows(
+                "select * from baseline where ? is null or stream = ? order by stream, effective_from, rowid",
+                stream,
+                stream,
+            )
+        ]
+
+
+def _without(row: dict[str, Any], *keys: str) -> dict[str, Any]:
+    return {key: value for key, value in row.items() if key not in keys}
+
+
+def open_reader(path: Path) -> Reader:
+    """Open a store for reading.
+
+    A copy in a place that cannot be written, without its log, is opened as immutable.
+    Raises StoreMissing, StoreForeign, StoreNewer, StoreRefused or StoreCorrupt, naming the file.
+    """
+    check_file(path)
+    address = f"file:{quote(str(path.resolve()))}?mode=ro"
+    with named_errors(path):
+        try:
+            connection = sqlite3.connect(address, uri=True, isolation_level=None, timeout=10.0)
+            connection.execute("select count(*) from sqlite_schema").fetchone()
+        except sqlite3.OperationalError:
+            if path.with_name(path.name + "-wal").exists():
+                raise
+            connection = sqlite3.connect(address + "&immutable=1", uri=True, isolation_level=None)
+            connection.execute("select count(*) from sqlite_schema").fetchone()
+    return Reader(Database(connection, execute_plugins=False), path)

@@ -1,0 +1,379 @@
+"""The one writer: opens the store, holds its lock, and commits facts in one transaction each.
+
+Feed positions and everything learnt from the lines before them go into the same transaction, so that a
+process killed at any instant leaves either both or neither. Readers (storage.history) run beside it.
+"""
+
+from __future__ import annotations
+
+import fcntl
+import os
+import sqlite3
+from collections import Counter
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from pathlib import Path
+from typing import Any, TextIO
+
+import msgspec
+from sqlite_utils import Database
+
+from storage import pane as panes
+from storage.errors import (
+    StoreBusy,
+    StoreCorrupt,
+    StoreError,
+    StoreForeign,
+    StoreFull,
+    StoreMissing,
+    StoreNewer,
+    StoreRefused,
+)
+from storage.facts import (
+    Advance,
+    BaselineSet,
+    ChainState,
+    Fact,
+    PanePart,
+    PaneSealed,
+    RefitRetried,
+    RefitStored,
+    RejectedSample,
+    SettingsTaken,
+    StreamState,
+)
+from storage.grid import CELLS_PER_DECADE
+from storage.schema import APPLICATION_ID, VERSION, migrations
+
+PARTS_BEFORE_COMPACTION = 64
+SAMPLES_KEPT = 20
+"""Rejected lines kept a chain and reason: the first ones."""
+
+
+class StoreIdentity(msgspec.Struct, frozen=True, kw_only=True):
+    """What is fixed for the life of a store: its name, and how sizes are kept."""
+
+    store_id: str
+    distinct: int
+    created_at: int
+
+
+def check_file(path: Path) -> None:
+    """Refuse what is not a store of ours, without touching it.
+
+    Raises StoreMissing, StoreForeign, StoreNewer, StoreRefused or StoreCorrupt, each naming the file.
+    """
+    try:
+        with path.open("rb") as file:
+            head = file.read(100)
+    except FileNotFoundError:
+        raise StoreMissing(f"{path}: there is no store here. `tailgauge run SETTINGS` makes one.") from None
+    except (PermissionError, IsADirectoryError) as error:
+        raise StoreRefused(f"{path}: cannot be opened ({error.strerror}).") from None
+    if not head:
+        raise StoreForeign(f"{path}: the file is empty, not a store. Move it away, or name another file.")
+    if not head.startswith(b"SQLite format 3\0"):
+        raise StoreForeign(
+            f"{path}: this is not a Tailgauge store. Name another file; this one was left as it is."
+        )
+    if len(head) < 100:
+        raise StoreCorrupt(f"{path}: the file is cut off within its header. Restore it from a backup.")
+    if int.from_bytes(head[68:72], "big") != APPLICATION_ID:
+        raise StoreForeign(
+            f"{path}: an SQLite file of another program. Name another file; this one was left as it is."
+        )
+    version = int.from_bytes(head[60:64], "big")
+    if version > VERSION:
+        raise StoreNewer(
+            f"{path}: written by a later Tailgauge (schema {version}, this one knows {VERSION}). Use that version."
+        )
+
+
+@contextmanager
+def named_errors(path: Path) -> Iterator[None]:
+    """Turn SQLite's errors into ours, which name the file and the way out."""
+    try:
+        yield
+    except sqlite3.OperationalError as error:
+        text = str(error)
+        if "full" in text or "disk I/O" in text:
+            raise StoreFull(
+                f"{path}: writing failed ({text}). Free some space; nothing committed was lost."
+            ) from error
+        if "locked" in text or "busy" in text:
+            raise StoreBusy(f"{path}: another process keeps the store locked ({text}).") from error
+        if "readonly" in text or "unable to open" in text:
+            raise StoreRefused(
+                f"{path}: cannot be written ({text}). Check owner and rights of file and folder."
+            ) from error
+        raise StoreError(f"{path}: {text}.") from error
+    except sqlite3.DatabaseError as error:
+        raise StoreCorrupt(f"{path}: the file is damaged ({error}). Restore it from a backup.") from error
+
+
+class Store:
+    """The open store. Use `open_store`; close it, or use it in a `with`."""
+
+    def __init__(self, path: Path, lock: TextIO) -> None:
+        self.path = path
+        self._lock = lock
+        with named_errors(path):
+            connection = sqlite3.connect(str(path), isolation_level=None, timeout=10.0)
+            self.db = Database(connection, execute_plugins=False)
+            connection.execute("pragma journal_mode = wal")
+            connection.execute("pragma synchronous = normal")
+            connection.execute("pragma foreign_keys = on")
+            self._migrate()
+            self._parts = Counter(
+                {(row[0], row[1]): row[2] for row in self.db.execute(
+                    "select stream, from_ns, count(*) from pane_part group by stream, from_ns")})  # fmt: skip
+            self.identity = self._identity()
+
+    def _migrate(self) -> None:
+        version = self.db.execute("pragma user_version").fetchone()[0]
+        if version < VERSION:
+            migrations.apply(self.db)
+            self.db.execute(f"pragma user_version = {VERSION}")
+
+    def _identity(self) -> StoreIdentity:
+        meta = dict(self.db.execute("select key, value from meta").fetchall())
+        return StoreIdentity(
+            store_id=meta["store_id"], distinct=int(meta["distinct"]), created_at=int(meta["created_at"])
+        )
+
+    def __enter__(self) -> Store:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Close the file and give the lock back."""
+        self.db.close()
+        self._lock.close()
+
+    def commit(self, facts: Sequence[Fact]) -> None:
+        """Write facts in one transaction, in the order that their tables need.
+
+        Raises StoreFull or another StoreError; then nothing of this commit is in the store, and the same
+        facts may be given again.
+        """
+        if not facts:
+            return
+        with named_errors(self.path):
+            parts = self._parts.copy()
+            self.db.execute("begin immediate")
+            try:
+                for kind, write in self._writers():
+                    chosen = [fact for fact in facts if type(fact) is kind]
+                    if chosen:
+                        write(chosen)
+                self.db.execute("commit")
+            except BaseException:
+                self._parts = parts
+                if self.db.conn.in_transaction:
+                    self.db.execute("rollback")
+                raise
+
+    def _writers(self) -> Sequence[tuple[type[Fact], Any]]:
+        return (
+            (SettingsTaken, self._put_settings),
+            (StreamState, self._put_streams),
+            (Advance, self._put_advances),
+            (PanePart, self._put_parts),
+            (PaneSealed, self._seal),
+            (ChainState, self._put_chains),
+            (RejectedSample, self._put_samples),
+            (RefitStored, self._put_refits),
+            (RefitRetried, self._put_retries),
+            (BaselineSet, self._put_baselines),
+        )
+
+    def _put_settings(self, facts: list[SettingsTaken]) -> None:
+        self.db["settings"].insert_all(msgspec.to_builtins(fact) for fact in facts)
+
+    def _put_streams(self, facts: list[StreamState]) -> None:
+        self.db["stream"].insert_all(
+            (
+                {
+                    "stream": fact.stream, "feed": fact.feed, "unit": fact.unit, "first_ns": fact.first,
+                    "newest_ns": fact.newest, "events": fact.events, "late": fact.late,
+                }
+                for fact in facts
+            ),
+            replace=True,
+        )  # fmt: skip
+
+    def _put_advances(self, facts: list[Advance]) -> None:
+        self.db["advance"].insert_all(
+            {"feeds": fact.feeds, "to_ns": fact.to, "known_at": fact.known_at} for fact in facts
+        )
+
+    def _put_parts(self, facts: list[PanePart]) -> None:
+        self.db["pane_part"].insert_all(
+            {
+                "stream": fact.stream, "from_ns": fact.start, "to_ns": fact.end, "events": fact.content.n,
+                "content": panes.encode(fact.content),
+            }
+            for fact in facts
+        )  # fmt: skip
+        for fact in facts:
+            key = (fact.stream, fact.start)
+            self._parts[key] += 1
+            if self._parts[key] > PARTS_BEFORE_COMPACTION:
+                self._compact(fact.stream, fact.start, fact.end)
+
+    def _sum_of_parts(self, stream: str, start: int) -> panes.Pane:
+        rows = self.db.execute(
+            "select content from pane_part where stream = ? and from_ns = ?", [stream, start]
+        )
+        return panes.add((panes.decode(row[0]) for row in rows), self.identity.distinct)
+
+    def _compact(self, stream: str, start: int, end: int) -> None:
+        total = self._sum_of_parts(stream, start)
+        self.db.execute("delete from pane_part where stream = ? and from_ns = ?", [stream, start])
+        self._parts[stream, start] = 0
+        self._put_parts([PanePart(stream=stream, start=start, end=end, content=total)])
+
+    def _seal(self, facts: list[PaneSealed]) -> None:
+        rows, jobs = [], []
+        for fact in facts:
+            total = self._sum_of_parts(fact.stream, fact.start)
+            rows.append(
+                {
+                    "stream": fact.stream, "from_ns": fact.start, "to_ns": fact.end, "events": total.n,
+                    "late": total.late, "distinct_sizes": int(total.sizes.size), "resolution": total.resolution,
+                    "smallest": total.smallest, "largest": total.largest, "digest": panes.digest(total),
+                    "content": panes.encode(total), "known_at": fact.known_at,
+                }
+            )  # fmt: skip
+            jobs.append(
+                {
+                    "stream": fact.stream, "from_ns": fact.window_start, "to_ns": fact.end,
+                    "settings": fact.settings, "attempts": 0,
+                }
+            )  # fmt: skip
+            self.db.execute(
+                "delete from pane_part where stream = ? and from_ns = ?", [fact.stream, fact.start]
+            )
+            self._parts.pop((fact.stream, fact.start), None)
+        self.db["pane"].insert_all(rows)
+        self.db["refit_job"].insert_all(jobs)
+
+    def _put_chains(self, facts: list[ChainState]) -> None:
+        self.db["chain"].insert_all(
+            (
+                {
+                    **msgspec.structs.asdict(fact),
+                    "idle": int(fact.idle),
+                    "skipped": canonical_json(fact.skipped),
+                    "rejected": canonical_json(fact.rejected),
+                }
+                for fact in facts
+            ),
+            replace=True,
+        )
+
+    def _put_samples(self, facts: list[RejectedSample]) -> None:
+        for fact in facts:
+            kept = self.db.execute(
+                "select count(*) from rejected_sample where feed = ? and chain = ? and reason = ?",
+                [fact.feed, fact.chain, fact.reason],
+            ).fetchone()[0]
+            if kept < SAMPLES_KEPT:
+                self.db["rejected_sample"].insert(msgspec.structs.asdict(fact))
+
+    def _put_refits(self, facts: list[RefitStored]) -> None:
+        for fact in facts:
+            row = msgspec.structs.asdict(fact)
+            row["from_ns"], row["to_ns"] = row.pop("start"), row.pop("end")
+            self.db["refit"].insert(row, replace=True)
+            self.db.execute("delete from refit_job where stream = ? and to_ns = ?", [fact.stream, fact.end])
+
+    def _put_retries(self, facts: list[RefitRetried]) -> None:
+        for fact in facts:
+            self.db.execute(
+                "update refit_job set attempts = ? where stream = ? and to_ns = ?",
+                [fact.attempts, fact.stream, fact.end],
+            )
+
+    def _put_baselines(self, facts: list[BaselineSet]) -> None:
+        for fact in facts:
+            row = msgspec.structs.asdict(fact)
+            if fact.plausible is not None:
+                row["plausible"] = int(fact.plausible)
+            self.db["baseline"].insert(row, replace=True)
+
+
+def canonical_json(value: object) -> str:
+    """JSON with sorted keys and no spaces: equal values have equal texts."""
+    return msgspec.json.encode(value, order="deterministic").decode()
+
+
+def open_store(path: Path, *, store_id: str, now: int, distinct: int) -> Store:
+    """Open the store for writing, making it when it is absent.
+
+    Parameters: store_id, a name for a new store (the caller brings the randomness); now, ns; distinct, how
+    many different sizes a pane keeps exactly, fixed when the store is made.
+    Raises StoreBusy when another process writes it, and the errors of check_file.
+    """
+    lock = _take_lock(path)
+    try:
+        if not path.exists():
+            _create(path, StoreIdentity(store_id=store_id, distinct=distinct, created_at=now))
+        check_file(path)
+        return Store(path, lock)
+    except BaseException:
+        lock.close()
+        raise
+
+
+def _take_lock(path: Path) -> TextIO:
+    lock_path = path.with_name(path.name + ".lock")
+    try:
+        descriptor = os.open(lock_path, os.O_RDWR | os.O_CREAT | os.O_CLOEXEC, 0o600)
+    except FileNotFoundError:
+        raise StoreMissing(
+            f"{path.parent}: there is no such folder. Make it, or name another store."
+        ) from None
+    except OSError as error:
+        raise StoreRefused(
+            f"{lock_path}: cannot be made ({error.strerror}). The store's folder must be writable."
+        ) from None
+    lock = os.fdopen(descriptor, "r+")
+    try:
+        fcntl.flock(lock, fcntl.LOCK_EX | fcntl.LOCK_NB)
+    except OSError:
+        holder = lock.read().strip()
+        lock.close()
+        raise StoreBusy(
+            f"{path}: another daemon writes it (process {holder or 'unknown'}). Stop that one first."
+        ) from None
+    lock.seek(0)
+    lock.truncate()
+    lock.write(f"{os.getpid()}\n")
+    lock.flush()
+    return lock
+
+
+def _create(path: Path, identity: StoreIdentity) -> None:
+    """Make the file whole under another name first: a crash here must not leave an empty store behind."""
+    new = path.with_name(path.name + ".new")
+    new.unlink(missing_ok=True)
+    with named_errors(path):
+        try:
+            os.close(os.open(new, os.O_RDWR | os.O_CREAT | os.O_EXCL, 0o600))
+        except OSError as error:
+            raise StoreRefused(f"{path}: cannot be made ({error.strerror}).") from None
+        db = Database(sqlite3.connect(str(new), isolation_level=None), execute_plugins=False)
+        db.execute(f"pragma application_id = {APPLICATION_ID}")
+        db.execute("pragma auto_vacuum = incremental")
+        migrations.apply(db)
+        db.execute(f"pragma user_version = {VERSION}")
+        meta = {
+            "store_id": identity.store_id, "distinct": str(identity.distinct),
+            "created_at": str(identity.created_at), "cells_per_decade": str(CELLS_PER_DECADE),
+        }  # fmt: skip
+        db["meta"].insert_all({"key": key, "value": value} for key, value in meta.items())
+        db.close()
+    os.replace(new, path)

@@ -10,7 +10,7 @@ comparing it with them: the logarithms of two libraries may differ in the last b
 from __future__ import annotations
 
 from decimal import Context, Decimal
-from functools import lru_cache
+from functools import cache
 from math import log
 
 import numpy as np
@@ -27,7 +27,7 @@ LOWEST_CELL = _LOWEST_DECADE * CELLS_PER_DECADE
 HIGHEST_CELL = (_HIGHEST_DECADE + 1) * CELLS_PER_DECADE - 1
 
 
-@lru_cache(maxsize=1)
+@cache
 def _mantissas() -> tuple[str, ...]:
     """10^(j/512) for j = 0..511 to 50 digits."""
     context = Context(prec=50)
@@ -35,7 +35,7 @@ def _mantissas() -> tuple[str, ...]:
                  for j in range(CELLS_PER_DECADE))  # fmt: skip
 
 
-@lru_cache(maxsize=None)
+@cache
 def _decade(exponent: int) -> NDArray[np.float64]:
     """The 512 edges of one factor of ten, and the first of the next."""
     edges = [float(f"{mantissa}e{exponent}") for mantissa in _mantissas()]
@@ -76,7 +76,6 @@ def cell_of(sizes: NDArray[np.float64]) -> NDArray[np.int64]:
     for exponent in np.unique(decades):
         here = decades == exponent
         table = _decade(int(exponent))
-        step[here] = (sizes[here] >= table[places[here] + 1]).astype(np.int64) - (
-            sizes[here] < table[places[here]]
-        )
-    return np.clip(guess + step, LOWEST_CELL, HIGHEST_CELL)
+        step[here] = (sizes[here] >= table[places[here] + 1]).astype(np.int64) - (sizes[here] < table[places[here]])
+    cells: NDArray[np.int64] = np.clip(guess + step, LOWEST_CELL, HIGHEST_CELL)
+    return cells

@@ -1,4 +1,7 @@
-"""Read-only questions to a store: what was known, from which data. Runs beside the daemon, on a copy, or years later."""
+"""Read-only questions to a store: what was known, from which data.
+
+Runs beside the daemon, on a copy, or years later.
+"""
 
 from __future__ import annotations
 
@@ -12,9 +15,9 @@ from urllib.parse import quote
 import msgspec
 from sqlite_utils import Database
 
-from storage import pane as panes
 from storage.errors import StoreCorrupt
 from storage.facts import BaselineSet, ChainState, RefitJob, RefitStored, RejectedSample, StreamState
+from storage.pane import Pane, add, decode
 from storage.store import check_file, named_errors
 from storage.window import Window, sum_window
 
@@ -131,15 +134,13 @@ class Reader:
     def watermarks(self) -> dict[str, int]:
         """For each set of feeds, the furthest watermark that came from the clock and not from lines."""
         return {
-            row["feeds"]: row["top"]
-            for row in self._rows("select feeds, max(to_ns) as top from advance group by 1")
+            row["feeds"]: row["top"] for row in self._rows("select feeds, max(to_ns) as top from advance group by 1")
         }
 
     def sealed_edges(self) -> dict[str, int]:
         """End of the last sealed pane of each stream."""
         return {
-            row["stream"]: row["top"]
-            for row in self._rows("select stream, max(to_ns) as top from pane group by 1")
+            row["stream"]: row["top"] for row in self._rows("select stream, max(to_ns) as top from pane group by 1")
         }
 
     def open_panes(self, stream: str | None = None) -> list[OpenPane]:
@@ -154,9 +155,7 @@ class Reader:
             )
         ]
 
-    def panes(
-        self, stream: str | None = None, start: int | None = None, end: int | None = None
-    ) -> list[PaneRow]:
+    def panes(self, stream: str | None = None, start: int | None = None, end: int | None = None) -> list[PaneRow]:
         """Sealed panes inside [start, end), by stream and time."""
         return [
             PaneRow(**{**_without(row, "from_ns", "to_ns"), "start": row["from_ns"], "end": row["to_ns"]})
@@ -177,22 +176,23 @@ class Reader:
         """
         found = []
         for row in self._rows(
-            "select from_ns, digest, content from pane where stream = ? and from_ns >= ? and to_ns <= ? order by from_ns",
+            "select from_ns, digest, content from pane where stream = ? and from_ns >= ? and to_ns <= ?"
+            " order by from_ns",
             stream,
             start,
             end,
         ):
             try:
-                found.append((row["digest"], panes.decode(row["content"])))
+                found.append((row["digest"], decode(row["content"])))
             except StoreCorrupt as error:
                 raise StoreCorrupt(f"{self.path}: pane {stream} at {row['from_ns']}: {error}") from None
         return sum_window(start, end, found, window_distinct)
 
-    def open_content(self, stream: str, start: int) -> panes.Pane:
+    def open_content(self, stream: str, start: int) -> Pane:
         """The content so far of an open pane."""
         distinct = int(self.meta()["distinct"])
         rows = self._rows("select content from pane_part where stream = ? and from_ns = ?", stream, start)
-        return panes.add((panes.decode(row["content"]) for row in rows), distinct)
+        return add((decode(row["content"]) for row in rows), distinct)
 
     def refit_jobs(self) -> list[RefitJob]:
         """Windows still waiting to be judged, in window order."""
@@ -220,9 +220,7 @@ class Reader:
             last,
         )
         return [
-            RefitStored(
-                **{**_without(row, "from_ns", "to_ns", "place"), "start": row["from_ns"], "end": row["to_ns"]}
-            )
+            RefitStored(**{**_without(row, "from_ns", "to_ns", "place"), "start": row["from_ns"], "end": row["to_ns"]})
             for row in found
         ]
 

@@ -14,6 +14,7 @@ import zlib
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from hashlib import blake2b
+from typing import TypeVar
 
 import msgspec
 import numpy as np
@@ -22,13 +23,13 @@ from numpy.typing import NDArray
 from storage.errors import StoreCorrupt
 from storage.grid import cell_of, edges
 
+Key = TypeVar("Key", np.float64, np.int64)
+
 LARGEST_KEPT = 32
 """Events kept by name beside the counts: people ask which orders these were."""
 
 _MAGIC = b"TGP1"
-_HEADER = struct.Struct(
-    "<4sBBBxIqqdd"
-)  # magic, grid?, bytes a count, largest kept, entries, n, late, min, max
+_HEADER = struct.Struct("<4sBBBxIqqdd")  # magic, grid?, bytes a count, largest kept, entries, n, late, min, max
 _COUNT_TYPES = {1: "<u1", 2: "<u2", 4: "<u4", 8: "<i8"}
 
 
@@ -84,9 +85,7 @@ class Pane:
 EMPTY = Pane(np.empty(0), np.empty(0, np.int64), None, 0, float("nan"), float("nan"), ())
 
 
-def _counted(
-    keys: NDArray[np.generic], counts: NDArray[np.int64]
-) -> tuple[NDArray[np.generic], NDArray[np.int64]]:
+def _counted(keys: NDArray[Key], counts: NDArray[np.int64]) -> tuple[NDArray[Key], NDArray[np.int64]]:
     """Distinct keys ascending with their summed counts (integers, hence exact in any order)."""
     order = np.argsort(keys, kind="stable")
     keys, counts = keys[order], counts[order]
@@ -125,9 +124,7 @@ def add(panes: Iterable[Pane], distinct: int) -> Pane:
             cells, counts = _counted(cell_of(sizes), counts)
     else:
         rounded = [_rounded(pane) for pane in parts]
-        cells, counts = _counted(
-            np.concatenate([r[0] for r in rounded]), np.concatenate([r[1] for r in rounded])
-        )
+        cells, counts = _counted(np.concatenate([r[0] for r in rounded]), np.concatenate([r[1] for r in rounded]))
     if cells is not None:
         sizes = edges(cells)
     return Pane(sizes, counts, cells, late, smallest, largest, tuple(events[:LARGEST_KEPT]))
@@ -182,13 +179,11 @@ class PaneBuilder:
         if sizes.size <= distinct:
             return exact
         cells, cell_counts = _counted(cell_of(sizes), exact.counts)
-        return Pane(
-            edges(cells), cell_counts, cells, exact.late, exact.smallest, exact.largest, exact.largest_events
-        )
+        return Pane(edges(cells), cell_counts, cells, exact.late, exact.smallest, exact.largest, exact.largest_events)
 
 
 def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], bar: float) -> Sequence[int]:
-    """Indices of the events that can be among the largest kept: the top by (size, time) and all their ties."""
+    """Indices of the events that can be among the largest kept: the top by (size, time), with all ties."""
     able = np.flatnonzero(sizes >= bar)
     if able.size > LARGEST_KEPT:
         cut = np.partition(sizes[able], able.size - LARGEST_KEPT)[able.size - LARGEST_KEPT]
@@ -214,8 +209,7 @@ def _body(pane: Pane) -> bytes:
         pane.smallest, pane.largest,
     )  # fmt: skip
     events = b"".join(
-        struct.pack("<dq", event.size, event.time) + bytes.fromhex(event.digest)
-        for event in pane.largest_events
+        struct.pack("<dq", event.size, event.time) + bytes.fromhex(event.digest) for event in pane.largest_events
     )
     return header + keys.tobytes() + pane.counts.astype(_COUNT_TYPES[width]).tobytes() + events
 
@@ -237,9 +231,7 @@ def decode(blob: bytes) -> Pane:
     Raises StoreCorrupt when the CRC or the layout is wrong: SQLite's own check does not look inside a BLOB.
     """
     if len(blob) < _HEADER.size + 4 or blob[:4] != _MAGIC:
-        raise StoreCorrupt(
-            "a pane's content does not start as one: it was damaged or written by something else"
-        )
+        raise StoreCorrupt("a pane's content does not start as one: it was damaged or written by something else")
     content, (crc,) = blob[:-4], struct.unpack("<I", blob[-4:])
     if zlib.crc32(content) != crc:
         raise StoreCorrupt("a pane's content does not match its checksum: a bit of it was changed")

@@ -73,15 +73,11 @@ def check_file(path: Path) -> None:
     if not head:
         raise StoreForeign(f"{path}: the file is empty, not a store. Move it away, or name another file.")
     if not head.startswith(b"SQLite format 3\0"):
-        raise StoreForeign(
-            f"{path}: this is not a Tailgauge store. Name another file; this one was left as it is."
-        )
+        raise StoreForeign(f"{path}: this is not a Tailgauge store. Name another file; this one was left as it is.")
     if len(head) < 100:
         raise StoreCorrupt(f"{path}: the file is cut off within its header. Restore it from a backup.")
     if int.from_bytes(head[68:72], "big") != APPLICATION_ID:
-        raise StoreForeign(
-            f"{path}: an SQLite file of another program. Name another file; this one was left as it is."
-        )
+        raise StoreForeign(f"{path}: an SQLite file of another program. Name another file; this one was left as it is.")
     version = int.from_bytes(head[60:64], "big")
     if version > VERSION:
         raise StoreNewer(
@@ -97,9 +93,7 @@ def named_errors(path: Path) -> Iterator[None]:
     except sqlite3.OperationalError as error:
         text = str(error)
         if "full" in text or "disk I/O" in text:
-            raise StoreFull(
-                f"{path}: writing failed ({text}). Free some space; nothing committed was lost."
-            ) from error
+            raise StoreFull(f"{path}: writing failed ({text}). Free some space; nothing committed was lost.") from error
         if "locked" in text or "busy" in text:
             raise StoreBusy(f"{path}: another process keeps the store locked ({text}).") from error
         if "readonly" in text or "unable to open" in text:
@@ -224,9 +218,7 @@ class Store:
                 self._compact(fact.stream, fact.start, fact.end)
 
     def _sum_of_parts(self, stream: str, start: int) -> panes.Pane:
-        rows = self.db.execute(
-            "select content from pane_part where stream = ? and from_ns = ?", [stream, start]
-        )
+        rows = self.db.execute("select content from pane_part where stream = ? and from_ns = ?", [stream, start])
         return panes.add((panes.decode(row[0]) for row in rows), self.identity.distinct)
 
     def _compact(self, stream: str, start: int, end: int) -> None:
@@ -253,9 +245,7 @@ class Store:
                     "settings": fact.settings, "attempts": 0,
                 }
             )  # fmt: skip
-            self.db.execute(
-                "delete from pane_part where stream = ? and from_ns = ?", [fact.stream, fact.start]
-            )
+            self.db.execute("delete from pane_part where stream = ? and from_ns = ?", [fact.stream, fact.start])
             self._parts.pop((fact.stream, fact.start), None)
         self.db["pane"].insert_all(rows)
         self.db["refit_job"].insert_all(jobs)
@@ -333,9 +323,7 @@ def _take_lock(path: Path) -> TextIO:
     try:
         descriptor = os.open(lock_path, os.O_RDWR | os.O_CREAT | os.O_CLOEXEC, 0o600)
     except FileNotFoundError:
-        raise StoreMissing(
-            f"{path.parent}: there is no such folder. Make it, or name another store."
-        ) from None
+        raise StoreMissing(f"{path.parent}: there is no such folder. Make it, or name another store.") from None
     except OSError as error:
         raise StoreRefused(
             f"{lock_path}: cannot be made ({error.strerror}). The store's folder must be writable."

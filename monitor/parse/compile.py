@@ -1,0 +1,103 @@
+"""From the description of lines to what reads them."""
+
+from __future__ import annotations
+
+import math
+import zoneinfo
+
+from monitor import rejects as why
+from monitor.parse import csv_lines
+from monitor.parse.blocks import BOM, CODE, Findings, assemble, cut, mark_unreadable
+from monitor.parse.csv_lines import CsvReader
+from monitor.parse.json_lines import JsonReader
+from monitor.parse.lines import FormatError, LineFormat, ParsedLines, Parser
+from monitor.parse.text_lines import NumberReader, TextReader
+from monitor.rejects import Rejected
+
+_Reader = JsonReader | TextReader
+
+
+def compile_parser(format: LineFormat) -> Parser:  # noqa: A002 - the word that users see
+    """Make a parser of lines.
+
+    Raises FormatError (a SettingsError) for a description that cannot work; the message starts with the key.
+    """
+    _check(format)
+    if format.lines == "csv":
+        csv_lines.check(format)
+        return _CsvParser(format)
+    return _OneParser(format, _reader(format))
+
+
+class _OneParser:
+    """A format whose lines mean the same in every file."""
+
+    def __init__(self, format_: LineFormat, reader: _Reader) -> None:
+        self._format, self._reader = format_, reader
+
+    def parse(self, block: bytes, *, header: bytes | None = None, first: bool = False) -> ParsedLines:
+        return _parse(self._format, self._reader, block, first=first, skip_first=False)
+
+
+class _CsvParser:
+    """CSV: the header of the file decides where the columns are."""
+
+    def __init__(self, format_: LineFormat) -> None:
+        self._format = format_
+        self._named = csv_lines.has_header(format_)
+        self._known: tuple[bytes | None, CsvReader] | None = None
+
+    def parse(self, block: bytes, *, header: bytes | None = None, first: bool = False) -> ParsedLines:
+        if first and header is None:
+            header = block[: block.find(b"\n")]
+        if self._known is None or (self._named and self._known[0] != header):
+            if not block:
+                return _parse(self._format, NumberReader(self._format), b"", first=False, skip_first=False)
+            self._known = (header, CsvReader(self._format, *csv_lines.columns_of(self._format, header)))
+        return _parse(self._format, self._known[1], block, first=first, skip_first=first and self._named)
+
+
+def _parse(format_: LineFormat, reader: _Reader, block: bytes, *, first: bool, skip_first: bool) -> ParsedLines:
+    marked = len(BOM) if first and block.startswith(BOM) else 0
+    lines = cut(block[marked:] if marked else block)
+    found = Findings.of(lines.ends.size)
+    mark_unreadable(lines, found)
+    if skip_first and lines.ends.size:
+        found.verdict[0] = CODE[why.HEADER]
+    reader.read(lines, found)
+    parsed = assemble(lines, found, scale=format_.scale, has_time=format_.time is not None)
+    return _shifted(parsed, marked) if marked else parsed
+
+
+def _shifted(parsed: ParsedLines, by: int) -> ParsedLines:
+    """Offsets with the byte order mark counted; the mark belongs to the first line."""
+    starts = parsed.starts + by
+    starts[starts == by] = 0
+    samples = tuple(Rejected(s.reason, s.offset + by if s.offset else 0, s.text) for s in parsed.samples)
+    return ParsedLines(
+        parsed.lines, parsed.sizes, parsed.stamps, parsed.streams, parsed.stream_codes, starts,
+        parsed.ends + by, parsed.skipped, parsed.rejected, samples,
+    )  # fmt: skip
+
+
+def _check(format_: LineFormat) -> None:
+    if not (math.isfinite(format_.scale) and format_.scale > 0):
+        raise FormatError(f"scale: {format_.scale!r} is no factor; give a number above 0")
+    try:
+        zoneinfo.ZoneInfo(format_.timezone)
+    except (zoneinfo.ZoneInfoNotFoundError, ValueError, OSError):
+        raise FormatError(f'timezone: {format_.timezone!r} is not known; give a name such as "Europe/Lisbon"') from None
+    for field, values in format_.where:
+        if not values:
+            raise FormatError(f"where: {field!r} may have no value at all, so no line could ever match")
+
+
+def _reader(format_: LineFormat) -> _Reader:
+    if format_.lines == "json":
+        return JsonReader(format_)
+    if format_.lines == "number":
+        for key in ("size", "time", "stream", "where"):
+            if getattr(format_, key) not in (None, ()):
+                raise FormatError(f'{key}: a line of lines = "number" is one number and has no fields')
+        return NumberReader(format_)
+    raise FormatError(f"lines: {format_.lines!r} is not known")

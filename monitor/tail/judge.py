@@ -1,0 +1,202 @@
+"""One judgement of one sample: tail, goodness of fit, intervals, rivals, levels and what was assumed.
+
+This is the whole of what `fit` and every refit say. A sample without a tail is an answer too: alpha is None and
+`reason` tells why, beside whatever can be said without a law.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from monitor.tail import level
+from monitor.tail.empirical import empirical_levels
+from monitor.tail.gof import Bootstrap, Cancelled, Interrupted, Progress
+from monitor.tail.interval import alpha_at_given_xmin, of_draws
+from monitor.tail.judgement import GoodnessOfFit, Interval, Judgement, Options, Rival
+from monitor.tail.rivals import compare_rivals
+from monitor.tail.sample import Sample
+from monitor.tail.scan import law_of, why_no_tail
+from monitor.tail.tail_fit import Draws, NoTail, TailFit
+
+if TYPE_CHECKING:
+    from monitor.tail.laws.law import Law
+
+__all__ = ["Interrupted", "compile_everything", "judge"]
+
+
+@dataclass(frozen=True, slots=True)
+class _Evidence:
+    """What the bootstrap found: its answer and the refits that intervals rest on."""
+
+    gof: GoodnessOfFit | None
+    draws: Draws | None
+
+
+def judge(
+    sample: Sample,
+    options: Options,
+    *,
+    progress: Callable[[int, int], None] | None = None,
+    cancelled: Callable[[], bool] | None = None,
+) -> Judgement:
+    """Judge the tail of `sample`.
+
+    progress is told (replicates done, budget); it may end early. cancelled is asked between chunks of replicates:
+    when it says yes, Interrupted is raised. Nothing else is raised for data that can be counted at all.
+    """
+    refusal = why_no_tail(sample, options)
+    if refusal is not None:
+        return _without_tail(sample, options, refusal)
+    law = law_of(sample, options)
+    fit = law.fit()
+    if isinstance(fit, NoTail):
+        return _without_tail(sample, options, fit)
+    evidence = _evidence(law, fit, options, progress, cancelled)
+    rivals = compare_rivals(sample, xmin=fit.xmin, alpha=fit.alpha, counting=fit.counting) if options.rivals else ()
+    return _with_tail(sample, options, fit, evidence, rivals=rivals, fixed=alpha_at_given_xmin(fit, law))
+
+
+def _evidence(
+    law: Law, fit: TailFit, options: Options, progress: Progress | None, cancelled: Cancelled | None
+) -> _Evidence:
+    if options.replicates <= 0:
+        return _Evidence(None, None)
+    bootstrap = Bootstrap(law, fit, options)
+    tally = bootstrap.run(progress=progress, cancelled=cancelled)
+    gof = bootstrap.answer(tally)
+    # Replicates of a law that is not believed say nothing about the spread of the real one.
+    draws = tally.draws(fit.n) if gof.plausible else bootstrap.resampled(progress=progress, cancelled=cancelled)
+    return _Evidence(gof, draws)
+
+
+def _with_tail(
+    sample: Sample,
+    options: Options,
+    fit: TailFit,
+    evidence: _Evidence,
+    *,
+    rivals: tuple[Rival, ...],
+    fixed: Interval,
+) -> Judgement:
+    draws, gof = evidence.draws, evidence.gof
+    plausible = gof.plausible if gof is not None else None
+    alpha_interval = of_draws(draws.alpha) if draws is not None else fixed
+    finite = level.finite(alpha_interval)
+    return Judgement(
+        n=fit.n,
+        counting=fit.counting,
+        resolution="exact" if sample.cells is None else "grid",
+        alpha=fit.alpha,
+        alpha_se=fit.alpha_se,
+        alpha_interval=alpha_interval,
+        alpha_interval_fixed_xmin=fixed,
+        xmin=fit.xmin,
+        xmin_interval=of_draws(draws.xmin) if draws is not None and fit.chosen else None,
+        n_tail=fit.n_tail,
+        n_tail_interval=of_draws(draws.n_tail) if draws is not None else None,
+        ks_distance=fit.ks_distance,
+        gof=gof,
+        near_minimum=fit.near_minimum,
+        rivals=rivals,
+        levels=level.levels(sample, fit, draws, options, rivals, plausible),
+        mean_finite=finite.mean,
+        variance_finite=finite.variance,
+        events_per_day=options.events_per_day,
+        limit=level.limit(sample, fit, draws, options),
+        largest=level.largest(sample, fit, draws, options, alpha_interval=alpha_interval),
+        top_share=level.top_share(fit, draws, alpha_interval=alpha_interval),
+        empirical=empirical_levels(sample, options.one_in),
+        smallest_size=float(sample.sizes[0]),
+        largest_size=float(sample.sizes[-1]),
+        assumed=_assumed(sample, options, fit, evidence),
+        warnings=tuple(_fit_warnings(fit, finite, gof)),
+        seed=options.seed,
+    )
+
+
+def _without_tail(sample: Sample, options: Options, refusal: NoTail) -> Judgement:
+    usable = sample.sizes.size > 0 and bool(sample.sizes[0] > 0.0)
+    return Judgement(
+        n=sample.n,
+        counting=options.counting,
+        resolution="exact" if sample.cells is None else "grid",
+        reason=refusal.reason,
+        events_per_day=options.events_per_day,
+        empirical=empirical_levels(sample, options.one_in) if usable else (),
+        smallest_size=float(sample.sizes[0]) if sample.sizes.size else None,
+        largest_size=float(sample.sizes[-1]) if sample.sizes.size else None,
+        assumed=(_kind(options),),
+        seed=options.seed,
+    )
+
+
+def _kind(options: Options) -> str:
+    if options.counting == "whole":
+        return "sizes are whole numbers: the discrete power law is fitted"
+    return "sizes are measured: the continuous power law is fitted"
+
+
+def _assumed(sample: Sample, options: Options, fit: TailFit, evidence: _Evidence) -> tuple[str, ...]:
+    said = [_kind(options)]
+    if sample.cells is not None:
+        said.append("sizes are rounded down to a grid of 512 cells per factor of ten, about 0.45 % apart")
+    if fit.chosen:
+        said.append(f"a tail holds at least {options.min_tail} events; its lower end is the nearest in KS distance")
+    elif sample.cells is not None and fit.xmin != options.xmin:
+        said.append(f"the lower end of the tail is given, and begins with its cell of the grid at {fit.xmin:.6g}")
+    else:
+        said.append("the lower end of the tail is given, and taken as known")
+    ties = fit.n - sample.sizes.size
+    if ties and sample.cells is None and options.counting == "measured":
+        said.append(
+            f"{ties / fit.n:.1%} of the events repeat the size of another; replicates are not rounded like that, "
+            "so that p leans to the low side"
+        )
+    said.append(_interval_source(evidence.draws))
+    return tuple(said)
+
+
+def _interval_source(draws: Draws | None) -> str:
+    if draws is None:
+        return "no replicates: the interval of alpha takes the lower end of the tail as known"
+    if draws.source == "data":
+        return (
+            f"intervals come from {draws.alpha.size} samples drawn from the data themselves, since the power law is "
+            "not plausible"
+        )
+    return f"intervals come from {draws.alpha.size} replicates of the fitted power law, each choosing its own tail"
+
+
+def _fit_warnings(fit: TailFit, finite: level.Finite, gof: GoodnessOfFit | None) -> list[str]:
+    said = []
+    if finite.mean is False:
+        said.append("the mean of this tail is infinite (alpha is at most 2): an average of its sizes never settles")
+    elif finite.mean is None:
+        said.append("whether the mean of this tail is finite is undecided: the interval of alpha holds 2")
+    if finite.variance is False and finite.mean is not False:
+        said.append("the variance of this tail is infinite (alpha is at most 3): a standard deviation never settles")
+    elif finite.variance is None and finite.mean:
+        said.append("whether the variance of this tail is finite is undecided: the interval of alpha holds 3")
+    if gof is not None and not gof.plausible:
+        said.append(
+            f"a power law is ruled out (p {gof.p:.3g}, at or below {gof.rule_out:g}); the tail is nowhere more than "
+            f"{100 * fit.ks_distance:.2g} % of its events off"
+        )
+    if gof is not None and gof.doubtful:
+        said.append(
+            f"doubtful: p could lie on either side of {gof.rule_out:g} "
+            f"({gof.p_interval[0]:.3f} to {gof.p_interval[1]:.3f} after {gof.replicates} replicates)"
+        )
+    return said
+
+
+def compile_everything() -> None:
+    """Run every compiled loop once on a small sample, so that no later judgement waits for the compiler.
+
+    The first time on a machine this takes seconds; after that the loops come from the cache on disk.
+    """
+    from monitor.tail.warm import warm
+
+    warm()

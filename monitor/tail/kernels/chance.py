@@ -1,0 +1,281 @@
+"""Random numbers for replicates: each replicate has a generator of its own, addressed by (key, replicate).
+
+The state of xoshiro256++ (D. Blackman & S. Vigna, Scrambled linear pseudorandom number generators, ACM
+Transactions on Mathematical Software 47 (2021) 36) is filled by SplitMix64 (G. Steele, D. Lea & C. Flood,
+OOPSLA 2014) from the key and the number of the replicate. So a replicate does not depend on which thread draws
+it, when, or after which others. The laws are exact up to the 53 bits of a double.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.tail.kernels.arithmetic import exp_nonpositive, log_one_plus, log_ratio, logarithm
+from monitor.tail.kernels.compiling import helper, kernel
+
+_GOLDEN = np.uint64(0x9E3779B97F4A7C15)
+_MIX_1 = np.uint64(0xBF58476D1CE4E5B9)
+_MIX_2 = np.uint64(0x94D049BB133111EB)
+_UNIT = 1.0 / 9007199254740992.0  # 2^-53
+
+
+@helper
+def mixed(z):
+    """SplitMix64's finaliser: a bijection of 64-bit words in which every bit touches every other."""
+    z = (z ^ (z >> np.uint64(30))) * _MIX_1
+    z = (z ^ (z >> np.uint64(27))) * _MIX_2
+    return z ^ (z >> np.uint64(31))
+
+
+@helper
+def start(state, key, replicate):
+    """Fill uint64 (4,) `state` for this replicate."""
+    word = mixed(np.uint64(key) + _GOLDEN * (np.uint64(replicate) + np.uint64(1)))
+    for k in range(4):
+        word = word + _GOLDEN
+        state[k] = mixed(word)
+
+
+@helper
+def _rotated(x, k):
+    return (x << np.uint64(k)) | (x >> np.uint64(64 - k))
+
+
+@helper
+def word(state):
+    """The next 64 random bits."""
+    out = _rotated(state[0] + state[3], 23) + state[0]
+    shifted = state[1] << np.uint64(17)
+    state[2] ^= state[0]
+    state[3] ^= state[1]
+    state[1] ^= state[2]
+    state[0] ^= state[3]
+    state[2] ^= shifted
+    state[3] = _rotated(state[3], 45)
+    return out
+
+
+@helper
+def uniform(state):
+    """Uniform on the open interval (0, 1)."""
+    return (np.float64(word(state) >> np.uint64(11)) + 0.5) * _UNIT
+
+
+# -- exponential: ziggurat with 256 layers (G. Marsaglia & W. W. Tsang, Journal of Statistical Software 5 (2000) 8)
+_EDGE = 7.69711747013104972
+_AREA = 0.0039496598225815571993
+
+
+@kernel
+def _layers(edges, heights):
+    """Right edges of the layers and the density there, from our own exp and log so that they never differ."""
+    edges[0] = _AREA / exp_nonpositive(-_EDGE)
+    edges[1] = _EDGE
+    for i in range(2, 256):
+        edges[i] = -logarithm(exp_nonpositive(-edges[i - 1]) + _AREA / edges[i - 1])
+    edges[256] = 0.0
+    for i in range(257):
+        heights[i] = exp_nonpositive(-edges[i])
+
+
+def _tables() -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    edges = np.zeros(257)
+    heights = np.zeros(257)
+    _layers(edges, heights)
+    return edges, heights
+
+
+_EDGES, _HEIGHTS = _tables()
+
+
+@helper
+def _exponential_rare(state, layer, x):
+    """The one draw in a hundred that the layer's rectangle does not settle; below 0: draw again."""
+    height = _HEIGHTS[layer] + (_HEIGHTS[layer + 1] - _HEIGHTS[layer]) * uniform(state)
+    if height < exp_nonpositive(-x):
+        return x
+    return -1.0
+
+
+@helper
+def exponential_draw(state):
+    """One draw from the exponential law of mean 1."""
+    past = 0.0
+    while True:
+        bits = word(state)
+        layer = np.int64(bits & np.uint64(255))
+        x = np.float64(bits >> np.uint64(11)) * _UNIT * _EDGES[layer]
+        if x < _EDGES[layer + 1]:
+            return past + x
+        if layer == 0:
+            past += _EDGE  # beyond the last layer the law begins afresh
+            continue
+        x = _exponential_rare(state, layer, x)
+        if x >= 0.0:
+            return past + x
+
+
+# -- binomial
+@helper
+def _log1m(p):
+    """ln(1 - p) for 0 < p <= 1/2."""
+    if p < 0.29:
+        return log_one_plus(-p)
+    return logarithm(1.0 - p)
+
+
+@helper
+def _by_waiting(state, n, p):
+    """Binomial by waiting times: failures before each success are geometric. About n p + 1 draws."""
+    scale = -1.0 / _log1m(p)
+    successes = 0
+    trials = 0.0
+    while True:
+        trials += np.floor(exponential_draw(state) * scale) + 1.0
+        if trials > n:
+            return successes
+        successes += 1
+
+
+@helper
+def _stirling(k):
+    """ln k! minus Stirling's formula at k + 1 (the correction of W. Hoermann 1993, table for small k)."""
+    if k < 10:
+        return _STIRLING[k]
+    v = 1.0 / (k + 1.0)
+    return (1.0 / 12.0 - (1.0 / 360.0 - v * v / 1260.0) * v * v) * v
+
+
+_STIRLING = np.array(
+    [
+        0.08106146679532726, 0.04134069595540929, 0.02767792568499834, 0.02079067210376509, 0.01664469118982119,
+        0.01387612882307075, 0.01189670994589177, 0.01041126526197209, 0.009255462182712733, 0.008330563433362871,
+    ]
+)  # fmt: skip
+
+
+@helper
+def _signed_log_ratio(a, b):
+    if a >= b:
+        return log_ratio(a, b)
+    return -log_ratio(b, a)
+
+
+@helper
+def _log_weight(n, p, k, mode):
+    """ln of the binomial probability of k over that of the mode."""
+    odds = p / (1.0 - p)
+    return (
+        (mode + 0.5) * _signed_log_ratio(mode + 1.0, odds * (n - mode + 1.0))
+        + (n + 1.0) * _signed_log_ratio(n - mode + 1.0, n - k + 1.0)
+        + (k + 0.5) * _signed_log_ratio(odds * (n - k + 1.0), k + 1.0)
+        + (_stirling(np.int64(mode)) + _stirling(np.int64(n - mode)))
+        - (_stirling(np.int64(k)) + _stirling(np.int64(n - k)))
+    )
+
+
+@helper
+def _by_rejection(state, n, p):
+    """Binomial by transformed rejection with squeeze, for n p >= 10 and p <= 1/2.
+
+    Algorithm BTRS of W. Hoermann, The generation of binomial random variates, Journal of Statistical
+    Computation and Simulation 46 (1993) 101-110; constants of that paper.
+    """
+    spread = np.sqrt(n * p * (1.0 - p))
+    b = 1.15 + 2.53 * spread
+    a = -0.0873 + 0.0248 * b + 0.01 * p
+    c = n * p + 0.5
+    sure = 0.92 - 4.2 / b
+    alpha = (2.83 + 5.1 / b) * spread
+    mode = np.floor((n + 1.0) * p)
+    while True:
+        u = uniform(state) - 0.5
+        v = uniform(state)
+        us = 0.5 - abs(u)
+        k = np.floor((2.0 * a / us + b) * u + c)
+        if k < 0.0 or k > n:
+            continue
+        if us >= 0.07 and v <= sure:
+            return np.int64(k)
+        if logarithm(v * alpha / (a / (us * us) + b)) <= _log_weight(n, p, k, mode):
+            return np.int64(k)
+
+
+@kernel
+def binomial(state, n, p):
+    """Number of successes in n trials of chance p (int64 n >= 0, 0 <= p <= 1)."""
+    if n <= 0 or p <= 0.0:
+        return np.int64(0)
+    if p >= 1.0:
+        return np.int64(n)
+    q = p if p <= 0.5 else 1.0 - p
+    trials = np.float64(n)
+    k = np.int64(_by_waiting(state, trials, q)) if trials * q < 10.0 else _by_rejection(state, trials, q)
+    return k if p <= 0.5 else np.int64(n - k)
+
+
+# -- draws with replacement
+@kernel
+def _pick_one_by_one(state, draws, owner, total, counts):
+    """Histogram of `draws` uniform picks among `total` events; owner[e] is the row of event e (empty: row e).
+
+    Two 32-bit picks from each 64-bit word, without bias (D. Lemire, ACM TOMACS 29 (2019) 3).
+    """
+    width = np.uint64(total)
+    unfair = np.uint64((4294967296 - total) % total)
+    same = owner.size == 0
+    done = 0
+    while done < draws:
+        bits = word(state)
+        for _ in range(2):
+            product = (bits & np.uint64(0xFFFFFFFF)) * width
+            bits = bits >> np.uint64(32)
+            if (product & np.uint64(0xFFFFFFFF)) < unfair or done == draws:
+                continue
+            event = np.int64(product >> np.uint64(32))
+            counts[event if same else np.int64(owner[event])] += 1
+            done += 1
+
+
+@kernel
+def _pick_by_rows(state, draws, weights, total, counts):
+    """The same histogram by one binomial a row: the cost is that of the rows, not of the draws."""
+    left = np.int64(draws)
+    weight_left = np.float64(total)
+    for i in range(counts.size):
+        if left == 0:
+            return
+        c = binomial(state, left, weights[i] / weight_left)
+        counts[i] = c
+        left -= c
+        weight_left -= weights[i]
+
+
+@kernel
+def resampled(state, draws, weights, owner, counts):
+    """Histogram `counts` of `draws` events drawn with replacement from rows holding `weights` events.
+
+    Parameters: weights int64 (k,); owner int32 (events,) row of each event when the picks are to be made one
+    by one, of length 1 when each row holds one event, else empty: then one binomial is drawn a row.
+    """
+    counts[:] = 0
+    if draws == 0:
+        return
+    if owner.size == 1:
+        _pick_one_by_one(state, draws, owner[:0], weights.size, counts)
+    elif owner.size > 1:
+        _pick_one_by_one(state, draws, owner, owner.size, counts)
+    else:
+        _pick_by_rows(state, draws, weights, weights.sum(), counts)
+
+
+def key_of(seed: int, purpose: int) -> Any:
+    """The key of one family of replicates: a 64-bit word from the seed and what it is used for."""
+    mask = (1 << 64) - 1
+    z = (seed * 0x9E3779B97F4A7C15 + purpose * 0xD1B54A32D192ED03 + 0x2545F4914F6CDD1D) & mask
+    z = ((z ^ (z >> 30)) * 0xBF58476D1CE4E5B9) & mask
+    z = ((z ^ (z >> 27)) * 0x94D049BB133111EB) & mask
+    return np.uint64(z ^ (z >> 31))

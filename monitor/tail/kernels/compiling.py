@@ -1,0 +1,15 @@
+"""How every loop is compiled: one place for the flags that results depend on.
+
+No fast-math anywhere: without it the compiler may neither reorder sums nor fuse a product with a sum, so that
+the same numbers come out on every processor, for every number of threads and for every width of vector unit.
+"""
+
+from __future__ import annotations
+
+from numba import njit
+
+kernel = njit(nogil=True, cache=True, error_model="numpy", fastmath=False)
+"""A loop called from Python or large enough to stand alone; compiled once and cached on disk."""
+
+helper = njit(nogil=True, forceinline=True, error_model="numpy", fastmath=False)
+"""A few operations that disappear into the kernel calling them."""

@@ -22,9 +22,9 @@ CELL_WIDTH = log(10.0) / CELLS_PER_DECADE
 
 # Doubles span 4.9e-324 .. 1.8e308; the lowest decade is cut at the smallest normal double.
 _LOWEST_DECADE = -308
-_HIGHEST_DECADE = 308
 LOWEST_CELL = _LOWEST_DECADE * CELLS_PER_DECADE
-HIGHEST_CELL = (_HIGHEST_DECADE + 1) * CELLS_PER_DECADE - 1
+HIGHEST_CELL = 157_826
+"""The cell of the largest double: floor(512 log10(1.797...e308))."""
 
 
 @cache

@@ -1,0 +1,209 @@
+"""Lines into panes: accounts, effective times, and the events of each stream to the pane of their time."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from monitor.engine.clockwork import Rules, effective_times
+from monitor.engine.state import Chain, State, Stream, WaitingEvent
+from monitor.engine.stimuli import Arrived, ChainSeen, Lines
+from storage.facts import RejectedSample
+from storage.pane import PaneBuilder
+
+AHEAD = "stamp far ahead"
+"""Reason under which a line is counted whose stamp no later line bore out."""
+
+
+def chain_seen(state: State, seen: ChainSeen) -> None:
+    """A chain exists. One found after panes were sealed gets their end as its edge."""
+    chain = _chain(state, seen.feed, seen.chain, seen.now)
+    chain.at_end = seen.at_end
+    chain.dated = seen.quiet_since is not None
+    if seen.quiet_since is not None:
+        chain.quiet_since = seen.quiet_since
+    elif chain.quiet_since is None:
+        chain.quiet_since = seen.now
+
+
+def _chain(state: State, feed: str, name: str, now: int) -> Chain:
+    chain = state.chains.get((feed, name))
+    if chain is None:
+        chain = state.chains[feed, name] = Chain(feed, name, edge=_sealed_edge(state, feed))
+    return chain
+
+
+def _sealed_edge(state: State, feed: str) -> int | None:
+    """The furthest watermark that a line of this feed could fall behind."""
+    marks = [mark for feeds, mark in state.marks.items() if feed in feeds]
+    return max(marks) if marks else None
+
+
+def arrived(state: State, stimulus: Arrived) -> None:
+    """Take the lines of one block in."""
+    chain = _chain(state, stimulus.feed, stimulus.chain, stimulus.now)
+    lines = stimulus.lines
+    if lines.count:
+        if not chain.dated:
+            chain.quiet_since = stimulus.now
+        if chain.idle:
+            chain.idle = False
+            edges = [edge for edge in (chain.edge, _sealed_edge(state, chain.feed)) if edge is not None]
+            chain.edge = max(edges) if edges else None
+    chain.changed = True
+    chain.bookmark = stimulus.bookmark
+    chain.lines += lines.count
+    chain.skipped.update(lines.skipped)
+    chain.rejected.update(lines.rejected)
+    _keep_samples(state, stimulus)
+    if not lines.sizes.size:
+        return
+    if lines.stamps is None:
+        chain.running_max = max(stimulus.now, chain.running_max or stimulus.now)
+        times = np.full(lines.sizes.size, max(chain.running_max, chain.edge or chain.running_max), np.int64)
+        _count(state, chain, lines, times, np.zeros(times.size, bool))
+    else:
+        _count_timed(state, chain, lines, lines.stamps)
+
+
+def _keep_samples(state: State, stimulus: Arrived) -> None:
+    state.samples.extend(
+        RejectedSample(
+            feed=stimulus.feed, chain=stimulus.chain, reason=line.reason, position=line.position, text=line.text,
+            known_at=stimulus.now,
+        )
+        for line in stimulus.lines.samples
+    )  # fmt: skip
+
+
+def _count_timed(state: State, chain: Chain, lines: Lines, stamps: NDArray[np.int64]) -> None:
+    rules = Rules(lateness=state.plan.lateness, ahead=state.plan.ahead)
+    if chain.waiting is not None:
+        lines, stamps = _with_waiting(chain.waiting, lines, stamps)
+    timed = effective_times(stamps, chain.running_max, chain.edge, rules, waits=chain.waiting is not None)
+    if timed.refused:
+        chain.rejected[AHEAD] += len(timed.refused)
+    chain.waiting = None if timed.waiting is None else _waiting(lines, stamps, timed.waiting)
+    chain.running_max = timed.running_max
+    if timed.accepted.size != stamps.size:
+        lines = _chosen(lines, timed.accepted)
+    _count(state, chain, lines, timed.effective, timed.late)
+
+
+def count_waiting(state: State) -> None:
+    """The files have ended: a chain's only line, which waited for company, counts after all."""
+    for chain in state.chains.values():
+        if chain.waiting is not None and chain.running_max is None:
+            nothing = Lines(
+                count=0, sizes=np.empty(0), stamps=None, names=[], codes=np.empty(0, np.int32), describe=_undescribed
+            )
+            lines, stamps = _with_waiting(chain.waiting, nothing, np.empty(0, np.int64))
+            chain.running_max = chain.waiting.stamp
+            chain.waiting = None
+            chain.changed = True
+            times = np.maximum(stamps, chain.edge) if chain.edge is not None else stamps
+            _count(state, chain, lines, times, times > stamps)
+
+
+def _undescribed(i: int) -> tuple[str, str]:
+    raise IndexError(i)
+
+
+def _waiting(lines: Lines, stamps: NDArray[np.int64], i: int) -> WaitingEvent:
+    digest, place = lines.describe(i)
+    return WaitingEvent(
+        size=float(lines.sizes[i]), stamp=int(stamps[i]), stream=lines.names[lines.codes[i]], digest=digest, place=place
+    )
+
+
+def _with_waiting(waiting: WaitingEvent, lines: Lines, stamps: NDArray[np.int64]) -> tuple[Lines, NDArray[np.int64]]:
+    """The waiting event put in front of the new ones."""
+    names = [*lines.names, waiting.stream]
+    codes = np.concatenate((np.array([len(names) - 1], np.int32), lines.codes))
+    later = lines.describe
+
+    def describe(i: int) -> tuple[str, str]:
+        return (waiting.digest, waiting.place) if i == 0 else later(i - 1)
+
+    joined = Lines(
+        count=lines.count + 1,
+        sizes=np.concatenate(([waiting.size], lines.sizes)),
+        stamps=None,
+        names=names,
+        codes=codes,
+        describe=describe,
+    )
+    return joined, np.concatenate((np.array([waiting.stamp], np.int64), stamps))
+
+
+def _chosen(lines: Lines, accepted: NDArray[np.int64]) -> Lines:
+    whole = lines.describe
+
+    def describe(i: int) -> tuple[str, str]:
+        return whole(int(accepted[i]))
+
+    return Lines(
+        count=accepted.size, sizes=lines.sizes[accepted], stamps=None, names=lines.names,
+        codes=lines.codes[accepted], describe=describe,
+    )  # fmt: skip
+
+
+def _count(state: State, chain: Chain, lines: Lines, times: NDArray[np.int64], late: NDArray[np.bool_]) -> None:
+    """Each event to the pane of its effective time."""
+    chain.events += times.size
+    chain.late += int(late.sum())
+    state.uncommitted += times.size
+    pane = state.plan.pane
+    starts = times // pane
+    if not times.size:
+        return
+    order = None
+    if lines.codes[0] != lines.codes[-1] or starts[0] != starts[-1] or _varies(lines.codes) or _varies(starts):
+        order = np.lexsort((starts, lines.codes))
+    codes, panes = (lines.codes, starts) if order is None else (lines.codes[order], starts[order])
+    cuts = np.flatnonzero((codes[1:] != codes[:-1]) | (panes[1:] != panes[:-1])) + 1
+    for low, high in zip([0, *cuts.tolist()], [*cuts.tolist(), times.size], strict=True):
+        chosen = slice(low, high) if order is None else order[low:high]
+        name = lines.names[codes[low]] or chain.feed
+        _put(state, chain, name, int(panes[low]) * pane, _Some(lines, times, late, chosen))
+
+
+def _varies(values: NDArray[np.int32] | NDArray[np.int64]) -> bool:
+    return bool((values != values[0]).any())
+
+
+class _Some:
+    """The part of a block that belongs to one pane."""
+
+    def __init__(
+        self, lines: Lines, times: NDArray[np.int64], late: NDArray[np.bool_], chosen: slice | NDArray[np.int64]
+    ) -> None:
+        self.sizes = lines.sizes[chosen]
+        self.times = times[chosen]
+        self.late = int(late[chosen].sum())
+        self._chosen = chosen
+        self._describe = lines.describe
+
+    def describe(self, i: int) -> tuple[str, str]:
+        """Digest and place of its event i."""
+        chosen = self._chosen
+        return self._describe(i + (chosen.start or 0) if isinstance(chosen, slice) else int(chosen[i]))
+
+
+def _put(state: State, chain: Chain, name: str, start: int, some: _Some) -> None:
+    first, newest = int(some.times.min()), int(some.times.max())
+    stream = state.streams.get(name)
+    if stream is None:
+        unit = next(feed.unit for feed in state.plan.feeds if feed.name == chain.feed)
+        unit = state.plan.stream(name, unit).unit
+        stream = state.streams[name] = Stream(name, chain.feed, unit, first, newest)
+    stream.first = min(stream.first, first)
+    stream.newest = max(stream.newest, newest)
+    stream.events += some.sizes.size
+    stream.late += some.late
+    stream.changed = True
+    stream.open.add(start)
+    builder = stream.builders.get(start)
+    if builder is None:
+        builder = stream.builders[start] = PaneBuilder()
+    builder.add(some.sizes, some.times, some.late, some.describe)

@@ -1,0 +1,201 @@
+"""Refits: which window is judged next, with what, and what its outcome leads to."""
+
+from __future__ import annotations
+
+from hashlib import blake2b
+from typing import Any
+
+import msgspec
+
+from monitor.engine.state import State
+from monitor.engine.stimuli import Judged, Outcome
+from monitor.plan import PlannedTail, StreamPlan
+from monitor.plan.spans import DAY
+from monitor.tail.compare import Comparison, compare_with_fit, compare_with_plan
+from monitor.tail.judge import judge
+from monitor.tail.judgement import Counting, Judgement, Options
+from monitor.tail.sample import Sample
+from monitor.watch.flags import flags_of
+from storage.facts import BaselineSet, Fact, RefitJob, RefitRetried, RefitStored
+from storage.window import Window
+
+ATTEMPTS = 3
+"""Times a window is tried before its refit is stored as failed."""
+
+
+class RefitRequest(msgspec.Struct, frozen=True, kw_only=True):
+    """Everything the worker needs to judge one window, beside the store."""
+
+    job: RefitJob
+    options: Options
+    window_distinct: int
+    first: int
+    """First event of the stream: a young stream's rate counts only the time it exists."""
+    baseline: BaselineSet | None
+
+
+def natural_seed(settings_seed: int, *parts: object) -> int:
+    """A seed below 2^53 that depends on what is drawn for, never on the order of completion."""
+    text = "\n".join(str(part) for part in (settings_seed, *parts))
+    return int.from_bytes(blake2b(text.encode(), digest_size=8).digest(), "big") >> 11
+
+
+def natural_id(*parts: object) -> str:
+    """A short name that equal content always gets: 12 bytes of BLAKE2b in hex."""
+    return blake2b("\n".join(str(part) for part in parts).encode(), digest_size=12).hexdigest()
+
+
+def next_request(state: State) -> RefitRequest | None:
+    """The first committed job in window order, with all the worker needs; None when nothing waits."""
+    if not state.jobs:
+        return None
+    job = state.jobs[0]
+    stream = state.streams[job.stream]
+    plan = state.plan.stream(job.stream, stream.unit)
+    seed = natural_seed(state.plan.seed, job.stream, job.start, job.end, "refit")
+    return RefitRequest(
+        job=job,
+        options=options_of(plan, seed),
+        window_distinct=state.plan.window_distinct,
+        first=stream.first,
+        baseline=state.baselines.get(job.stream),
+    )
+
+
+def options_of(plan: StreamPlan, seed: int) -> Options:
+    """The options of a scheduled judgement; the rate of events is filled in by whoever has the window."""
+    passages = plan.limit_at_most
+    return Options(
+        counting=plan.counting,
+        min_tail=plan.min_tail,
+        replicates=plan.replicates,
+        rule_out=plan.rule_out,
+        seed=seed,
+        one_in=plan.one_in,
+        limit=plan.limit,
+        period_days=passages.period / DAY if passages else None,
+        limit_at_most=passages.times if passages else None,
+    )
+
+
+class Verdict(msgspec.Struct, frozen=True, kw_only=True):
+    """What a window says: of itself, and against the baseline (None when there is nothing to compare)."""
+
+    judgement: Judgement
+    comparison: Comparison | None
+
+
+def compared_from(request: RefitRequest) -> int | None:
+    """Start of the panes that may be compared with the baseline: those it was not judged on. None: none are."""
+    if request.baseline is None:
+        return None
+    start = max(request.job.start, request.baseline.panes_to)
+    return start if start < request.job.end else None
+
+
+def judge_window(request: RefitRequest, window: Window, later: Window | None) -> Verdict:
+    """Judge a window and compare its part after the baseline. Pure: the same input gives the same bits.
+
+    Parameters: window, the panes of request.job; later, those from compared_from on, or None.
+    """
+    content = window.content
+    sample = Sample(content.sizes, content.counts, content.cells)
+    days = (request.job.end - max(request.job.start, request.first)) / DAY
+    options = msgspec.structs.replace(request.options, events_per_day=content.n / days if days > 0 else None)
+    judgement = judge(sample, options)
+    comparison = None
+    if later is not None and request.baseline is not None and later.content.n:
+        comparison = _compare(Sample(later.content.sizes, later.content.counts, later.content.cells), request.baseline)
+    return Verdict(judgement=judgement, comparison=comparison)
+
+
+def _compare(later: Sample, baseline: BaselineSet) -> Comparison:
+    counting: Counting = "whole" if baseline.counting == "whole" else "measured"
+    if baseline.n_tail is None or baseline.n is None:
+        return compare_with_plan(later, xmin=baseline.xmin, alpha=baseline.alpha, counting=counting)
+    return compare_with_fit(
+        later, xmin=baseline.xmin, alpha=baseline.alpha, n_tail=baseline.n_tail, n=baseline.n, counting=counting
+    )
+
+
+def planned_baseline(state: State, stream: str, now: int) -> BaselineSet | None:
+    """The plan in the settings as the stream's baseline, unless it is that already."""
+    seen = state.streams[stream]
+    plan = state.plan.stream(stream, seen.unit)
+    held = state.baselines.get(stream)
+    if plan.planned is None or (held is not None and _is_this_plan(held, plan.planned)):
+        return None
+    start = seen.first // state.plan.pane * state.plan.pane
+    planned = plan.planned
+    return BaselineSet(
+        id=natural_id("plan", stream, planned.alpha, planned.xmin, start if held is None else now),
+        stream=stream, source="plan", refit=None, alpha=planned.alpha, xmin=planned.xmin, n_tail=None, n=None, p=None,
+        plausible=None, counting=plan.counting, panes_to=start, effective_from=start if held is None else now,
+        known_at=now,
+    )  # fmt: skip
+
+
+def _is_this_plan(held: BaselineSet, planned: PlannedTail) -> bool:
+    return held.source != "plan" or (held.alpha == planned.alpha and held.xmin == planned.xmin)
+
+
+def judged(state: State, stimulus: Judged) -> list[Fact]:
+    """Store what the worker found, flag what differs, take the first good window as the baseline."""
+    outcome = stimulus.outcome
+    job = state.jobs.popleft()
+    assert (job.stream, job.end) == (outcome.job.stream, outcome.job.end), "outcomes come in the order of requests"
+    if outcome.failure is not None and job.attempts + 1 < ATTEMPTS:
+        again = msgspec.structs.replace(job, attempts=job.attempts + 1)
+        state.jobs.appendleft(again)
+        return [RefitRetried(stream=job.stream, end=job.end, attempts=again.attempts)]
+    if outcome.judgement is None:
+        return [_stored(state, job, outcome, stimulus.now, flags=())]
+    judgement = msgspec.json.decode(outcome.judgement, type=Judgement, strict=False)
+    refit = _stored(state, job, outcome, stimulus.now, flags=_flags(state, job, judgement, outcome))
+    facts: list[Fact] = [refit]
+    baseline = _first_baseline(state, refit, judgement)
+    if baseline is not None:
+        state.baselines[job.stream] = baseline
+        facts.append(baseline)
+    return facts
+
+
+def _flags(state: State, job: RefitJob, judgement: Judgement, outcome: Outcome) -> tuple[Any, ...]:
+    plan = state.plan.stream(job.stream, state.streams[job.stream].unit)
+    comparison = outcome.comparison and msgspec.json.decode(outcome.comparison, type=Comparison, strict=False)
+    return flags_of(
+        gof_p=judgement.gof.p if judgement.gof else None,
+        plausible=judgement.gof.plausible if judgement.gof else None,
+        differs_p=comparison.p if comparison else None,
+        direction=comparison.direction if comparison else None,
+        differs_at=plan.differs_at,
+    )
+
+
+def _stored(state: State, job: RefitJob, outcome: Outcome, now: int, flags: tuple[Any, ...]) -> RefitStored:
+    return RefitStored(
+        id=natural_id(job.stream, job.start, job.end, outcome.window_digest),
+        stream=job.stream, start=job.start, end=job.end, state="done" if outcome.judgement else "failed",
+        panes=outcome.panes, window_digest=outcome.window_digest, settings=job.settings, seed=outcome.seed,
+        judgement=outcome.judgement or "null", comparison=outcome.comparison,
+        flags=msgspec.json.encode(flags).decode(), reason=outcome.failure, attempts=job.attempts + 1,
+        seconds=outcome.seconds, versions=outcome.versions, known_at=now,
+    )  # fmt: skip
+
+
+def _first_baseline(state: State, refit: RefitStored, judgement: Judgement) -> BaselineSet | None:
+    """The first window with enough tail, whatever its p: a date fixed beforehand, not the first lucky one."""
+    if refit.stream in state.baselines or judgement.alpha is None:
+        return None
+    plan = state.plan.stream(refit.stream, state.streams[refit.stream].unit)
+    assert judgement.n_tail is not None
+    assert judgement.xmin is not None
+    if judgement.n_tail < plan.baseline_tail:
+        return None
+    return BaselineSet(
+        id=natural_id("first window", refit.id),
+        stream=refit.stream, source="first window", refit=refit.id, alpha=judgement.alpha, xmin=judgement.xmin,
+        n_tail=judgement.n_tail, n=judgement.n, p=judgement.gof.p if judgement.gof else None,
+        plausible=judgement.gof.plausible if judgement.gof else None, counting=judgement.counting,
+        panes_to=refit.end, effective_from=refit.end, known_at=refit.known_at,
+    )  # fmt: skip

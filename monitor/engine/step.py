@@ -1,0 +1,46 @@
+"""One handler a stimulus; nothing else in the project decides."""
+
+from __future__ import annotations
+
+from monitor.engine import intake, refits, sealing
+from monitor.engine.state import State
+from monitor.engine.stimuli import Arrived, ChainSeen, CommitDue, Ended, Judged, Stimulus
+from storage.facts import Fact, PaneSealed
+
+
+def step(state: State, stimulus: Stimulus) -> list[Fact]:
+    """Let one thing happen: changes the state, returns the facts to commit before anything else is done.
+
+    Facts of panes, chains and streams are held back until CommitDue, so that a commit holds many blocks.
+    """
+    match stimulus:
+        case Arrived():
+            intake.arrived(state, stimulus)
+        case ChainSeen():
+            intake.chain_seen(state, stimulus)
+        case Ended():
+            intake.count_waiting(state)
+            sealing.end_chains(state)
+        case CommitDue():
+            return _commit_due(state, stimulus.now)
+        case Judged():
+            return refits.judged(state, stimulus)
+    return []
+
+
+def _commit_due(state: State, now: int) -> list[Fact]:
+    sealing.rest_idle_chains(state, now)
+    facts = sealing.advance(state, now)
+    facts += sealing.drain(state, now)
+    for stream in {fact.stream: None for fact in facts if isinstance(fact, PaneSealed)}:
+        baseline = refits.planned_baseline(state, stream, now)
+        if baseline is not None:
+            state.baselines[stream] = baseline
+            facts.append(baseline)
+    return facts
+
+
+def committed(state: State, facts: list[Fact]) -> None:
+    """The facts are on disk: the windows they sealed may now be judged."""
+    sealed = [fact for fact in facts if isinstance(fact, PaneSealed)]
+    state.jobs.extend(sealing.job_of(fact) for fact in sorted(sealed, key=lambda fact: (fact.end, fact.stream)))

@@ -1,0 +1,143 @@
+"""The daemon's loop: poll, step, commit, then effects. One thread; `turn` never waits."""
+
+from __future__ import annotations
+
+from monitor.engine import refits
+from monitor.engine.state import State
+from monitor.engine.step import committed, step
+from monitor.engine.stimuli import CommitDue, Ended, Judged
+from monitor.service.clock import Clock
+from monitor.service.feeds import OpenFeed
+from monitor.service.log import Log
+from monitor.service.worker import Worker
+from storage.errors import StoreError
+from storage.facts import BaselineSet, Fact, RefitStored
+from storage.store import Store
+
+BLOCK = 4 << 20
+"""Bytes taken from a feed in one turn."""
+COMMIT_EVENTS = 50_000
+COMMIT_SECONDS = 1.0
+FIRST_RETRY, LAST_RETRY = 1.0, 60.0
+"""Seconds between tries of a commit that failed, doubling."""
+
+
+class Loop:
+    """Wires feeds, engine, store and worker. The caller calls `turn` and waits when it returns False."""
+
+    def __init__(
+        self, state: State, store: Store, feeds: list[OpenFeed], worker: Worker, *, clock: Clock, log: Log
+    ) -> None:
+        self.state = state
+        self.store = store
+        self.feeds = feeds
+        self.worker = worker
+        self.clock = clock
+        self.log = log
+        self._pending: list[Fact] = []
+        self._last_commit = clock.monotonic()
+        self._retry_at = 0.0
+        self._retry_after = FIRST_RETRY
+        self._started = clock.monotonic()
+        self._told_compiling = False
+
+    def turn(self) -> bool:
+        """One round. Returns True when lines came in, False when there was nothing to read."""
+        active = self._failing_store() or self._poll_feeds()
+        real = self.clock.monotonic()
+        if self.state.uncommitted >= COMMIT_EVENTS or real - self._last_commit >= COMMIT_SECONDS:
+            self.commit()
+        self._poll_worker()
+        return active
+
+    def _failing_store(self) -> bool:
+        """While commits fail, nothing more is read: memory stays bounded and the positions stay true."""
+        if not self._pending:
+            return False
+        if self.clock.monotonic() >= self._retry_at:
+            self.commit()
+        return False
+
+    def _poll_feeds(self) -> bool:
+        if self._pending:
+            return False
+        active = False
+        for feed in self.feeds:
+            for seen in feed.seen():
+                step(self.state, seen)
+            for arrived in feed.poll(BLOCK):
+                step(self.state, arrived)
+                active = True
+            for trouble in feed.troubles():
+                self.log.warning(trouble)
+        return active
+
+    def commit(self) -> bool:
+        """Commit everything learnt. On failure it is kept and tried again later; returns whether it is on disk."""
+        facts = self._pending or step(self.state, CommitDue(now=self.clock.now()))
+        self._last_commit = self.clock.monotonic()
+        try:
+            self.store.commit(facts)
+        except StoreError as error:
+            self._pending = facts
+            self._retry_at = self.clock.monotonic() + self._retry_after
+            self._retry_after = min(2 * self._retry_after, LAST_RETRY)
+            self.log.error(f"{error} Nothing is lost; reading stops until the store can be written.")
+            return False
+        self._pending = []
+        self._retry_after = FIRST_RETRY
+        committed(self.state, facts)
+        for fact in facts:
+            self._tell(fact)
+        return True
+
+    def _poll_worker(self) -> None:
+        self._tell_compiling()
+        if self._pending:
+            return
+        outcome = self.worker.poll()
+        if outcome is not None:
+            if outcome.failure:
+                self.log.warning(f"refit of {outcome.job.stream}: {outcome.failure}")
+            self._pending = step(self.state, Judged(outcome=outcome, now=self.clock.now()))
+            self.commit()
+        if not self.worker.busy and not self._pending:
+            request = refits.next_request(self.state)
+            if request is not None:
+                self.worker.submit(request)
+
+    def _tell_compiling(self) -> None:
+        if not self.worker.ready and not self._told_compiling and self.clock.monotonic() - self._started > 3.0:
+            self._told_compiling = True
+            self.log.info("first use: compiling the tail engine; events are taken in meanwhile")
+
+    def _tell(self, fact: Fact) -> None:
+        if isinstance(fact, BaselineSet):
+            self.log.info(f"{fact.stream}: baseline from the {fact.source}: alpha {fact.alpha:.3f} above {fact.xmin:g}")
+        elif isinstance(fact, RefitStored) and fact.state == "failed":
+            self.log.error(f"{fact.stream}: a refit failed for good: {fact.reason}")
+        elif isinstance(fact, RefitStored):
+            self.log.debug(f"{fact.stream}: refit {fact.id} stored after {fact.seconds:.2f} s")
+
+    def read_to_end(self) -> None:
+        """Take in all that is there; the ends of the files count as their ends."""
+        while self.turn():
+            pass
+        for feed in self.feeds:
+            for arrived in feed.finish():
+                step(self.state, arrived)
+                if self.state.uncommitted >= COMMIT_EVENTS:
+                    self.commit()
+            for trouble in feed.troubles():
+                self.log.warning(trouble)
+        step(self.state, Ended(now=self.clock.now()))
+
+    @property
+    def refits_left(self) -> int:
+        """Windows still to be judged."""
+        return len(self.state.jobs)
+
+    @property
+    def failing(self) -> bool:
+        """The last commit did not reach the disk."""
+        return bool(self._pending)

@@ -112,10 +112,10 @@ class Limit(msgspec.Struct, frozen=True, kw_only=True):
 
 
 class Largest(msgspec.Struct, frozen=True, kw_only=True):
-    """The largest of `events` events: median always, mean only where it exists (alpha > 2)."""
+    """The largest of `events` events: median (None beyond doubles), mean only where it exists (alpha > 2)."""
 
     events: int
-    median: float
+    median: float | None
     expected: float | None
     interval: Interval
 

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from monitor.tail.base_measure import Nodes, TailData
-from monitor.tail.rival_laws import Floats, Law
+from monitor.tail.rival_laws import Density, Floats
 
 _MOST_STEPS = 100
 _LONGEST_STEP = 2.0
@@ -48,7 +48,7 @@ def log_constant(log_density: Floats, nodes: Nodes) -> float:
 class _Point:
     """The log likelihood at one theta, with its gradient and information on demand."""
 
-    def __init__(self, law: Law, theta: Floats, data: TailData, nodes: Nodes) -> None:
+    def __init__(self, law: Density, theta: Floats, data: TailData, nodes: Nodes) -> None:
         self.law, self.theta, self.data, self.nodes = law, theta, data, nodes
         self._at_nodes = law.log_density(theta, nodes.y)
         self._at_data = law.log_density(theta, data.nodes.y)
@@ -72,14 +72,19 @@ class _Point:
         return gradient, information
 
 
-def climbs_at_start(law: Law, theta: Floats, data: TailData, nodes: Nodes) -> bool:
+def log_terms_at(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> Floats:
+    """Log probability (density) of one event of each group under given parameters, float64 (k,)."""
+    return _Point(law, theta, data, nodes).terms
+
+
+def climbs_at_start(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> bool:
     """Does the likelihood rise as the last parameter leaves its edge at `theta`, the others being at their best?"""
     gradient, information = _Point(law, theta, data, nodes).gradient_and_information()
     # A rise within the rounding of the sums is none.
     return bool(gradient[-1] > 1e-9 * np.sqrt(information[-1, -1] * data.n))
 
 
-def fit_law(law: Law, theta: Floats, data: TailData, nodes: Nodes) -> LawFit | None:
+def fit_law(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> LawFit | None:
     """The law's parameters of highest likelihood, from `theta` on; None when the search does not settle."""
     point = _Point(law, theta, data, nodes)
     tolerance = 1e-9 + 1e-15 * data.n

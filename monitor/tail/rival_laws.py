@@ -42,7 +42,23 @@ def _excess(log_rate: float, y: Floats) -> Floats:
     return np.where(y < 1.0, small, large)
 
 
-class Law(Protocol):
+class Density(Protocol):
+    """A law as the search needs it."""
+
+    def inside(self, theta: Floats) -> bool:
+        """Is this a point of the parameter space?"""
+        ...
+
+    def log_density(self, theta: Floats, y: Floats) -> Floats:
+        """Logarithm of the density in y, up to a constant."""
+        ...
+
+    def scores(self, theta: Floats, y: Floats) -> Floats:
+        """Derivatives of log_density by the parameters, float64 (parameters, len(y))."""
+        ...
+
+
+class Law(Density, Protocol):
     """One rival law.
 
     name        as in the results
@@ -59,18 +75,6 @@ class Law(Protocol):
         """Where the search begins; slope = alpha - 1 of the fitted power law."""
         ...
 
-    def inside(self, theta: Floats) -> bool:
-        """Is this a point of the parameter space?"""
-        ...
-
-    def log_density(self, theta: Floats, y: Floats) -> Floats:
-        """Logarithm of the density in y, up to a constant."""
-        ...
-
-    def scores(self, theta: Floats, y: Floats) -> Floats:
-        """Derivatives of log_density by the parameters, float64 (parameters, len(y))."""
-        ...
-
     def figures(self, theta: Floats, xmin: float) -> dict[str, float]:
         """The parameters as they are published, in the unit of the sizes."""
         ...
@@ -78,6 +82,23 @@ class Law(Protocol):
     def theta(self, figures: dict[str, float], xmin: float) -> Floats:
         """The inverse of `figures`."""
         ...
+
+
+@dataclass(frozen=True)
+class PowerLaw:
+    """theta = (slope,): density exp(-slope y), slope = alpha - 1 > 0."""
+
+    def inside(self, theta: Floats) -> bool:
+        return bool(theta[0] > 0)
+
+    def log_density(self, theta: Floats, y: Floats) -> Floats:
+        return -float(theta[0]) * y
+
+    def scores(self, theta: Floats, y: Floats) -> Floats:
+        return -y[None, :]
+
+
+POWER_LAW = PowerLaw()
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,220 @@
+"""What needs a person's look, as sentences, the most pressing first."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable
+from typing import Literal
+
+import msgspec
+
+from monitor.render.numbers import at_place, count_text, estimate, percent, place_of, size_text
+from monitor.render.planned import baseline_level
+from monitor.render.safe import plain
+from monitor.render.seen import FeedAccount, Refit, Seen, StreamSeen
+from monitor.render.times import plural, short_moment
+from monitor.render.words.common import beyond_words, chance_by_luck, level_words, limit_words, one_in_words, p_words
+from monitor.watch.flags import Flag
+
+Kind = Literal["heavier", "limit", "fit", "lighter", "failed", "skipped", "rejected lines"]
+ORDER: tuple[Kind, ...] = ("heavier", "limit", "fit", "lighter", "failed", "skipped", "rejected lines")
+MANY_REJECTED = 0.1
+"""From this share of rejected lines on a feed needs a look: by then its format is likely told wrongly."""
+
+
+class Finding(msgspec.Struct, frozen=True, kw_only=True):
+    """One thing that needs a look: a headline that stands alone, and sentences with the figures behind it."""
+
+    kind: Kind
+    headline: str
+    detail: tuple[str, ...] = ()
+
+    @property
+    def rank(self) -> int:
+        """Place in the order of what comes first; smaller is more pressing."""
+        return ORDER.index(self.kind)
+
+
+def than_baseline(source: str | None) -> str:
+    """What the tail is heavier or lighter than."""
+    return "than planned" if source == "plan" else "than its baseline"
+
+
+def flag_words(flag: Flag, source: str | None) -> str:
+    """A finding in a few words, for tables."""
+    if flag.rule == "fit":
+        return "power law ruled out"
+    return f"{flag.direction or 'different'} {than_baseline(source)}"
+
+
+def since_when(refits: Iterable[Refit], holds: Callable[[Refit], bool], zone: str, now: int) -> str:
+    """'since 12:00 WET, 3 refits in a row'. Refits without a judgement neither break nor lengthen the row."""
+    newest_first = [refit for refit in reversed(tuple(refits)) if refit.judgement is not None]
+    run: list[Refit] = []
+    for refit in newest_first:
+        if not holds(refit):
+            break
+        run.append(refit)
+    if not run:
+        return ""
+    when = short_moment(run[-1].end, zone, now)
+    if len(run) == 1:
+        return f"since the refit of {when}"
+    if len(run) == len(newest_first):
+        return f"in all of the last {len(run)} refits (at least since {when})"
+    return f"since {when}, {len(run)} refits in a row"
+
+
+def findings(stream: StreamSeen, zone: str, now: int) -> list[Finding]:
+    """Everything about a stream that needs a look, the most pressing first; empty for a quiet one."""
+    found = []
+    latest, judged = stream.latest, stream.judged
+    if judged is not None:
+        if judged.exponent_flag is not None:
+            found.append(_exponent_finding(stream, judged, judged.exponent_flag, zone, now))
+        if judged.fit_flag is not None:
+            found.append(_fit_finding(stream, judged, zone, now))
+        found += _limit_finding(stream)
+    if latest is not None and latest.state in ("failed", "skipped"):
+        found.append(_no_result(latest, zone, now))
+    return sorted(found, key=lambda finding: finding.rank)
+
+
+def _exponent_finding(stream: StreamSeen, refit: Refit, flag: Flag, zone: str, now: int) -> Finding:
+    source = None if stream.baseline is None else stream.baseline.source
+    direction = flag.direction or "lighter"
+
+    def same(other: Refit) -> bool:
+        return other.exponent_flag is not None and other.exponent_flag.direction == flag.direction
+
+    since = since_when(stream.refits, same, zone, now)
+    head = f"tail {flag.direction or 'different'} {than_baseline(source)} {since}"
+    level = level_against(stream)
+    return Finding(
+        kind=direction,
+        headline=f"{head}; {level}" if level else head,
+        detail=tuple(text for text in (_alpha_against(stream, refit, flag), *_caution(stream)) if text),
+    )
+
+
+def _alpha_against(stream: StreamSeen, refit: Refit, flag: Flag) -> str:
+    """'alpha above 120 units 2.21, planned 2.50 (smaller is heavier); luck alone ...'."""
+    against = refit.against
+    if against is None or against.alpha_later is None or against.alpha_earlier is None:
+        return f"{chance_by_luck(flag.p).capitalize()}."
+    # Two standard errors of the exponent at the baseline's xmin say how many digits mean something.
+    spread = 2 * (against.alpha_later - 1) / max(1, against.n_later or 1) ** 0.5
+    place = place_of(against.alpha_later, (against.alpha_later - spread, against.alpha_later + spread))
+    events = f" ({plural(against.n_later, 'event')})" if against.n_later else ""
+    return (
+        f"Alpha above {size_text(against.xmin)} {plain(stream.plan.unit)}{events} "
+        f"{at_place(against.alpha_later, place)}, {planned_or_before(stream)} "
+        f"{size_text(against.alpha_earlier) if stream_planned(stream) else at_place(against.alpha_earlier, place)}; "
+        f"smaller is heavier; {chance_by_luck(flag.p)}."
+    )
+
+
+def stream_planned(stream: StreamSeen) -> bool:
+    """Whether the baseline is a plan from the settings."""
+    return stream.baseline is not None and stream.baseline.source == "plan"
+
+
+def planned_or_before(stream: StreamSeen) -> str:
+    """The word before the baseline's figure."""
+    return "planned" if stream_planned(stream) else "baseline"
+
+
+def level_against(stream: StreamSeen) -> str:
+    """'one event in 10 000 now passes 9 400 units, planned 5 200, limit 6 000'; empty without a level."""
+    level = stream.level
+    if level is None or level.size is None:
+        return ""
+    place = place_of(level.size, level.interval)
+    text = f"{one_in_words(level.one_in)} now passes {at_place(level.size, place)} {plain(stream.plan.unit)}"
+    before = baseline_level(stream, level.one_in)
+    if before is not None:
+        text += f", {planned_or_before(stream)} {at_place(before, place)}"
+    if stream.plan.limit is not None:
+        text += f", limit {size_text(stream.plan.limit)}"
+    return text
+
+
+def _caution(stream: StreamSeen) -> list[str]:
+    caution = None if stream.level is None else beyond_words(stream.level)
+    return [caution] if caution else []
+
+
+def _fit_finding(stream: StreamSeen, refit: Refit, zone: str, now: int) -> Finding:
+    assert refit.judgement is not None
+    since = since_when(stream.refits, lambda other: other.fit_flag is not None, zone, now)
+    better = [rival.tail for rival in refit.judgement.rivals if rival.favours == "rival"]
+    detail = []
+    if refit.judgement.gof is not None:
+        detail.append(f"{p_words(refit.judgement.gof)}.")
+    if better:
+        detail.append(f"Better described by: {', '.join(better)}. Sizes read off the power law are in doubt.")
+    else:
+        detail.append("No rival describes it clearly better. Sizes read off the power law are in doubt.")
+    return Finding(kind="fit", headline=f"a power law does not describe the tail, {since}", detail=tuple(detail))
+
+
+def _limit_finding(stream: StreamSeen) -> list[Finding]:
+    judgement = stream.judgement
+    limit = None if judgement is None else judgement.limit
+    if limit is None or limit.at_most is None or limit.expected <= limit.at_most:
+        return []
+    text = (
+        f"limit {size_text(limit.size)} {plain(stream.plan.unit)} is expected to be passed "
+        f"{estimate(limit.expected)} times in {plain(limit.period)}, held tolerable: {size_text(limit.at_most)}"
+    )
+    return [Finding(kind="limit", headline=text, detail=(f"{limit_words(limit, stream.plan.unit)}.",))]
+
+
+def _no_result(refit: Refit, zone: str, now: int) -> Finding:
+    word = "failed" if refit.state == "failed" else "was skipped"
+    reason = f": {refit.reason}" if refit.reason else ""
+    text = f"the refit of {short_moment(refit.end, zone, now)} {word}{reason}"
+    return Finding(kind="failed" if refit.state == "failed" else "skipped", headline=text)
+
+
+def feed_findings(seen: Seen) -> list[tuple[FeedAccount, Finding]]:
+    """Feeds of which so many lines cannot be used that somebody must look."""
+    found = []
+    for feed in seen.feeds:
+        if feed.lines and feed.rejected_lines >= MANY_REJECTED * feed.lines:
+            found.append((feed, Finding(kind="rejected lines", headline=rejected_words(feed))))
+    return found
+
+
+def rejected_words(feed: FeedAccount) -> str:
+    """'30 of 100 lines (30 %) rejected: 20 not JSON, 10 zero'."""
+    if not feed.rejected_lines:
+        return f"no line rejected of {count_text(feed.lines)}"
+    reasons = ", ".join(f"{count_text(number)} {reason}" for reason, number in feed.rejected.items())
+    share = percent(feed.rejected_lines / feed.lines) if feed.lines else "0 %"
+    return f"{count_text(feed.rejected_lines)} of {plural(feed.lines, 'line')} ({share}) rejected: {reasons}"
+
+
+def quiet_words(stream: StreamSeen, zone: str, now: int) -> str:
+    """Why a stream without findings has no figures to show; empty when it has some."""
+    latest = stream.latest
+    if latest is None:
+        waiting = f", {plural(stream.waiting, 'window')} waiting to be judged" if stream.waiting else ""
+        return f"not judged yet: {plural(stream.open_events, 'event')} in the open pane{waiting}"
+    judged = stream.judgement
+    if judged is not None and judged.alpha is None:
+        return f"no tail to judge yet: {judged.reason or 'too few events'}"
+    return "" if judged is not None else f"no judgement stored up to {short_moment(latest.end, zone, now)}"
+
+
+def level_line(stream: StreamSeen) -> str:
+    """The level with its interval against baseline and limit, a full sentence; empty without a level."""
+    level = stream.level
+    if level is None:
+        return ""
+    text = f"One event in {count_text(level.one_in)} passes {level_words(level, stream.plan.unit)}"
+    before = baseline_level(stream, level.one_in)
+    if before is not None:
+        text += f", {planned_or_before(stream)} {estimate(before)}"
+    if stream.plan.limit is not None:
+        text += f", limit {size_text(stream.plan.limit)}"
+    return text + "."

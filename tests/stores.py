@@ -1,0 +1,225 @@
+"""Scripted stores for tests of what people see: a warehouse with docks, as the daemon would have left it.
+
+Judgements are written by hand, so that a frame can be checked figure by figure; panes hold drawn sizes.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import msgspec
+import numpy as np
+
+from monitor.plan import STARTER
+from monitor.tail.judgement import GoodnessOfFit, Judgement, Level, Limit, NearMinimum, Rival
+from monitor.watch.flags import Flag
+from storage.facts import (
+    BaselineSet,
+    ChainState,
+    Fact,
+    PanePart,
+    PaneSealed,
+    RefitStored,
+    RejectedSample,
+    SettingsTaken,
+    StreamState,
+)
+from storage.pane import PaneBuilder, line_digest
+from storage.store import Store, open_store
+
+SECOND = 1_000_000_000
+HOUR = 3600 * SECOND
+NOW = 1_796_133_909 * SECOND  # 2026-12-01 14:05:09 UTC
+LAST_PANE = NOW // HOUR * HOUR  # 14:00
+EVIL = "\x1b[2J[red]dock\u202e\r\nnight"
+WIDE = "倉庫-十番"
+
+SETTINGS = (
+    STARTER.replace('timezone = "UTC"', 'timezone = "Europe/Lisbon"').replace("# limit = 6000", "limit = 6000")
+    + '\n[stream."north-dock".plan]\nalpha = 2.5\nxmin = 120\n'
+)
+
+
+def gof(p: float, low: float, high: float, *, replicates: int = 2500, doubtful: bool = False) -> GoodnessOfFit:
+    """A bootstrap's answer against rule_out 0.1."""
+    return GoodnessOfFit(
+        p=p, p_interval=(low, high), replicates=replicates, at_least_as_far=round(p * replicates), stopped="decided",
+        rule_out=0.1, plausible=p > 0.1, doubtful=doubtful,
+    )  # fmt: skip
+
+
+def judged(
+    alpha: float, half: float, fit: GoodnessOfFit, level: tuple[float, float, float], *, xmin: float = 120.0,
+    n: int = 20_480, n_tail: int = 2_310, rivals: tuple[Rival, ...] = (), limit: Limit | None = None,
+    beyond: float | None = 2.1,
+) -> Judgement:  # fmt: skip
+    """A judgement with a usable tail."""
+    return Judgement(
+        n=n, counting="measured", resolution="exact", alpha=alpha, alpha_se=half / 1.96,
+        alpha_interval=(alpha - half, alpha + half), xmin=xmin, n_tail=n_tail, ks_distance=0.0123, gof=fit,
+        near_minimum=NearMinimum(xmin=(96.0, 140.0), alpha=(alpha - 0.02, alpha + 0.03)), rivals=rivals,
+        levels=(Level(one_in=10_000, size=level[0], interval=(level[1], level[2]), beyond_data=beyond),),
+        mean_finite=True, variance_finite=False, smallest_size=1.0, largest_size=4_400.0, limit=limit,
+    )  # fmt: skip
+
+
+def refit(
+    stream: str, end: int, judgement: Judgement | None, *, flags: tuple[Flag, ...] = (),
+    against: dict[str, object] | None = None, state: str = "done", reason: str | None = None,
+) -> RefitStored:  # fmt: skip
+    """A stored refit of the 14 days up to `end`."""
+    return RefitStored(
+        id=f"{stream.encode().hex()[:6]}-{end // HOUR}", stream=stream, start=end - 14 * 24 * HOUR, end=end,
+        state=state, panes=336, window_digest="ab", settings="cd", seed=7,  # type: ignore[arg-type]
+        judgement=msgspec.json.encode(judgement).decode(),
+        comparison=None if against is None else msgspec.json.encode(against).decode(),
+        flags=msgspec.json.encode(flags).decode(), reason=reason, attempts=1, seconds=0.5,
+        versions='{"tailgauge":"0.1.0"}', known_at=end + 5 * SECOND,
+    )  # fmt: skip
+
+
+def against(
+    earlier: float, later: float, p: float, *, xmin: float = 120.0, n_earlier: int | None = None
+) -> dict[str, object]:
+    """A comparison as the refit stores it."""
+    return {
+        "xmin": xmin, "n_earlier": n_earlier, "n_later": 2_310, "alpha_earlier": earlier, "alpha_later": later,
+        "ratio": (earlier - 1) / (later - 1), "p": p, "direction": "heavier" if later < earlier else "lighter",
+        "shares": None,
+    }  # fmt: skip
+
+
+def stream(name: str, *, age: int = 12, events: int = 20_480, late: int = 0) -> StreamState:
+    """A stream whose newest event is `age` seconds old."""
+    return StreamState(
+        stream=name, feed="orders", unit="units", first=NOW - 30 * 24 * HOUR, newest=NOW - age * SECOND,
+        events=events, late=late,
+    )  # fmt: skip
+
+
+def planned(name: str) -> BaselineSet:
+    """The plan of the settings as a baseline."""
+    return BaselineSet(
+        id=f"plan-{name}", stream=name, source="plan", refit=None, alpha=2.5, xmin=120.0, n_tail=None, n=None, p=None,
+        plausible=None, counting="measured", panes_to=0, effective_from=0, known_at=0,
+    )  # fmt: skip
+
+
+def first_window(name: str, alpha: float = 2.45, xmin: float = 120.0) -> BaselineSet:
+    """A baseline judged on the first window with enough tail."""
+    return BaselineSet(
+        id=f"first-{name}", stream=name, source="first window", refit="r1", alpha=alpha, xmin=xmin, n_tail=2_200,
+        n=20_000, p=0.44, plausible=True, counting="measured", panes_to=NOW - 20 * 24 * HOUR,
+        effective_from=NOW - 20 * 24 * HOUR, known_at=NOW - 20 * 24 * HOUR,
+    )  # fmt: skip
+
+
+PASSED = Limit(
+    size=6_000.0, period="30d", chance=0.88, expected=2.1, interval=(0.8, 0.94), at_most=1.0, chance_of_more=0.62
+)
+HEAVIER = (Flag(rule="exponent", direction="heavier", p=0.00021),)
+LIGHTER = (Flag(rule="exponent", direction="lighter", p=0.004),)
+MISFIT = (Flag(rule="fit", direction=None, p=0.002),)
+
+
+def quiet_refits(name: str, count: int = 12, alpha: float = 2.48) -> list[Fact]:
+    """Refits that say what the baseline says."""
+    quiet = judged(alpha, 0.06, gof(0.62, 0.58, 0.66), (5_300.0, 4_900.0, 5_800.0))
+    return [
+        refit(name, LAST_PANE - k * HOUR, quiet, against=against(2.45, alpha, 0.4, n_earlier=2_200))
+        for k in reversed(range(count))
+    ]
+
+
+def north_dock() -> list[Fact]:
+    """Planned on 2.5, quiet, then heavier in the last three refits."""
+    heavy = judged(2.21, 0.06, gof(0.31, 0.27, 0.35), (9_437.0, 8_080.0, 11_040.0), limit=PASSED)
+    calm = judged(2.49, 0.06, gof(0.55, 0.5, 0.6), (5_210.0, 4_800.0, 5_700.0))
+    early = [refit("north-dock", LAST_PANE - k * HOUR, calm, against=against(2.5, 2.49, 0.7)) for k in range(11, 2, -1)]
+    late = [
+        refit("north-dock", LAST_PANE - k * HOUR, heavy, flags=HEAVIER, against=against(2.5, 2.208, 0.00021))
+        for k in range(2, -1, -1)
+    ]
+    return [stream("north-dock", events=120_480, late=17), planned("north-dock"), *early, *late]
+
+
+def east_dock() -> list[Fact]:
+    """A tail cut off by a new rule: the power law is ruled out, a cut-off describes it better."""
+    rivals = (
+        Rival(tail="lognormal", log_likelihood_ratio=-0.4, z=-0.5, p=0.62, favours="neither"),
+        Rival(tail="power law with cut-off", log_likelihood_ratio=-9.1, z=None, p=0.00002, favours="rival"),
+    )
+    cut = judged(2.7, 0.08, gof(0.002, 0.0004, 0.006), (3_900.0, 3_300.0, 4_700.0), rivals=rivals)
+    calm = judged(2.46, 0.06, gof(0.5, 0.46, 0.54), (5_400.0, 4_900.0, 5_900.0))
+    ends = [LAST_PANE - k * HOUR for k in range(11, -1, -1)]
+    return [
+        stream("east-dock", age=95), first_window("east-dock"),
+        *(refit("east-dock", end, calm, against=against(2.45, 2.46, 0.8, n_earlier=2_200)) for end in ends[:-2]),
+        *(refit("east-dock", end, cut, flags=MISFIT, against=against(2.45, 2.52, 0.2, n_earlier=2_200))
+          for end in ends[-2:]),
+    ]  # fmt: skip
+
+
+def settings_fact(text: str = SETTINGS) -> SettingsTaken:
+    """The settings in force."""
+    return SettingsTaken(digest="cd", text=text, effective_from=0, known_at=0)
+
+
+def chain(rejected: dict[str, int] | None = None, lines: int = 200_000) -> ChainState:
+    """The one chain of the feed."""
+    rejected = {"not JSON": 3, "zero": 2} if rejected is None else rejected
+    return ChainState(
+        feed="orders", chain="logs/orders.jsonl", bookmark="{}", running_max=NOW, edge=None, idle=False, waiting=None,
+        lines=lines, events=lines - sum(rejected.values()) - 40, late=17, skipped={"blank": 40}, rejected=rejected,
+    )  # fmt: skip
+
+
+def sizes_of(name: str, n: int = 2_000) -> np.ndarray:
+    """Drawn sizes of a dock: a body and a power-law tail from 120 on."""
+    draw = np.random.default_rng(sum(name.encode()) + 20_261_201)
+    tail = np.round(120 * (1 - draw.random(n // 8)) ** (-1 / 1.4), 1)
+    return np.concatenate([np.round(draw.uniform(1, 120, n - n // 8), 1), tail])
+
+
+def panes(name: str) -> list[list[Fact]]:
+    """Two commits that fill and seal a pane, and open the next."""
+    start = LAST_PANE - HOUR
+    builder = PaneBuilder()
+    sizes = sizes_of(name)
+    builder.add(
+        sizes, np.full(sizes.size, start, np.int64), 0, lambda i: (line_digest(f"{name}{i}".encode()), f"orders @{i}")
+    )
+    content = builder.build(4096)
+    return [
+        [PanePart(stream=name, start=start, end=LAST_PANE, content=content)],
+        [
+            PaneSealed(stream=name, start=start, end=LAST_PANE, window_start=LAST_PANE - 14 * 24 * HOUR,
+                       settings="cd", known_at=LAST_PANE),
+            PanePart(stream=name, start=LAST_PANE, end=LAST_PANE + HOUR, content=content),
+        ],
+    ]  # fmt: skip
+
+
+def warehouse(path: Path) -> Path:
+    """The store of the warehouse: two docks need a look, three are quiet, one has no judgement yet."""
+    with make(path) as store:
+        for name in ("north-dock", "east-dock", "south-dock"):
+            for facts in panes(name):
+                store.commit(facts)
+        store.commit(
+            [
+                settings_fact(), chain(), *north_dock(), *east_dock(),
+                stream("south-dock", age=4, late=2), first_window("south-dock"), *quiet_refits("south-dock"),
+                stream(WIDE, age=7), first_window(WIDE, 2.5), *quiet_refits(WIDE, 5, 2.512),
+                stream(EVIL, age=3700), first_window(EVIL), *quiet_refits(EVIL, 12),
+                stream("west-dock", age=3, events=312),
+                RejectedSample(feed="orders", chain="logs/orders.jsonl", reason="not JSON", position=17,
+                               text=b"\x1b[31mbroken", known_at=NOW),
+            ]
+        )  # fmt: skip
+    return path
+
+
+def make(path: Path) -> Store:
+    """A new store."""
+    return open_store(path, store_id="test", now=0, distinct=4096)

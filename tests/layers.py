@@ -28,7 +28,7 @@ LAYERS = {
     "monitor.fleet": 4,
     "monitor.cli": 5,
     "monitor.__main__": 5,
-    "demo": 4,
+    "demo": 5,
 }
 
 # Layers up to this one are pure: no I/O, no clock, no randomness of their own making.

@@ -9,7 +9,8 @@ from typing import Any
 import msgspec
 
 from monitor.errors import SettingsError
-from monitor.parse.lines import LineFormat
+from monitor.parse.compile import compile_parser
+from monitor.parse.lines import FormatError, LineFormat
 from monitor.plan.checks import (
     in_range,
     no_unknown_keys,
@@ -24,7 +25,7 @@ from monitor.plan.spans import DAY, SECOND
 Fields = str | int | list[str | int]
 
 
-class FeedTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
+class FeedTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
     """[feed.NAME] as written."""
 
     follow: str | list[str] | None = None
@@ -44,7 +45,7 @@ class FeedTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
     timezone: str | None = None
 
 
-class WatchTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
+class WatchTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
     """[watch] as written, with its defaults."""
 
     counting: str = "measured"
@@ -69,14 +70,14 @@ class WatchTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
     seed: int = 1
 
 
-class PlannedTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
+class PlannedTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
     """[stream.NAME.plan] as written."""
 
     alpha: float
     xmin: float
 
 
-class StreamTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
+class StreamTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
     """[stream.NAME] as written: only what differs from [watch]."""
 
     counting: str | None = None
@@ -94,7 +95,7 @@ class StreamTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
     plan: PlannedTable | None = None
 
 
-class KnownTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True, rename={"start": "from", "end": "to"}):
+class KnownTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True, rename={"start": "from", "end": "to"}):
     """[[known]] as written."""
 
     start: Any  # a TOML date, date-time or text
@@ -104,13 +105,13 @@ class KnownTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True, renam
     effect: str = "hold notices"
 
 
-class NotifyTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
+class NotifyTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
     """[notify.NAME] as written."""
 
     command: list[str] | None = None
 
 
-class SettingsTable(msgspec.Struct, forbid_unknown_fields=True, kw_only=True):
+class SettingsTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
     """The whole file as written."""
 
     store: str
@@ -291,6 +292,10 @@ def _feed(name: str, key: str, given: FeedTable, timezone: str) -> FeedPlan:
         )  # fmt: skip
     except msgspec.ValidationError as error:
         raise SettingsError(f"{name}: {path}.{_plain(str(error))}.") from None
+    try:
+        compile_parser(line_format)
+    except FormatError as error:
+        raise SettingsError(f"{name}: {path}.{error}") from None
     return FeedPlan(
         name=key, follow=follow, read=given.read, format=line_format, unit=given.unit, by_field=bool(fields)
     )

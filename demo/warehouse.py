@@ -1,0 +1,122 @@
+"""An invented parts warehouse: docks, orders by weight, and the changes that the story scripts.
+
+Everything here is made up. The log depends on the seed alone: each dock and hour has its own generator, so
+the same seed writes the same lines however fast they are written.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from datetime import UTC, datetime
+from math import log
+
+import numpy as np
+from numpy.typing import NDArray
+
+HOUR = 3_600_000_000_000
+DAY = 24 * HOUR
+OPENING = int(datetime(2026, 3, 2, tzinfo=UTC).timestamp()) * 1_000_000_000
+"""The story's first moment: a Monday, 00:00 UTC."""
+
+TAIL_FROM = 150.0
+"""kg from which order weights follow a power law."""
+SPLIT_ABOVE = 600.0
+"""kg above which the new rule splits an order."""
+
+
+@dataclass(frozen=True, slots=True)
+class Dock:
+    """One dock's orders: how many a day, which share lies in the tail, its exponent, and a cap if there is one."""
+
+    name: str
+    orders_a_day: int
+    tail_share: float
+    alpha: float
+    split_above: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Change:
+    """Something that happens to a dock at a moment (ns), and what it is in words."""
+
+    dock: str
+    at: int
+    words: str
+    alpha: float | None = None
+    split_above: float | None = None
+    rule: str = "exponent"
+
+
+DOCKS = (
+    Dock("north", 16_000, 0.08, 2.8),
+    Dock("south", 18_000, 0.08, 2.6),
+    Dock("east", 14_000, 0.07, 2.7),
+    Dock("west", 12_000, 0.09, 2.5),
+)
+
+
+def script(days: float) -> tuple[Change, ...]:
+    """The changes of a story that lasts so many days: a quiet phase, then two docks change."""
+    return (
+        Change(
+            "north", OPENING + round(0.55 * days * 24) * HOUR,
+            "heavier orders: a new customer moves the exponent from 2.8 to 2.35", alpha=2.35,
+        ),
+        Change(
+            "south", OPENING + round(0.65 * days * 24) * HOUR,
+            f"a new rule splits every order above {SPLIT_ABOVE:g} kg", split_above=SPLIT_ABOVE, rule="fit",
+        ),
+    )  # fmt: skip
+
+
+def dock_at(dock: Dock, moment: int, changes: tuple[Change, ...]) -> Dock:
+    """The dock as it is at a moment, after the changes before it."""
+    for change in changes:
+        if change.dock == dock.name and change.at <= moment:
+            dock = replace(
+                dock,
+                alpha=dock.alpha if change.alpha is None else change.alpha,
+                split_above=dock.split_above if change.split_above is None else change.split_above,
+            )
+    return dock
+
+
+def weights(dock: Dock, count: int, rng: np.random.Generator) -> NDArray[np.float64]:
+    """Weights of orders in kg, to 0.1 kg: a lognormal body below TAIL_FROM, a Pareto tail above."""
+    in_tail = rng.random(count) < dock.tail_share
+    body = np.exp(log(40.0) + 0.7 * rng.standard_normal(count))
+    body = np.where(body < TAIL_FROM, body, TAIL_FROM * rng.random(count))
+    tail = TAIL_FROM * (1.0 - rng.random(count)) ** (-1.0 / (dock.alpha - 1.0))
+    return np.maximum(np.round(np.where(in_tail, tail, body), 1), 0.1)
+
+
+def split(order: float, most: float | None) -> list[float]:
+    """An order as the parcels it is handled in: one, or equal parts that are no heavier than `most`."""
+    if most is None or order <= most:
+        return [order]
+    parts = int(np.ceil(order / most))
+    return [round(order / parts, 1)] * parts
+
+
+def hour_of_orders(seed: int, hour: int, changes: tuple[Change, ...]) -> list[tuple[int, str]]:
+    """The log lines of one hour of all docks, as (time ns, line), in the order they are written.
+
+    One line in about 5 000 is spoilt, as in real logs; lines are up to 40 s out of order.
+    """
+    lines: list[tuple[int, int, str]] = []
+    start = OPENING + hour * HOUR
+    for place, usual in enumerate(DOCKS):
+        rng = np.random.default_rng([seed, hour, place])
+        count = int(rng.poisson(usual.orders_a_day / 24))
+        moments = np.sort(start + (rng.random(count) * HOUR).astype(np.int64))
+        dock = dock_at(usual, start, changes)
+        delays = (rng.random(count) * 40e9).astype(np.int64)
+        spoilt = rng.random(count) < 0.0002
+        for number, weight in enumerate(weights(dock, count, rng).tolist()):
+            stamp = datetime.fromtimestamp(int(moments[number]) / 1e9, UTC).strftime("%Y-%m-%dT%H:%M:%S.%fZ")
+            for part, parcel in enumerate(split(weight, dock.split_above)):
+                order = f"{dock.name[0].upper()}{hour:04d}-{number:04d}-{part}"
+                size = "null" if spoilt[number] else f"{parcel:g}"
+                text = f'{{"placed_at":"{stamp}","order":"{order}","dock":"{dock.name}","kg":{size}}}'
+                lines.append((int(moments[number] + delays[number]), int(moments[number]), text))
+    return [(written, text) for written, _, text in sorted(lines)]

@@ -75,6 +75,7 @@ class ChainStatus:
     path      the file being read now, None when there is none
     size      its size in bytes as last seen (compressed files: the uncompressed position)
     position  bytes of it that were delivered
+    modified  when the file was last written (ns since 1970 UTC, real time), None when unknown
     """
 
     name: str
@@ -82,6 +83,7 @@ class ChainStatus:
     path: str | None
     size: int
     position: int
+    modified: int | None = None
 
 
 class Source(Protocol):

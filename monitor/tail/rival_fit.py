@@ -93,6 +93,8 @@ def fit_law(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> LawFit
         if not np.all(np.isfinite(gradient)) or not np.all(np.isfinite(information)):
             return None
         step = _step(gradient, information)
+        for place in law.logs:
+            step = step * min(1.0, _LONGEST_STEP / max(abs(float(step[place])), _LONGEST_STEP))
         promised = float(gradient @ step)
         if promised < tolerance:
             return LawFit(point.theta, point.terms)
@@ -105,7 +107,7 @@ def fit_law(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> LawFit
 
 
 def _step(gradient: Floats, information: Floats) -> Floats:
-    """The scoring step, solved in units of each parameter's own information, and shortened to a sane length."""
+    """The scoring step, solved in units of each parameter's own information."""
     unit = np.sqrt(np.maximum(np.diag(information), 1e-300))
     scaled = information / np.outer(unit, unit) + 1e-13 * np.eye(len(unit))
     step: Floats = np.linalg.solve(scaled, gradient / unit) / unit
@@ -117,7 +119,7 @@ def _along(point: _Point, step: Floats, promised: float) -> _Point | None:
     length = 1.0
     while length > 1e-9:
         theta = point.theta + length * step
-        if point.law.inside(theta) and np.all(np.abs(theta) < 1e6):
+        if point.law.inside(theta) and np.all(np.abs(theta) < 1e60):
             further = _Point(point.law, theta, point.data, point.nodes)
             if further.value > point.value + 1e-4 * length * promised:
                 return further

@@ -43,7 +43,13 @@ def _excess(log_rate: float, y: Floats) -> Floats:
 
 
 class Density(Protocol):
-    """A law as the search needs it."""
+    """A law as the search needs it.
+
+    logs  which of its parameters are logarithms: the search moves them by 2 at most in one step
+    """
+
+    @property
+    def logs(self) -> tuple[int, ...]: ...
 
     def inside(self, theta: Floats) -> bool:
         """Is this a point of the parameter space?"""
@@ -88,6 +94,8 @@ class Law(Density, Protocol):
 class PowerLaw:
     """theta = (slope,): density exp(-slope y), slope = alpha - 1 > 0."""
 
+    logs: tuple[int, ...] = ()
+
     def inside(self, theta: Floats) -> bool:
         return bool(theta[0] > 0)
 
@@ -107,6 +115,7 @@ class Lognormal:
 
     name: RivalName = "lognormal"
     parameters: int = 2
+    logs: tuple[int, ...] = ()
 
     def start(self, data: TailData, slope: float) -> Floats:
         return np.array([slope, 0.0])
@@ -136,6 +145,7 @@ class Exponential:
 
     name: RivalName = "exponential"
     parameters: int = 1
+    logs: tuple[int, ...] = (0,)
 
     def start(self, data: TailData, slope: float) -> Floats:
         y = data.middles()
@@ -153,10 +163,10 @@ class Exponential:
         return -_excess(float(theta[0]), y)[None, :]
 
     def figures(self, theta: Floats, xmin: float) -> dict[str, float]:
-        return {"mean_excess": exp(min(log(xmin) - float(theta[0]), 700.0))}
+        return {"scale": exp(min(log(xmin) - float(theta[0]), 700.0))}
 
     def theta(self, figures: dict[str, float], xmin: float) -> Floats:
-        return np.array([log(xmin) - log(figures["mean_excess"])])
+        return np.array([log(xmin) - log(figures["scale"])])
 
 
 @dataclass(frozen=True)
@@ -165,6 +175,7 @@ class StretchedExponential:
 
     name: RivalName = "stretched exponential"
     parameters: int = 2
+    logs: tuple[int, ...] = (0,)
 
     def start(self, data: TailData, slope: float) -> Floats:
         return np.array([log(slope), 0.0])
@@ -209,6 +220,7 @@ class CutOff:
 
     name: RivalName = "power law with cut-off"
     parameters: int = 2
+    logs: tuple[int, ...] = (1,)
 
     def start(self, data: TailData, slope: float) -> Floats:
         return np.array([slope, -float(data.middles()[-1])])

@@ -25,6 +25,9 @@ _INVISIBLE = 0.01
 """A lognormal or stretched exponential whose log likelihood is within this of the power law's has become the power
 law: both hold it as a limit, so that their parameters (mu = -700, beta = 0.001) mean nothing any more."""
 
+_STEEPEST = 1e5
+"""Sizes this close together (to one part in 1e5) follow every law at once."""
+
 Favours = Literal["power law", "rival", "neither", "not determined"]
 
 
@@ -39,7 +42,7 @@ def compare_rivals(sample: Sample, *, xmin: float, alpha: float, counting: Count
     ratio 0 and p 1: the data show no cut-off.
     """
     data = _data(sample, xmin, counting)
-    if not _has_spread(data):
+    if not _has_spread(data) or alpha > _STEEPEST:
         return tuple(_undetermined(law) for law in LAWS)
     slope = alpha - 1
     reach = reach_of(data, slope)
@@ -107,21 +110,21 @@ def _against(law: Law, data: TailData, nodes: Nodes, power_law: Floats, slope: f
     nested = law.name == "power law with cut-off"
     start = law.start(data, slope)
     if nested and not _cut_off_shows(data, slope, counting):
-        return _nested(0.0, {"alpha": slope + 1})
+        return _nested(0.0, {"alpha": 1 + float(slope)})
     if law.parameters == 2 and not nested and not climbs_at_start(law, start, data, nodes):
         return _undetermined(law)
     fit = fit_law(law, start, data, nodes)
     if fit is None:
         return _undetermined(law)
+    difference = power_law - fit.log_terms
+    ratio = float(np.dot(data.counts, difference))
+    if law.parameters == 2 and not nested and ratio > -_INVISIBLE:
+        return _undetermined(law)
     figures = law.figures(fit.theta, data.xmin)
     if not all(isfinite(value) for value in figures.values()):
         return _undetermined(law)
-    difference = power_law - fit.log_terms
-    ratio = float(np.dot(data.counts, difference))
     if nested:
         return _nested(min(ratio, 0.0), figures)
-    if law.parameters == 2 and ratio > -_INVISIBLE:
-        return _undetermined(law)
     return _vuong(law, difference, ratio, data=data, figures=figures)
 
 
@@ -194,7 +197,7 @@ class _Survival:
             return y + 45 / float(self.theta[0])
         grid = y + np.concatenate([[0.0], np.geomspace(1e-9, 3000.0, 400)])
         density = self.law.log_density(self.theta, grid)
-        alive = np.flatnonzero(density > density.max() - 45)
+        alive = np.flatnonzero(density >= density.max() - 45)
         return float(grid[min(int(alive[-1]) + 1, len(grid) - 1)])
 
 

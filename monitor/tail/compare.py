@@ -16,7 +16,7 @@ import msgspec
 import numpy as np
 from scipy.special import chdtr, chdtrc, fdtr, fdtrc
 
-from monitor.tail.base_measure import Nodes, TailData, reach_of, support, tail_data
+from monitor.tail.base_measure import Nodes, TailData, reach_of, summed, support, tail_data
 from monitor.tail.judgement import Counting
 from monitor.tail.proportions import two_shares_p
 from monitor.tail.rival_fit import LawFit, fit_law, log_terms_at
@@ -89,7 +89,7 @@ def compare_with_fit(
         single = TailData(Nodes(np.array([1.0]), np.zeros(1)), None, np.array([1.0]), xmin)
         nodes = support("whole", xmin, reach_of(single, slope), first=min(1.0, 2 / slope))
         share = np.exp(nodes.log_weight - slope * nodes.y)
-        mean_y = float(np.dot(share, nodes.y) / share.sum())
+        mean_y = summed(share, nodes.y) / float(share.sum())
     elif later.cells is not None:
         mean_y = (1 / expm1(slope * CELL_WIDTH) + 0.5) * CELL_WIDTH
     else:
@@ -116,7 +116,7 @@ def compare_with_plan(later: Sample, *, xmin: float, alpha: float, counting: Cou
         fitted = _whole_fit(side.data, nodes)
         planned = log_terms_at(POWER_LAW, np.array([slope]), side.data, nodes)
         alpha_later = 1 + float(fitted.theta[0])
-        p = _chi2_1(float(np.dot(side.data.counts, fitted.log_terms - planned)))
+        p = _chi2_1(summed(side.data.counts, fitted.log_terms - planned))
         method = "likelihood ratio of whole sizes against the planned exponent, chi-square with 1 degree of freedom"
     else:
         alpha_later = 1 + _measured_slope(side)
@@ -153,7 +153,7 @@ def _side(sample: Sample, xmin: float, counting: Counting) -> _Side:
         y = data.nodes.y
     else:
         y = np.asarray(sample.cells[first:] - start_cell + 0.5, np.float64) * CELL_WIDTH
-    return _Side(data=data, n_tail=n_tail, n=sample.n, mean_y=float(np.dot(data.counts, y)) / n_tail)
+    return _Side(data=data, n_tail=n_tail, n=sample.n, mean_y=summed(data.counts, y) / n_tail)
 
 
 def _silent(side: _Side) -> bool:
@@ -230,8 +230,8 @@ def _whole_test(earlier: _Side, later: _Side, xmin: float) -> _Exponents:
     both = _joined(earlier.data, later.data)
     nodes = _nodes((earlier.data, later.data), xmin, 1 / max(earlier.mean_y, later.mean_y))
     first, second, one = (_whole_fit(data, nodes) for data in (earlier.data, later.data, both))
-    apart = float(np.dot(earlier.data.counts, first.log_terms) + np.dot(later.data.counts, second.log_terms))
-    gain = apart - float(np.dot(both.counts, one.log_terms))
+    apart = summed(earlier.data.counts, first.log_terms) + summed(later.data.counts, second.log_terms)
+    gain = apart - summed(both.counts, one.log_terms)
     method = "likelihood ratio of whole sizes, chi-square with 1 degree of freedom"
     return _Exponents(1 + float(first.theta[0]), 1 + float(second.theta[0]), _chi2_1(gain), method)
 
@@ -257,7 +257,7 @@ def _whole_fit(data: TailData, nodes: Nodes) -> LawFit:
     """The exponent of highest likelihood; the likelihood is concave, so the search settles."""
     y = data.middles()
     half_unit = log1p(0.5 / data.xmin)
-    start = 1 / (float(np.dot(data.counts, y)) / data.n + half_unit)
+    start = 1 / (summed(data.counts, y) / data.n + half_unit)
     fit = fit_law(POWER_LAW, np.array([start]), data, nodes)
     assert fit is not None
     return fit

@@ -63,4 +63,4 @@ def _below(sample: Sample, fit: TailFit, events: int) -> float:
         return 0.0
     upto = np.cumsum(sample.counts[: fit.start]) / sample.n
     power = np.exp(events * np.log(upto))
-    return float(np.dot(sample.sizes[: fit.start], np.diff(power, prepend=0.0)))
+    return float(np.sum(sample.sizes[: fit.start] * np.diff(power, prepend=0.0)))

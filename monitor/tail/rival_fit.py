@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from monitor.tail.base_measure import Nodes, TailData
+from monitor.tail.base_measure import Nodes, TailData, summed
 from monitor.tail.rival_laws import Density, Floats
 
 _MOST_STEPS = 100
@@ -54,21 +54,22 @@ class _Point:
         self._at_data = law.log_density(theta, data.nodes.y)
         self._constant = log_constant(self._at_nodes, nodes)
         self.terms = log_terms(self._at_data, self._constant, data)
-        self.value = float(np.dot(data.counts, self.terms))
+        self.value = summed(data.counts, self.terms)
 
     def gradient_and_information(self) -> tuple[Floats, Floats]:
         """Derivative of the log likelihood, float64 (p,), and n times the covariance of the scores, float64 (p, p)."""
         data = self.data
         share = np.exp(self._at_nodes + self.nodes.log_weight - self._constant)
         scores = self.law.scores(self.theta, self.nodes.y)
-        mean = scores @ share
-        information = data.n * ((scores * share) @ scores.T - np.outer(mean, mean) * share.sum())
+        mean = np.sum(scores * share, axis=1)
+        second = np.array([[summed(one * share, other) for other in scores] for one in scores])
+        information = data.n * (second - np.outer(mean, mean) * share.sum())
         weight = data.counts
         if data.starts is not None:
             lengths = np.diff(np.append(data.starts, len(data.nodes.y)))
             own = self._at_data + data.nodes.log_weight - self._constant
             weight = np.exp(own - np.repeat(self.terms, lengths)) * np.repeat(data.counts, lengths)
-        gradient = self.law.scores(self.theta, data.nodes.y) @ weight - data.n * mean
+        gradient = np.sum(self.law.scores(self.theta, data.nodes.y) * weight, axis=1) - data.n * mean
         return gradient, information
 
 

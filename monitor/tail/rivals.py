@@ -12,7 +12,7 @@ from typing import Literal
 import numpy as np
 from scipy.special import erfc, logsumexp, zeta
 
-from monitor.tail.base_measure import Nodes, Reach, TailData, reach_of, support, tail_data
+from monitor.tail.base_measure import Nodes, Reach, TailData, reach_of, summed, support, tail_data
 from monitor.tail.judgement import Counting, Rival
 from monitor.tail.rival_fit import climbs_at_start, fit_law, log_constant, log_terms
 from monitor.tail.rival_laws import LAWS, Floats, Law
@@ -117,7 +117,7 @@ def _against(law: Law, data: TailData, nodes: Nodes, power_law: Floats, slope: f
     if fit is None:
         return _undetermined(law)
     difference = power_law - fit.log_terms
-    ratio = float(np.dot(data.counts, difference))
+    ratio = summed(data.counts, difference)
     if law.parameters == 2 and not nested and ratio > -_INVISIBLE:
         return _undetermined(law)
     figures = law.figures(fit.theta, data.xmin)
@@ -145,7 +145,7 @@ def _nested(ratio: float, figures: dict[str, float]) -> Rival:
 def _vuong(law: Law, difference: Floats, ratio: float, *, data: TailData, figures: dict[str, float]) -> Rival:
     """Vuong's normalised ratio (CSN equation C.6) for a rival that does not hold the power law."""
     n = data.n
-    spread = sqrt(float(np.dot(data.counts, (difference - ratio / n) ** 2)) / n)
+    spread = sqrt(summed(data.counts, (difference - ratio / n) ** 2) / n)
     if spread == 0:
         return _undetermined(law)
     z = ratio / (sqrt(n) * spread)

@@ -94,7 +94,7 @@ def _pile_up(sample: Sample, xmin: float) -> str | None:
     if len(sizes) < 3 or counts[-1] < _LEAST_PILE:
         return None
     pile, top = int(counts[-1]), float(sizes[-1])
-    slope = float(counts.sum() / np.dot(counts, np.log(sizes / sizes[0])))
+    slope = float(counts.sum() / np.sum(counts * np.log(sizes / sizes[0])))
     step = float(np.diff(sizes[-_TOP_SIZES:]).min())
     if sample.cells is not None:
         step = max(step, top * float(np.expm1(CELL_WIDTH)))

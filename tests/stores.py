@@ -49,16 +49,21 @@ def gof(p: float, low: float, high: float, *, replicates: int = 2500, doubtful: 
 
 
 def judged(
-    alpha: float, half: float, fit: GoodnessOfFit, level: tuple[float, float, float], *, xmin: float = 120.0,
-    n: int = 20_480, n_tail: int = 2_310, rivals: tuple[Rival, ...] = (), limit: Limit | None = None,
+    alpha: float, half: float, fit: GoodnessOfFit, *, xmin: float = 120.0, n: int = 81_050, n_tail: int = 2_310,
+    rivals: tuple[Rival, ...] = (), limit: Limit | None = None,
     beyond: float | None = 2.1,
 ) -> Judgement:  # fmt: skip
-    """A judgement with a usable tail."""
+    """A judgement with a usable tail; its level follows from alpha, its interval from that of alpha."""
+
+    def passed(exponent: float) -> float:
+        return float(round(xmin * (10_000 * n_tail / n) ** (1 / (exponent - 1))))
+
     return Judgement(
         n=n, counting="measured", resolution="exact", alpha=alpha, alpha_se=half / 1.96,
         alpha_interval=(alpha - half, alpha + half), xmin=xmin, n_tail=n_tail, ks_distance=0.0123, gof=fit,
         near_minimum=NearMinimum(xmin=(96.0, 140.0), alpha=(alpha - 0.02, alpha + 0.03)), rivals=rivals,
-        levels=(Level(one_in=10_000, size=level[0], interval=(level[1], level[2]), beyond_data=beyond),),
+        levels=(Level(one_in=10_000, size=passed(alpha), interval=(passed(alpha + half), passed(alpha - half)),
+                      beyond_data=beyond),),
         mean_finite=True, variance_finite=False, smallest_size=1.0, largest_size=4_400.0, limit=limit,
     )  # fmt: skip
 
@@ -85,11 +90,11 @@ def against(
     return {
         "xmin": xmin, "n_earlier": n_earlier, "n_later": 2_310, "alpha_earlier": earlier, "alpha_later": later,
         "ratio": (earlier - 1) / (later - 1), "p": p, "direction": "heavier" if later < earlier else "lighter",
-        "shares": None,
+        "method": "exact F test", "share_earlier": None if n_earlier is None else 0.0285, "share_later": 0.0285,
     }  # fmt: skip
 
 
-def stream(name: str, *, age: int = 12, events: int = 20_480, late: int = 0) -> StreamState:
+def stream(name: str, *, age: int = 12, events: int = 90_480, late: int = 0) -> StreamState:
     """A stream whose newest event is `age` seconds old."""
     return StreamState(
         stream=name, feed="orders", unit="units", first=NOW - 30 * 24 * HOUR, newest=NOW - age * SECOND,
@@ -109,7 +114,7 @@ def first_window(name: str, alpha: float = 2.45, xmin: float = 120.0) -> Baselin
     """A baseline judged on the first window with enough tail."""
     return BaselineSet(
         id=f"first-{name}", stream=name, source="first window", refit="r1", alpha=alpha, xmin=xmin, n_tail=2_200,
-        n=20_000, p=0.44, plausible=True, counting="measured", panes_to=NOW - 20 * 24 * HOUR,
+        n=77_200, p=0.44, plausible=True, counting="measured", panes_to=NOW - 20 * 24 * HOUR,
         effective_from=NOW - 20 * 24 * HOUR, known_at=NOW - 20 * 24 * HOUR,
     )  # fmt: skip
 
@@ -124,7 +129,7 @@ MISFIT = (Flag(rule="fit", direction=None, p=0.002),)
 
 def quiet_refits(name: str, count: int = 12, alpha: float = 2.48) -> list[Fact]:
     """Refits that say what the baseline says."""
-    quiet = judged(alpha, 0.06, gof(0.62, 0.58, 0.66), (5_300.0, 4_900.0, 5_800.0))
+    quiet = judged(alpha, 0.06, gof(0.62, 0.58, 0.66))
     return [
         refit(name, LAST_PANE - k * HOUR, quiet, against=against(2.45, alpha, 0.4, n_earlier=2_200))
         for k in reversed(range(count))
@@ -133,8 +138,8 @@ def quiet_refits(name: str, count: int = 12, alpha: float = 2.48) -> list[Fact]:
 
 def north_dock() -> list[Fact]:
     """Planned on 2.5, quiet, then heavier in the last three refits."""
-    heavy = judged(2.21, 0.06, gof(0.31, 0.27, 0.35), (9_437.0, 8_080.0, 11_040.0), limit=PASSED)
-    calm = judged(2.49, 0.06, gof(0.55, 0.5, 0.6), (5_210.0, 4_800.0, 5_700.0))
+    heavy = judged(2.21, 0.06, gof(0.31, 0.27, 0.35), limit=PASSED)
+    calm = judged(2.49, 0.06, gof(0.55, 0.5, 0.6))
     early = [refit("north-dock", LAST_PANE - k * HOUR, calm, against=against(2.5, 2.49, 0.7)) for k in range(11, 2, -1)]
     late = [
         refit("north-dock", LAST_PANE - k * HOUR, heavy, flags=HEAVIER, against=against(2.5, 2.208, 0.00021))
@@ -149,8 +154,8 @@ def east_dock() -> list[Fact]:
         Rival(tail="lognormal", log_likelihood_ratio=-0.4, z=-0.5, p=0.62, favours="neither"),
         Rival(tail="power law with cut-off", log_likelihood_ratio=-9.1, z=None, p=0.00002, favours="rival"),
     )
-    cut = judged(2.7, 0.08, gof(0.002, 0.0004, 0.006), (3_900.0, 3_300.0, 4_700.0), rivals=rivals)
-    calm = judged(2.46, 0.06, gof(0.5, 0.46, 0.54), (5_400.0, 4_900.0, 5_900.0))
+    cut = judged(2.7, 0.08, gof(0.002, 0.0004, 0.006), rivals=rivals)
+    calm = judged(2.46, 0.06, gof(0.5, 0.46, 0.54))
     ends = [LAST_PANE - k * HOUR for k in range(11, -1, -1)]
     return [
         stream("east-dock", age=95), first_window("east-dock"),
@@ -177,8 +182,8 @@ def chain(rejected: dict[str, int] | None = None, lines: int = 200_000) -> Chain
 def sizes_of(name: str, n: int = 2_000) -> np.ndarray:
     """Drawn sizes of a dock: a body and a power-law tail from 120 on."""
     draw = np.random.default_rng(sum(name.encode()) + 20_261_201)
-    tail = np.round(120 * (1 - draw.random(n // 8)) ** (-1 / 1.4), 1)
-    return np.concatenate([np.round(draw.uniform(1, 120, n - n // 8), 1), tail])
+    tail = np.round(120 * (1 - draw.random(n // 35)) ** (-1 / 1.4), 1)
+    return np.concatenate([np.round(draw.uniform(1, 120, n - n // 35), 1), tail])
 
 
 def panes(name: str) -> list[list[Fact]]:

@@ -78,7 +78,7 @@ def screen_document(seen: Seen, now: int) -> dict[str, Any]:
         "timezone": zone,
         "feeds": [_feed_document(feed) for feed in seen.feeds],
         "needs_a_look": [
-            {"feed": feed.feed, "kind": finding.kind, "words": plain(finding.headline)}
+            {"feed": feed.feed, "kind": finding.kind, "words": plain(finding.sentence)}
             for feed, finding in feed_findings(seen)
         ],
         "streams": [_stream_document(stream, zone, now) for stream in seen.streams],
@@ -105,7 +105,7 @@ def _stream_document(stream: StreamSeen, zone: str, now: int) -> dict[str, Any]:
         "open_events": stream.open_events,
         "waiting_windows": stream.waiting,
         "needs_a_look": [
-            {"kind": f.kind, "words": plain(f.headline), "detail": [plain(text) for text in f.detail]}
+            {"kind": f.kind, "words": plain(f.sentence), "detail": [plain(text) for text in f.detail]}
             for f in findings(stream, zone, now)
         ],
         "baseline": None if base is None else _baseline_document(base),

@@ -75,6 +75,12 @@ def size_text(value: float) -> str:
     return text.rstrip("0").rstrip(".") if "." in text and "e" not in text else text
 
 
+def exact_at(value: float, place: int) -> str:
+    """A number that was set, not estimated: with the digits of its neighbours, but never fewer than it has."""
+    decimals = len(f"{value:.6f}".rstrip("0").partition(".")[2])
+    return at_place(value, min(place, -decimals))
+
+
 def percent(share: float) -> str:
     """A share in percent, two digits: 0.1234 -> '12 %'."""
     value = 100 * share

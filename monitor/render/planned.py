@@ -22,10 +22,9 @@ def baseline_share(stream: StreamSeen) -> float | None:
     if base.n_tail is not None and base.n:
         return base.n_tail / base.n
     judged = stream.judged
-    if judged is None or judged.against is None or judged.judgement is None or judged.against.xmin != base.xmin:
+    if judged is None or judged.against is None or judged.against.xmin != base.xmin:
         return None
-    n_later = judged.against.n_later
-    return n_later / judged.judgement.n if n_later and judged.judgement.n else None
+    return judged.against.share_later or None
 
 
 def baseline_tails(stream: StreamSeen) -> Tails | None:

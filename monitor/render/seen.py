@@ -3,32 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from typing import Literal
 
 import msgspec
 
 from monitor.plan import Plan, StreamPlan
+from monitor.tail.compare import Comparison
 from monitor.tail.judgement import Judgement, Level
 from monitor.watch.flags import Flag
 from storage.facts import BaselineSet, ChainState, RefitState, RefitStored, StreamState
-
-Direction = Literal["heavier", "lighter"]
-
-
-class Against(msgspec.Struct, frozen=True, kw_only=True):
-    """What is shown of a refit's comparison with its baseline, at the baseline's xmin.
-
-    earlier is the baseline's side, later the window's; n_earlier is None for a plan, whose exponent counts
-    as known. The exponents are None where there were too few events to compare.
-    """
-
-    xmin: float
-    n_earlier: int | None = None
-    n_later: int | None = None
-    alpha_earlier: float | None = None
-    alpha_later: float | None = None
-    p: float | None = None
-    direction: Direction | None = None
 
 
 class Refit(msgspec.Struct, frozen=True, kw_only=True):
@@ -42,7 +24,7 @@ class Refit(msgspec.Struct, frozen=True, kw_only=True):
     reason: str | None
     panes: int
     judgement: Judgement | None
-    against: Against | None
+    against: Comparison | None
     flags: tuple[Flag, ...]
     versions: str
 
@@ -139,7 +121,7 @@ def decode_refit(stored: RefitStored) -> Refit:
         reason=stored.reason,
         panes=stored.panes,
         judgement=judgement,
-        against=msgspec.json.decode(stored.comparison or "null", type=Against | None, strict=False),
+        against=msgspec.json.decode(stored.comparison or "null", type=Comparison | None, strict=False),
         flags=msgspec.json.decode(stored.flags or "[]", type=tuple[Flag, ...], strict=False),
         versions=stored.versions,
     )

@@ -89,11 +89,11 @@ def result_words(row: RefitRow) -> str:
     return "as planned" if source == "plan" else "as baseline"
 
 
-def history_table(rows: Sequence[RefitRow], zone: str, width: int) -> list[str]:
-    """Refits as a table, oldest first, each line at most `width` cells.
+def history_table(rows: Sequence[RefitRow], zone: str, width: int, *, one_stream: bool = False) -> list[str]:
+    """Refits as a table in the order given, each line at most `width` cells.
 
-    In a narrow terminal the less important columns are left out; the result in words always stays, and
-    takes lines of its own where it would be cut.
+    In a narrow terminal the less important columns are left out; the result in words always stays. With
+    one_stream the name and the identity are left out.
     """
     if not rows:
         return ["No refits here yet."]
@@ -121,6 +121,8 @@ def history_table(rows: Sequence[RefitRow], zone: str, width: int) -> list[str]:
         Column(title="id", cells=tuple(plain(row.refit.id) for row in rows), need=9),
         Column(title="result", cells=tuple(result_words(row) for row in rows), shrinks_to=22),
     ]  # fmt: skip
+    if one_stream:
+        columns = [column for column in columns if column.title not in ("stream", "id")]
     return laid_out(columns, width)
 
 

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from math import ceil
+from math import ceil, log1p
 
-from monitor.render.numbers import at_place, bounds_text, count_text, estimate, grouped, size_text, with_bounds
+from monitor.plan.spans import parse_span
+from monitor.render.numbers import at_place, bounds_text, count_text, estimate, grouped, percent, size_text, with_bounds
 from monitor.render.safe import plain
+from monitor.render.times import span_words
 from monitor.tail.judgement import GoodnessOfFit, Level, Limit
 
 CAUTION = (
@@ -100,22 +102,35 @@ def beyond_words(level: Level) -> str | None:
 
 def limit_words(limit: Limit, unit: str) -> str:
     """The chance of passing the limit in its period, how often that is expected, and what was held tolerable."""
-    text = (
-        f"limit {size_with_unit(limit.size, unit)} in {plain(limit.period)}: chance to be passed at least once "
-        f"{share_words(limit.chance, limit.interval)}, expected {estimate(limit.expected)} "
-        f"{'time' if limit.expected == 1 else 'times'}"
-    )
-    if limit.at_most is not None:
-        text += f"; held tolerable: {size_text(limit.at_most)}"
-        if limit.chance_of_more is not None:
-            text += f", passed more often with a chance of {share_words(limit.chance_of_more, None)}"
+    return f"limit {size_with_unit(limit.size, unit)}: {passages_words(limit)}; {chance_words(limit)}"
+
+
+def passages_words(limit: Limit) -> str:
+    """'expected to be passed 2.1 times in 30 days, tolerable: 1'."""
+    bounds = tuple(None if chance is None or chance >= 1 else -log1p(-chance) for chance in limit.interval)
+    times = estimate(limit.expected, bounds)
+    text = f"expected to be passed {'once' if times == '1' else f'{times} times'} in {period_words(limit.period)}"
+    return text if limit.at_most is None else f"{text} (tolerable: {size_text(limit.at_most)})"
+
+
+def chance_words(limit: Limit) -> str:
+    """'chance of at least one passage 88 % (80 to 94), of more than 1 62 %'."""
+    text = f"chance of at least one passage {share_words(limit.chance, limit.interval)}"
+    if limit.at_most is not None and limit.chance_of_more is not None:
+        text += f", of more than tolerable {percent(limit.chance_of_more)}"
     return text
+
+
+def period_words(period: str) -> str:
+    """'30d' -> '30 days'; what is no span stays as it is."""
+    span = parse_span(period)
+    return plain(period) if span is None else span_words(span)
 
 
 def share_words(share: float, interval: tuple[float | None, float | None] | None) -> str:
     """A chance in percent, with the digits its interval allows: '12 % (8 to 17)'."""
     if interval is None or interval == (None, None):
-        return f"{estimate(100 * share) if share > 1e-6 else 'under 0.0001'} %"
+        return percent(share)
     scaled = tuple(None if bound is None else 100 * bound for bound in interval)
     return f"{estimate(100 * share, scaled)} % ({bounds_text(100 * share, scaled)})"
 

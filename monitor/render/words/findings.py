@@ -7,12 +7,22 @@ from typing import Literal
 
 import msgspec
 
-from monitor.render.numbers import at_place, count_text, estimate, percent, place_of, size_text
+from monitor.render.numbers import at_place, count_text, exact_at, percent, place_of, size_text
 from monitor.render.planned import baseline_level
 from monitor.render.safe import plain
 from monitor.render.seen import FeedAccount, Refit, Seen, StreamSeen
 from monitor.render.times import plural, short_moment
-from monitor.render.words.common import beyond_words, chance_by_luck, level_words, limit_words, one_in_words, p_words
+from monitor.render.words.common import (
+    beyond_words,
+    chance_by_luck,
+    chance_words,
+    level_words,
+    one_in_words,
+    p_words,
+    passages_words,
+    size_with_unit,
+)
+from monitor.tail.judgement import Level
 from monitor.watch.flags import Flag
 
 Kind = Literal["heavier", "limit", "fit", "lighter", "failed", "skipped", "rejected lines"]
@@ -22,11 +32,17 @@ MANY_REJECTED = 0.1
 
 
 class Finding(msgspec.Struct, frozen=True, kw_only=True):
-    """One thing that needs a look: a headline that stands alone, and sentences with the figures behind it."""
+    """One thing that needs a look: a headline, what it means in sizes, and sentences with the figures behind it."""
 
     kind: Kind
     headline: str
+    consequence: str = ""
     detail: tuple[str, ...] = ()
+
+    @property
+    def sentence(self) -> str:
+        """Headline and consequence, without a full stop."""
+        return f"{self.headline}; {self.consequence}" if self.consequence else self.headline
 
     @property
     def rank(self) -> int:
@@ -88,10 +104,10 @@ def _exponent_finding(stream: StreamSeen, refit: Refit, flag: Flag, zone: str, n
 
     since = since_when(stream.refits, same, zone, now)
     head = f"tail {flag.direction or 'different'} {than_baseline(source)} {since}"
-    level = level_against(stream)
     return Finding(
         kind=direction,
-        headline=f"{head}; {level}" if level else head,
+        headline=head,
+        consequence=level_against(stream),
         detail=tuple(text for text in (_alpha_against(stream, refit, flag), *_caution(stream)) if text),
     )
 
@@ -108,7 +124,7 @@ def _alpha_against(stream: StreamSeen, refit: Refit, flag: Flag) -> str:
     return (
         f"Alpha above {size_text(against.xmin)} {plain(stream.plan.unit)}{events} "
         f"{at_place(against.alpha_later, place)}, {planned_or_before(stream)} "
-        f"{size_text(against.alpha_earlier) if stream_planned(stream) else at_place(against.alpha_earlier, place)}; "
+        f"{baseline_alpha(stream, against.alpha_earlier, place)}; "
         f"smaller is heavier; {chance_by_luck(flag.p)}."
     )
 
@@ -116,6 +132,11 @@ def _alpha_against(stream: StreamSeen, refit: Refit, flag: Flag) -> str:
 def stream_planned(stream: StreamSeen) -> bool:
     """Whether the baseline is a plan from the settings."""
     return stream.baseline is not None and stream.baseline.source == "plan"
+
+
+def baseline_alpha(stream: StreamSeen, alpha: float, place: int) -> str:
+    """The baseline's alpha with the digits of the figure beside it; a planned one with all of its own."""
+    return exact_at(alpha, place) if stream_planned(stream) else at_place(alpha, place)
 
 
 def planned_or_before(stream: StreamSeen) -> str:
@@ -132,10 +153,16 @@ def level_against(stream: StreamSeen) -> str:
     text = f"{one_in_words(level.one_in)} now passes {at_place(level.size, place)} {plain(stream.plan.unit)}"
     before = baseline_level(stream, level.one_in)
     if before is not None:
-        text += f", {planned_or_before(stream)} {at_place(before, place)}"
+        text += f", {planned_or_before(stream)} {at_place(before, place_of(before, _scaled(level, before)))}"
     if stream.plan.limit is not None:
         text += f", limit {size_text(stream.plan.limit)}"
     return text
+
+
+def _scaled(level: Level, size: float) -> tuple[float | None, ...]:
+    """The level's interval moved to another size: a baseline is shown with as many digits as what it stands beside."""
+    assert level.size is not None
+    return tuple(None if bound is None else bound * size / level.size for bound in level.interval)
 
 
 def _caution(stream: StreamSeen) -> list[str]:
@@ -162,11 +189,8 @@ def _limit_finding(stream: StreamSeen) -> list[Finding]:
     limit = None if judgement is None else judgement.limit
     if limit is None or limit.at_most is None or limit.expected <= limit.at_most:
         return []
-    text = (
-        f"limit {size_text(limit.size)} {plain(stream.plan.unit)} is expected to be passed "
-        f"{estimate(limit.expected)} times in {plain(limit.period)}, held tolerable: {size_text(limit.at_most)}"
-    )
-    return [Finding(kind="limit", headline=text, detail=(f"{limit_words(limit, stream.plan.unit)}.",))]
+    text = f"limit {size_with_unit(limit.size, stream.plan.unit)} {passages_words(limit)}"
+    return [Finding(kind="limit", headline=text, detail=(f"{chance_words(limit).capitalize()}.",))]
 
 
 def _no_result(refit: Refit, zone: str, now: int) -> Finding:
@@ -199,7 +223,7 @@ def quiet_words(stream: StreamSeen, zone: str, now: int) -> str:
     latest = stream.latest
     if latest is None:
         waiting = f", {plural(stream.waiting, 'window')} waiting to be judged" if stream.waiting else ""
-        return f"not judged yet: {plural(stream.open_events, 'event')} in the open pane{waiting}"
+        return f"not judged yet: {plural(stream.state.events, 'event')} so far{waiting}"
     judged = stream.judgement
     if judged is not None and judged.alpha is None:
         return f"no tail to judge yet: {judged.reason or 'too few events'}"
@@ -209,12 +233,12 @@ def quiet_words(stream: StreamSeen, zone: str, now: int) -> str:
 def level_line(stream: StreamSeen) -> str:
     """The level with its interval against baseline and limit, a full sentence; empty without a level."""
     level = stream.level
-    if level is None:
+    if level is None or level.size is None:
         return ""
     text = f"One event in {count_text(level.one_in)} passes {level_words(level, stream.plan.unit)}"
     before = baseline_level(stream, level.one_in)
     if before is not None:
-        text += f", {planned_or_before(stream)} {estimate(before)}"
+        text += f", {planned_or_before(stream)} {at_place(before, place_of(before, _scaled(level, before)))}"
     if stream.plan.limit is not None:
         text += f", limit {size_text(stream.plan.limit)}"
     return text + "."

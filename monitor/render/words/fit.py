@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from monitor.render.numbers import bounds_text, count_text, estimate, size_text, with_bounds
+from monitor.render.numbers import bounds_text, count_text, estimate, percent, size_text, with_bounds
 from monitor.render.safe import plain
 from monitor.render.times import plural
 from monitor.render.words.common import (
@@ -14,6 +14,7 @@ from monitor.render.words.common import (
     moments_words,
     one_in_words,
     p_words,
+    share_words,
     size_with_unit,
 )
 from monitor.tail.judgement import Judgement, Level, Rival
@@ -39,10 +40,10 @@ def fit_sentences(judgement: Judgement, unit: str) -> list[str]:
         ]
     if judgement.limit is not None:
         lines.append(_sentence(limit_words(judgement.limit, unit)))
-    moments = moments_words(judgement.mean_finite, judgement.variance_finite) if judgement.alpha is not None else None
-    lines += [moments] if moments else []
-    lines += [f"Note: {warning}" for warning in judgement.warnings]
-    lines += [f"Assumed: {assumed}" for assumed in judgement.assumed]
+    lines += _largest(judgement, unit)
+    lines += _moments(judgement)
+    lines += [_sentence(f"note: {warning}") for warning in judgement.warnings]
+    lines += [_sentence(f"assumed: {assumed}") for assumed in judgement.assumed]
     if judgement.levels or judgement.limit is not None:
         lines.append(CAUTION)
     return [plain(line) for line in lines]
@@ -128,6 +129,30 @@ def rival_words(rival: Rival) -> str:
         "neither": "the data cannot tell them apart",
     }[rival.favours]
     return f"{head}{verdict} ({figures})."
+
+
+def _moments(judgement: Judgement) -> list[str]:
+    # The judgement's own warnings say it with the figures; saying it twice helps nobody.
+    if judgement.alpha is None or any("infinite" in warning for warning in judgement.warnings):
+        return []
+    words = moments_words(judgement.mean_finite, judgement.variance_finite)
+    return [words] if words else []
+
+
+def _largest(judgement: Judgement, unit: str) -> list[str]:
+    lines = []
+    largest, top = judgement.largest, judgement.top_share
+    if largest is not None and largest.median is not None:
+        low, high = largest.interval
+        text = f"the largest of {count_text(largest.events)} events is as likely above as below "
+        text += f"{estimate(largest.median, largest.interval)} {plain(unit)}".rstrip()
+        if low is not None or high is not None:
+            text += f" ({bounds_text(largest.median, largest.interval)})"
+        lines.append(_sentence(text))
+    if top is not None and top.share is not None:
+        held = share_words(top.share, top.interval)
+        lines.append(_sentence(f"the largest {percent(top.fraction)} of the tail's events hold {held} of its total"))
+    return lines
 
 
 def _levels(judgement: Judgement, unit: str) -> list[str]:

@@ -1,0 +1,101 @@
+"""The live screen: once a second, or at a key, look at the store and paint what changed."""
+
+from __future__ import annotations
+
+import time
+
+import msgspec
+from rich.console import Console
+from rich.text import Text
+
+from monitor.cli.terminal import Terminal
+from monitor.cli.watching import StoreWatch
+from monitor.errors import MonitorError
+from monitor.render.focus import Focused, focus_page
+from monitor.render.frame import Look
+from monitor.render.help import help_page
+from monitor.render.screen import in_order, overview
+from monitor.render.seen import Seen
+from storage.errors import StoreError
+
+SECOND = 1_000_000_000
+
+
+class Page(msgspec.Struct, frozen=True, kw_only=True):
+    """Where the reader is: which stream is marked, whether it is looked at closely, whether help is open."""
+
+    selected: str | None = None
+    close: bool = False
+    help: bool = False
+
+
+def turned(page: Page, key: str, names: list[str], step: int) -> Page:
+    """The page after a key. `names` are the streams in the order shown, `step` the rows of half a page."""
+    if key == "help":
+        return msgspec.structs.replace(page, help=not page.help)
+    if key == "back":
+        return msgspec.structs.replace(page, help=False, close=page.close and page.help)
+    if page.help or not names:
+        return page
+    at = names.index(page.selected) if page.selected in names else 0
+    moves = {"up": -1, "down": 1, "page up": -step, "page down": step, "first": -len(names), "last": len(names)}
+    if page.close:
+        moves |= {"left": -1, "right": 1}
+    if key in moves:
+        at = max(0, min(at + moves[key], len(names) - 1))
+    return msgspec.structs.replace(page, selected=names[at], close=page.close or key == "enter")
+
+
+class _Glance:
+    """What was last read, and why it could not be read anew if so."""
+
+    def __init__(self, watch: StoreWatch) -> None:
+        self._watch = watch
+        self.seen: Seen = watch.look()
+        self.focused: Focused | None = None
+        self.notice: str | None = None
+
+    def renew(self, page: Page) -> None:
+        """Look again. A store that cannot be read keeps the last state on the screen, with a notice."""
+        try:
+            before, self.seen = self.seen, self._watch.look()
+            if not page.close or page.selected is None:
+                self.focused = None
+            elif self.focused is None or self.focused.stream.name != page.selected or before is not self.seen:
+                self.focused = self._watch.focus(page.selected)
+            self.notice = None
+        except (StoreError, MonitorError) as error:
+            self.notice = f"Shown is the last that could be read. {error}"
+
+    def names(self, now: int) -> list[str]:
+        """Streams in the order shown."""
+        return [one.stream.name for one in in_order(self.seen, now)]
+
+    def lines(self, page: Page, look: Look, now: int) -> list[Text]:
+        """The page, painted."""
+        if page.help:
+            return help_page(look)
+        if self.focused is not None and page.close:
+            return focus_page(self.focused, self.seen, now, look, notice=self.notice, live=True)
+        return overview(self.seen, now, look, selected=page.selected, notice=self.notice, live=True)
+
+
+def run_live(watch: StoreWatch, console: Console, look: Look, stream: str | None) -> None:
+    """Show the screen until the reader quits. Raises what the first look at the store raises."""
+    glance = _Glance(watch)
+    page = Page(selected=stream, close=stream is not None)
+    with Terminal(console) as terminal:
+        while True:
+            now = time.time_ns()
+            names = glance.names(now)
+            if page.selected not in names:
+                page = msgspec.structs.replace(page, selected=names[0] if names else None, close=False)
+            glance.renew(page)
+            look = msgspec.structs.replace(look, width=max(1, console.width), height=max(1, console.height))
+            terminal.paint(glance.lines(page, look, now))
+            # Wake just after the clock's next second, so that the time shown is never stale by more than that.
+            until = time.monotonic() + (SECOND - now % SECOND) / SECOND + 0.005
+            for key in terminal.keys(until):
+                if key == "quit":
+                    return
+                page = turned(page, key, names, look.height // 2)

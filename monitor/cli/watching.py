@@ -1,0 +1,185 @@
+"""The store as the screen sees it: read again only when something was committed.
+
+SQLite's data_version tells whether another process committed since the last look; while it stands still, nothing
+is read. Refits are read again only when a row was added, panes only when the focused refit changes.
+"""
+
+from __future__ import annotations
+
+import os
+from collections import Counter
+from pathlib import Path
+from types import TracebackType
+
+import numpy as np
+
+from monitor.cli.output import open_place, plan_of
+from monitor.cli.reading import decoded, unknown_stream
+from monitor.plan import Plan
+from monitor.render.charts import TailDrawing
+from monitor.render.focus import Focused
+from monitor.render.planned import baseline_tails, fitted_tails
+from monitor.render.seen import Refit, Seen, StreamSeen, accounts
+from monitor.render.stream_rows import STRIP
+from storage.errors import StoreError
+from storage.facts import BaselineSet, StreamState
+from storage.history import Reader
+
+
+class StoreWatch:
+    """A store that is looked at again and again. Close it, or use it in a `with`.
+
+    Opening raises what open_place raises; later looks raise StoreError while the store cannot be read.
+    """
+
+    def __init__(self, place: Path) -> None:
+        self._place = place
+        self._reader: Reader | None = open_place(place)
+        self._file = _identity(self._reader.path)
+        self._forget()
+
+    def _forget(self) -> None:
+        self._version: int | None = None
+        self._refits_at: tuple[int | None, int] | None = None
+        self._refits: dict[str, tuple[Refit, ...]] = {}
+        self._known: dict[tuple[str, int], Refit] = {}
+        self._plan: Plan | None = None
+        self._seen: Seen | None = None
+        self._drawings: dict[str, tuple[str, TailDrawing]] = {}
+
+    def __enter__(self) -> StoreWatch:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Close the file."""
+        if self._reader is not None:
+            self._reader.close()
+            self._reader = None
+
+    def _open(self) -> Reader:
+        """The reader, opened anew when the file was replaced or the last look failed."""
+        if self._reader is not None and _identity(self._reader.path) != self._file:
+            self.close()
+        if self._reader is None:
+            self._forget()
+            self._reader = open_place(self._place)
+            self._file = _identity(self._reader.path)
+        return self._reader
+
+    def look(self) -> Seen:
+        """The state of the store; the same object while nothing was committed.
+
+        Raises StoreError or SourceError while it cannot be read; the next look tries again.
+        """
+        try:
+            reader = self._open()
+            version = reader.db.execute("pragma data_version").fetchone()[0]
+            if self._seen is None or version != self._version:
+                with reader.snapshot():
+                    self._seen = self._read(reader)
+                self._version = version
+            return self._seen
+        except StoreError:
+            self.close()
+            raise
+
+    def _read(self, reader: Reader) -> Seen:
+        plan = self._plan_in_force(reader)
+        refits = self._last_refits(reader)
+        baselines = _in_force(reader.baselines())
+        open_events: Counter[str] = Counter()
+        for pane in reader.open_panes():
+            open_events[pane.stream] += pane.events
+        waiting = Counter(job.stream for job in reader.refit_jobs())
+
+        def seen(state: StreamState) -> StreamSeen:
+            return StreamSeen(
+                state=state,
+                plan=plan.stream(state.stream, state.unit),
+                refits=refits.get(state.stream, ()),
+                baseline=baselines.get(state.stream),
+                open_events=open_events[state.stream],
+                waiting=waiting[state.stream],
+            )
+
+        return Seen(
+            store=reader.path.name,
+            plan=plan,
+            streams=tuple(seen(state) for state in reader.streams()),
+            feeds=accounts(reader.chains()),
+        )
+
+    def _plan_in_force(self, reader: Reader) -> Plan:
+        if self._plan is None or self._plan.digest != reader.settings_digest():
+            self._plan = plan_of(reader)
+        return self._plan
+
+    def _last_refits(self, reader: Reader) -> dict[str, tuple[Refit, ...]]:
+        at = reader.db.execute("select max(rowid), count(*) from refit").fetchone()
+        if at != self._refits_at:
+            found: dict[str, list[Refit]] = {}
+            known = {}
+            for stored in reader.refits(last=STRIP):
+                key = (stored.id, stored.known_at)
+                known[key] = self._known.get(key) or decoded(stored, reader.path)
+                found.setdefault(stored.stream, []).append(known[key])
+            self._known = known
+            self._refits = {stream: tuple(refits) for stream, refits in found.items()}
+            self._refits_at = at
+        return self._refits
+
+    def focus(self, name: str) -> Focused:
+        """One stream with the sizes of its newest judged window. Raises SourceError when there is no such stream."""
+        seen = self.look()
+        stream = next((one for one in seen.streams if one.name == name), None)
+        if stream is None:
+            raise unknown_stream(name, [one.name for one in seen.streams])
+        try:
+            reader = self._open()
+            with reader.snapshot():
+                drawing = self._drawing(reader, seen, stream)
+                samples = tuple(reader.rejected_samples(stream.state.feed)[-3:])
+        except StoreError:
+            self.close()
+            raise
+        feed = next((one for one in seen.feeds if one.feed == stream.state.feed), None)
+        return Focused(stream=stream, feed=feed, drawing=drawing, samples=samples)
+
+    def _drawing(self, reader: Reader, seen: Seen, stream: StreamSeen) -> TailDrawing | None:
+        judged = stream.judged
+        if judged is None:
+            return None
+        key = f"{judged.id} {stream.baseline.id if stream.baseline else ''}"
+        held = self._drawings.get(stream.name)
+        if held is None or held[0] != key:
+            content = reader.window(stream.name, judged.start, judged.end, seen.plan.window_distinct).content
+            drawing = TailDrawing(
+                sizes=np.asarray(content.sizes),
+                counts=np.asarray(content.counts),
+                unit=stream.plan.unit,
+                fit=fitted_tails(stream),
+                baseline=baseline_tails(stream),
+                limit=stream.plan.limit,
+            )
+            # One at a time: the sizes of many large windows would be held for nothing.
+            self._drawings = {stream.name: (key, drawing)}
+        return self._drawings[stream.name][1]
+
+
+def _in_force(baselines: list[BaselineSet]) -> dict[str, BaselineSet]:
+    """The last baseline of each stream."""
+    return {baseline.stream: baseline for baseline in baselines}
+
+
+def _identity(path: Path) -> tuple[int, int] | None:
+    """Which file lies at the path: a store put in its place is another one."""
+    try:
+        found = os.stat(path)
+    except OSError:
+        return None
+    return found.st_dev, found.st_ino

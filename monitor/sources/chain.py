@@ -69,7 +69,7 @@ class Chain:
         r = self.reading
         if r is None:
             return ChainStatus(self.own, self.at_end, None, 0, 0)
-        return ChainStatus(self.own, self.at_end, r.content.path, r.size, r.position)
+        return ChainStatus(self.own, self.at_end, r.content.path, r.size, r.position, r.content.modified())
 
     def close(self) -> None:
         """Give back the file."""
@@ -104,6 +104,8 @@ class Chain:
 
     def _take(self, limit: int, finishing: bool) -> list[Block]:
         reading = self._now()
+        if not reading.position and self._overtaken(reading):
+            return [self._news()]
         try:
             taken = reading.take(limit, max_line=self._world.max_line)
         except Changed:
@@ -114,6 +116,19 @@ class Chain:
         self.at_end = False
         self._world.tell(self.own, None)
         return [self._block(reading, taken)]
+
+    def _overtaken(self, reading: Reading) -> bool:
+        """Whether a rotated file came to lie before the one at hand, of which nothing was read yet.
+
+        So it is when the path was copied and cut off between two polls: what is read next is in the copy.
+        """
+        if not self.finished or reading.finite or not reading.content.read_at(0, 1):
+            return False
+        following = self._following(self.finished[-1], deep=True)
+        if following is None or following == self.own:
+            return False
+        self.close()
+        return True
 
     def _now(self) -> Reading:
         assert self.reading is not None

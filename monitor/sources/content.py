@@ -60,6 +60,10 @@ class PlainContent:
         """Bytes now."""
         return os.fstat(self._fd).st_size
 
+    def modified(self) -> int:
+        """When it was last written, ns since 1970 UTC."""
+        return os.fstat(self._fd).st_mtime_ns
+
     def links(self) -> int:
         """Names that the file still has."""
         return os.fstat(self._fd).st_nlink
@@ -119,6 +123,10 @@ class PackedContent:
     def size(self) -> int:
         """Content bytes as far as read; the end is known only when it is reached."""
         return self._at
+
+    def modified(self) -> int:
+        """When it was last written, ns since 1970 UTC."""
+        return self._raw.modified()
 
     def links(self) -> int:
         """Names that the file still has."""

@@ -63,6 +63,7 @@ class _Side(msgspec.Struct, frozen=True, kw_only=True):
     n_tail: int
     n: int
     mean_y: float
+    on_grid: bool
 
 
 def compare_windows(earlier: Sample, later: Sample, *, xmin: float, counting: Counting) -> Comparison:
@@ -96,7 +97,7 @@ def compare_with_fit(
         mean_y = 1 / slope
     one_point = Nodes(np.array([mean_y]), np.zeros(1))
     data = TailData(one_point, None, np.array([float(n_tail)]), xmin)
-    side = _Side(data=data, n_tail=n_tail, n=n, mean_y=mean_y)
+    side = _Side(data=data, n_tail=n_tail, n=n, mean_y=mean_y, on_grid=later.cells is not None)
     return _compared(side, _side(later, xmin, counting), xmin, counting)
 
 
@@ -147,13 +148,15 @@ def _side(sample: Sample, xmin: float, counting: Counting) -> _Side:
     first = int(np.searchsorted(where, bound, side="left"))
     n_tail = int(sample.counts[first:].sum())
     if n_tail == 0:
-        return _Side(data=None, n_tail=0, n=sample.n, mean_y=0.0)
+        return _Side(data=None, n_tail=0, n=sample.n, mean_y=0.0, on_grid=False)
     data = tail_data(sample, xmin, counting, start_cell)
     if start_cell is None or sample.cells is None:
         y = data.nodes.y
     else:
         y = np.asarray(sample.cells[first:] - start_cell + 0.5, np.float64) * CELL_WIDTH
-    return _Side(data=data, n_tail=n_tail, n=sample.n, mean_y=summed(data.counts, y) / n_tail)
+    return _Side(
+        data=data, n_tail=n_tail, n=sample.n, mean_y=summed(data.counts, y) / n_tail, on_grid=start_cell is not None
+    )
 
 
 def _silent(side: _Side) -> bool:
@@ -216,9 +219,8 @@ def _measured_test(earlier: _Side, later: _Side) -> _Exponents:
 
 def _measured_slope(side: _Side) -> float:
     """The exponent less 1; on the grid by its closed form there (Virkar & Clauset 2014), else 1 / mean log."""
-    assert side.data is not None
     beyond_first = side.mean_y / CELL_WIDTH - 0.5
-    if side.data.starts is None or beyond_first <= 0:
+    if not side.on_grid or beyond_first <= 0:
         return 1 / side.mean_y
     return log1p(1 / beyond_first) / CELL_WIDTH
 

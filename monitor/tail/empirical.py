@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from math import floor
+from math import exp, floor, log
 
 import numpy as np
 from scipy.special import betainc, betaincinv
@@ -34,8 +34,20 @@ def empirical_levels(sample: Sample, one_in: tuple[int, ...]) -> tuple[Level, ..
 
 def _empirical_level(sample: Sample, events: int) -> Level:
     size = empirical_size(sample, 1 / events) if sample.n >= events else None
-    beyond = None if size is None else size / float(sample.sizes[-1])
-    return Level(one_in=events, size=size, interval=empirical_interval(sample, 1 / events), beyond_data=beyond)
+    return Level(
+        one_in=events,
+        size=size,
+        interval=empirical_interval(sample, 1 / events),
+        beyond_data=beyond_data(size, sample),
+    )
+
+
+def beyond_data(size: float | None, sample: Sample) -> float | None:
+    """How many times the largest size seen `size` is; None for an unknown size or a ratio beyond doubles."""
+    if size is None:
+        return None
+    log_ratio = log(size) - log(float(sample.sizes[-1]))
+    return exp(log_ratio) if log_ratio < 709 else None
 
 
 def empirical_size(sample: Sample, chance: float) -> float:

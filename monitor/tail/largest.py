@@ -44,7 +44,6 @@ def _above_whole(fit: TailFit, events: int) -> float | None:
     if stop > 300:
         return None
     nodes = whole_nodes(fit.xmin + 1, fit.xmin, Reach(stop, stop, min(0.5, 2 / slope)), 0.25)
-    end = float(nodes.y[-1])
 
     def at_least(y: Floats) -> Floats:
         survival = np.exp(log_zeta(alpha, fit.xmin * np.exp(y)) - log_zeta(alpha, np.array(fit.xmin)))
@@ -53,7 +52,7 @@ def _above_whole(fit: TailFit, events: int) -> float | None:
 
     mean = fit.xmin * float(at_least(np.zeros(1))[0])
     mean += fit.xmin * float(np.sum(np.exp(nodes.log_weight + nodes.y) * at_least(nodes.y)))
-    mean += fit.xmin * float(np.exp(end) * at_least(np.array([end]))[0]) / (slope - 1)
+    mean += fit.xmin * float(np.exp(stop) * at_least(np.array([stop]))[0]) / (slope - 1)
     return mean
 
 

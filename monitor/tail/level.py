@@ -15,7 +15,7 @@ import msgspec
 import numpy as np
 from scipy.special import pdtrc
 
-from monitor.tail.empirical import empirical_interval, empirical_size, share_above
+from monitor.tail.empirical import beyond_data, empirical_interval, empirical_size, share_above
 from monitor.tail.judgement import Interval, Largest, Level, Limit, Options, Rival, TopShare
 from monitor.tail.largest import expected_largest
 from monitor.tail.rivals import best_rival, rival_size
@@ -70,8 +70,7 @@ def _level(sample: Sample, fit: TailFit, draws: Draws | None, events: int, *, ri
     if rival is not None and events * fit.share >= 1:
         by_rival = rival_size(rival, sample, fit.xmin, fit.n_tail, events, counting=fit.counting)
         second = None if by_rival is None else {"tail": rival.tail, "size": by_rival}
-    beyond = None if size is None else size / float(sample.sizes[-1])
-    return Level(one_in=events, size=size, interval=interval, beyond_data=beyond, by_rival=second)
+    return Level(one_in=events, size=size, interval=interval, beyond_data=beyond_data(size, sample), by_rival=second)
 
 
 def _size_passed(sample: Sample, fit: TailFit, draws: Draws | None, chance: float) -> tuple[float | None, Interval]:
@@ -137,7 +136,7 @@ def _chance_of_passing(sample: Sample, fit: TailFit, draws: Draws | None, size: 
     if np.isnan(one):
         return seen.share, (seen.low, seen.high)
     if draws is None or len(draws.alpha) < 39:
-        half = _Z * sqrt((log(size / fit.xmin) * fit.alpha_se) ** 2 + _share_variance(fit))
+        half = _Z * sqrt(((log(size) - log(fit.xmin)) * fit.alpha_se) ** 2 + _share_variance(fit))
         return one, (one * float(np.exp(-half)), min(one * float(np.exp(half)), 1.0))
     values = Tails.of_draws(draws, fit.counting).chance(size)
     return one, order_limits(values, missing=(seen.low, seen.high))

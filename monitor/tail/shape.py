@@ -94,7 +94,7 @@ def _pile_up(sample: Sample, xmin: float) -> str | None:
     if len(sizes) < 3 or counts[-1] < _LEAST_PILE:
         return None
     pile, top = int(counts[-1]), float(sizes[-1])
-    slope = float(counts.sum() / np.sum(counts * np.log(sizes / sizes[0])))
+    slope = float(counts.sum() / np.sum(counts * (np.log(sizes) - log(sizes[0]))))
     step = float(np.diff(sizes[-_TOP_SIZES:]).min())
     if sample.cells is not None:
         step = max(step, top * float(np.expm1(CELL_WIDTH)))
@@ -129,12 +129,13 @@ def _rounding(sample: Sample, xmin: float) -> str | None:
         return None
     common = int(np.gcd.reduce(units.multiples))
     step = common * units.unit
-    # Each further size is a multiple of a common step by chance at most once in 2. A step of 1 is no news: it is what
-    # 'whole' is for.
-    telling = len(units.multiples) >= log(1 / _ROUND_ODDS) / log(2)
+    # A size recorded to the power of ten below the step is a multiple of the step by chance once in `odds`. A step of 1
+    # is no news: it is what 'whole' is for.
+    odds = step / 10.0 ** (np.ceil(log10(step) - 1e-9) - 1)
+    telling = len(units.multiples) * log(odds) >= log(1 / _ROUND_ODDS)
     if step != 1 and step >= _COARSE * xmin and telling:
         return _rounded_words(f"all {int(units.counts.sum()):,} tail events", step, xmin)
-    return _heaped(units, xmin)
+    return _heaped(_Units(units.multiples // common, units.counts, step), xmin)
 
 
 def _in_units(sizes: NDArray[np.float64], counts: NDArray[np.int64]) -> _Units | None:

@@ -13,8 +13,9 @@ from monitor.tail.top_share import top_share_of
 
 def pure_tail(alpha, n, xmin=1.0, counting="measured"):
     return TailFit(
-        alpha=alpha, alpha_se=(alpha - 1) / n**0.5, xmin=xmin, start=0, n_tail=n, n=n, ks_distance=0.01, counting=counting
-    )
+        alpha=alpha, alpha_se=(alpha - 1) / n**0.5, xmin=xmin, start=0, n_tail=n, n=n,
+        ks_distance=0.01, counting=counting,
+    )  # fmt: skip
 
 
 @pytest.mark.parametrize(("n", "alpha", "mean"), [(100, 2.5, 57.7802), (1000, 2.5, 267.9236), (10_000, 3.0, 177.2476)])

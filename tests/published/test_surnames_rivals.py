@@ -77,7 +77,8 @@ def test_lognormal_parameters_are_those_of_a_general_optimiser(tail, rivals):
         mu, sigma = theta[0], np.exp(theta[1])
         return -np.sum(stats.truncnorm.logpdf(y, (start - mu) / sigma, np.inf, loc=mu, scale=sigma))
 
-    best = optimize.minimize(minus_log_likelihood, [4.0, 0.0], method="Nelder-Mead", options={"xatol": 1e-7, "fatol": 1e-10})
+    close = {"xatol": 1e-7, "fatol": 1e-10}
+    best = optimize.minimize(minus_log_likelihood, [4.0, 0.0], method="Nelder-Mead", options=close)
     figures = rivals["lognormal"].parameters
     assert figures["mu"] == pytest.approx(best.x[0], abs=2e-3)
     assert figures["sigma"] == pytest.approx(np.exp(best.x[1]), abs=1e-3)

@@ -17,12 +17,12 @@ from monitor.rejects import OVER_LONG, Rejected
 from monitor.sources.content import Content, Incomplete, open_content, same_content
 from monitor.sources.cutting import Taken
 from monitor.sources.family import family
-from monitor.sources.marks import KEPT_FINISHED, Bookmark, Mark, write_bookmark
+from monitor.sources.marks import KEPT_EMPTY, KEPT_FINISHED, Bookmark, Mark, write_bookmark
 from monitor.sources.reading import Changed, Reading
 from monitor.sources.source import Block, ChainStatus
 
 SETTLE = 3  # quiet polls before a file whose writer has moved over counts as finished
-_EARLIER = 4  # finished files before the last that may show where it stood among the rotated ones
+_COMPARISONS = 4096
 PATIENCE = 50  # polls to wait for a compressed file that stays incomplete
 
 Inode = tuple[int, int]
@@ -60,8 +60,9 @@ class Chain:
         self.at_end = False
         self._world = world
         self._resume = bookmark.current if bookmark else None
-        self._restarted = bookmark is not None
         self._quiet = self._waited = 0
+        # What was found for a version of a file: comparing compressed ones is dear.
+        self._compared: dict[tuple[str, tuple[int, ...], Mark], bool] = {}
         self._resting: tuple[int, ...] | None = None
 
     def status(self) -> ChainStatus:
@@ -122,9 +123,9 @@ class Chain:
 
         So it is when the path was copied and cut off between two polls: what is read next is in the copy.
         """
-        if not self.finished or reading.finite or not reading.content.read_at(0, 1):
+        if not (self.finished and self._is_own(reading) and reading.content.read_at(0, 1)):
             return False
-        following = self._following(self.finished[-1], deep=True)
+        following = self._following(self.finished[-1])
         if following is None or following == self.own:
             return False
         self.close()
@@ -157,12 +158,12 @@ class Chain:
         """Decide whether more may come here, or the file is finished."""
         self.at_end = True
         status = _status(self.own)
-        if status is not None and (status.st_dev, status.st_ino) == reading.content.inode:
+        if self._is_own(reading):
             self._quiet = 0
             return self._last_line(reading) if finishing or reading.finite else []
         if self._replaced(reading):
             return []
-        following = self._following(reading.mark(), deep=False)
+        following = self._following(reading.mark())
         if following is None and reading.content.links():
             return self._last_line(reading) if finishing else []
         if following == self.own and not (finishing or reading.finite or (status and status.st_size)):
@@ -184,10 +185,9 @@ class Chain:
         return [*blocks, self._news()]
 
     def _finish(self, reading: Reading) -> None:
-        self.finished = [*self.finished, reading.mark()][-KEPT_FINISHED:]
+        self.finished = _kept([*self.finished, reading.mark()])
         self.close()
         self._quiet = self._waited = 0
-        self._restarted = False
 
     def _news(self) -> Block:
         return Block(self.own, b"", 0, False, None, self._bookmark())
@@ -230,8 +230,7 @@ class Chain:
         return [self._news()]
 
     def _is_own(self, reading: Reading) -> bool:
-        status = _status(self.own)
-        return status is not None and (status.st_dev, status.st_ino) == reading.content.inode
+        return _inode(self.own) == reading.content.inode
 
     # -- finding the file to read
 
@@ -243,7 +242,7 @@ class Chain:
         if last is None:
             path = next((p for p in [*self._world.first_files(self.own), self.own] if self._free(p)), None)
         else:
-            path = self._following(last, deep=self._restarted)
+            path = self._following(last)
         if path is None:
             self.at_end = True
             return False
@@ -287,31 +286,29 @@ class Chain:
             f"the file read so far is gone ({mark.position} bytes of it were read); what it held beyond is lost",
         )
         self._resume = None
-        self.finished = [*self.finished, mark][-KEPT_FINISHED:]
+        self.finished = _kept([*self.finished, mark])
         return self.begin()
 
     def _whereabouts(self, mark: Mark) -> Iterator[str]:
         """Paths where the marked content may be: by inode, then plain files, then compressed ones."""
         rotated = family(self.own)[::-1]
         paths = list(dict.fromkeys([self.own, mark.path, *rotated]))
-        inodes = {p: (s.st_dev, s.st_ino) for p in paths if (s := _status(p)) is not None}
+        inodes = {p: inode for p in paths if (inode := _inode(p)) is not None}
         here = (mark.device, mark.inode)
         yield from (p for p in inodes if inodes[p] == here)
         others = [p for p in inodes if inodes[p] != here and self._world.owner(inodes[p]) in (None, self)]
         yield from (p for p in others if not _packed(p))
         yield from (p for p in others if _packed(p))
 
-    def _following(self, last: Mark, *, deep: bool) -> str | None:
-        """The file after a finished one: the next younger rotated file, else the path itself.
-
-        deep: look for the finished one by content too (it may have been copied or compressed meanwhile)
-        """
+    def _following(self, last: Mark) -> str | None:
+        """The file after a finished one: the next younger rotated file, else the path itself."""
         rotated = family(self.own)
-        place = _place(rotated, lambda p: self.is_marked(p, last))
-        if place is None and deep:
-            place = _place(rotated, lambda p: self.is_marked(p, last, by_inode=False))
-        for earlier in self.finished[-_EARLIER - 1 : -1][::-1] if place is None else ():
-            place = _place(rotated, lambda p, mark=earlier: self.is_marked(p, mark))  # type: ignore[misc]
+        place = None
+        for mark in [last, *self.finished[::-1]]:
+            if mark.position:  # an empty file cannot be told from another
+                place = _place(rotated, lambda p, m=mark: self.is_marked(p, m))  # type: ignore[misc]
+                if place is None:  # it may have been copied or compressed meanwhile
+                    place = _place(rotated, lambda p, m=mark: self.is_marked(p, m, by_inode=False))  # type: ignore[misc]
             if place is not None:
                 break
         younger = rotated[place + 1 :] if place is not None else []
@@ -319,12 +316,20 @@ class Chain:
 
     def is_marked(self, path: str, mark: Mark, *, by_inode: bool = True) -> bool:
         """Whether the content of a mark stands at a path."""
-        status = _status(path)
-        if status is None or (by_inode and (status.st_dev, status.st_ino) != (mark.device, mark.inode)):
+        version = _version(path)
+        if version is None or (by_inode and version[:2] != (mark.device, mark.inode)):
             return False
+        known = self._compared.get((path, version, mark))
+        if known is None:
+            if len(self._compared) >= _COMPARISONS:
+                self._compared.clear()
+            known = self._compared[path, version, mark] = self._compare(path, mark)
+        return known
+
+    def _compare(self, path: str, mark: Mark) -> bool:
         try:
             content = self._opened_if_same(path, mark)
-        except Incomplete:
+        except (Incomplete, OSError):
             return False
         if content is None:
             return False
@@ -333,11 +338,8 @@ class Chain:
 
     def _free(self, path: str) -> bool:
         """Whether a file exists that nobody reads or has read."""
-        status = _status(path)
-        if status is None:
-            return False
-        inode = (status.st_dev, status.st_ino)
-        if self._world.owner(inode) is not None:
+        inode = _inode(path)
+        if inode is None or self._world.owner(inode) is not None:
             return False
         return not any(
             self.is_marked(path, m, by_inode=True)
@@ -363,6 +365,13 @@ class Chain:
         self._world.tell(path, f"cannot be read: {(error.strerror or str(error)).lower()}; other files go on")
 
 
+def _kept(marks: Sequence[Mark]) -> list[Mark]:
+    """The last finished files; empty ones are many where rotation goes by the clock, and tell little."""
+    full = set([m for m in marks if m.position][-KEPT_FINISHED:])
+    empty = set([m for m in marks if not m.position][-KEPT_EMPTY:])
+    return [m for m in marks if m in full or m in empty]
+
+
 def _place(paths: Sequence[str], is_it: Callable[[str], bool]) -> int | None:
     return next((i for i in range(len(paths) - 1, -1, -1) if is_it(paths[i])), None)
 
@@ -376,6 +385,11 @@ def _status(path: str) -> os.stat_result | None:
         return os.stat(path)
     except OSError:
         return None
+
+
+def _inode(path: str) -> Inode | None:
+    status = _status(path)
+    return None if status is None else (status.st_dev, status.st_ino)
 
 
 def _version(path: str) -> tuple[int, ...] | None:

@@ -18,6 +18,7 @@ from monitor.errors import SourceError
 HEAD_BYTES = 4096
 ANCHOR_BYTES = 256
 KEPT_FINISHED = 16
+KEPT_EMPTY = 8
 _VERSION = 1
 
 

@@ -44,8 +44,10 @@ class Reader:
 
     def read(self, quiet: int = 6) -> Reader:
         """Poll until nothing came for some polls."""
-        still = 0
+        still = polls = 0
         while still < quiet:
+            polls += 1
+            assert polls < 20_000, "the source never comes to rest"
             blocks = self.source.poll(self.limit)
             self.take(blocks)
             still = 0 if blocks else still + 1

@@ -83,6 +83,9 @@ class Rival(msgspec.Struct, frozen=True, kw_only=True):
     p: float | None
     favours: Literal["power law", "rival", "neither", "not determined"]
     parameters: dict[str, float] = {}
+    nested_p: float | None = None
+    """Lognormal and stretched exponential hold the power law as a limit: p of the likelihood ratio against it, with
+    the power of Vuong's test on half the events or fewer."""
 
 
 class Level(msgspec.Struct, frozen=True, kw_only=True):

@@ -10,13 +10,14 @@ from math import exp, inf, isfinite, log, sqrt
 from typing import Literal
 
 import numpy as np
-from scipy.special import erfc, logsumexp, zeta
+from scipy.special import erfc, logsumexp
 
 from monitor.tail.base_measure import Nodes, Reach, TailData, reach_of, summed, support, tail_data
 from monitor.tail.judgement import Counting, Rival
 from monitor.tail.rival_fit import climbs_at_start, fit_law, log_constant, log_terms
 from monitor.tail.rival_laws import LAWS, Floats, Law
 from monitor.tail.sample import Sample
+from monitor.tail.whole_law import log_zeta
 from storage.grid import cell_of
 
 FAVOURED_BELOW = 0.1
@@ -151,7 +152,11 @@ def _vuong(law: Law, difference: Floats, ratio: float, *, data: TailData, figure
     z = ratio / (sqrt(n) * spread)
     p = float(erfc(abs(z) / sqrt(2)))
     favours: Favours = "neither" if p >= FAVOURED_BELOW else "power law" if ratio > 0 else "rival"
-    return Rival(tail=law.name, log_likelihood_ratio=ratio, z=z, p=p, favours=favours, parameters=figures)
+    # At the edge of the parameters half of chi-square 1 (Self & Liang, J. Amer. Statist. Assoc. 82 (1987) 605, case 5).
+    nested_p = float(erfc(sqrt(max(-ratio, 0.0)))) / 2 if law.parameters == 2 else None
+    return Rival(
+        tail=law.name, log_likelihood_ratio=ratio, z=z, p=p, favours=favours, parameters=figures, nested_p=nested_p
+    )
 
 
 def _cut_off_shows(data: TailData, slope: float, counting: Counting) -> bool:
@@ -169,10 +174,11 @@ def _cut_off_shows(data: TailData, slope: float, counting: Counting) -> bool:
         inside = np.logaddexp.reduceat(at_data + y, data.starts) - np.logaddexp.reduceat(at_data, data.starts)
         log_mean = float(logsumexp(inside + weight)) - log(data.n)
     if counting == "whole":
-        expected = float(zeta(slope, data.xmin) / (data.xmin * zeta(slope + 1, data.xmin)))
+        ends = log_zeta(np.array([slope, slope + 1]), np.array(data.xmin))
+        expected = float(ends[0] - ends[1]) - log(data.xmin)
     else:
-        expected = slope / (slope - 1)
-    return log_mean < log(expected)
+        expected = log(slope) - log(slope - 1)
+    return log_mean < expected
 
 
 class _Survival:

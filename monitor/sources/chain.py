@@ -105,7 +105,7 @@ class Chain:
 
     def _take(self, limit: int, finishing: bool) -> list[Block]:
         reading = self._now()
-        if not reading.position and self._overtaken(reading):
+        if not reading.position and self._overtaken(reading, finishing):
             return [self._news()]
         try:
             taken = reading.take(limit, max_line=self._world.max_line)
@@ -118,15 +118,19 @@ class Chain:
         self._world.tell(self.own, None)
         return [self._block(reading, taken)]
 
-    def _overtaken(self, reading: Reading) -> bool:
+    def _overtaken(self, reading: Reading, finishing: bool) -> bool:
         """Whether a rotated file came to lie before the one at hand, of which nothing was read yet.
 
         So it is when the path was copied and cut off between two polls: what is read next is in the copy.
         """
-        if not (self.finished and self._is_own(reading) and reading.content.read_at(0, 1)):
+        before, reading.size = reading.size, reading.content.size()
+        if not (self.finished and (finishing or before or reading.size)):
             return False
+        rotated = family(self.own)
         following = self._following(self.finished[-1])
-        if following is None or following == self.own:
+        place = _place(rotated, lambda p: _inode(p) == reading.content.inode)
+        older = rotated if self._is_own(reading) else rotated[: place or 0]
+        if following not in older:
             return False
         self.close()
         return True

@@ -27,7 +27,7 @@ class Reading:
         self.finite = finite or content.packed
         self.position = 0 if mark is None else mark.position
         self.skipping = mark is not None and mark.skipping
-        self.size = 0
+        self.size = content.size()
         self._start = content.read_at(0, min(HEAD_BYTES, self.position))
         self._header: bytes | None = None
         if content.packed or mark is not None:  # now: going back in a compressed file is dear

@@ -30,7 +30,7 @@ class StreamSource:
 
     def poll(self, limit: int) -> list[Block]:
         """New lines, about `limit` bytes at most; at the end of the stream a last block says so."""
-        room = limit if len(self._held) < limit else self._max_line + 2 - len(self._held)
+        room = (limit if len(self._held) < limit else self._max_line + 2) - len(self._held)
         while room > 0 and not self._ended and (data := self._read(room)):
             self._held += data
             room -= len(data)

@@ -74,7 +74,7 @@ def refit(
 ) -> RefitStored:  # fmt: skip
     """A stored refit of the 14 days up to `end`."""
     return RefitStored(
-        id=f"{stream.encode().hex()[:6]}-{end // HOUR}", stream=stream, start=end - 14 * 24 * HOUR, end=end,
+        id=f"{line_digest(stream.encode())}-{end // HOUR}", stream=stream, start=end - 14 * 24 * HOUR, end=end,
         state=state, panes=336, window_digest="ab", settings="cd", seed=7,  # type: ignore[arg-type]
         judgement=msgspec.json.encode(judgement).decode(),
         comparison=None if against is None else msgspec.json.encode(against).decode(),

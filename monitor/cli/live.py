@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import time
+from collections.abc import Callable
 
 import msgspec
 from rich.console import Console
@@ -16,6 +17,7 @@ from monitor.render.frame import Look
 from monitor.render.help import help_page
 from monitor.render.screen import in_order, overview
 from monitor.render.seen import Seen
+from monitor.render.stream_rows import Sorted
 from storage.errors import StoreError
 
 SECOND = 1_000_000_000
@@ -54,6 +56,8 @@ class _Glance:
         self.seen: Seen = watch.look()
         self.focused: Focused | None = None
         self.notice: str | None = None
+        self._order_of: tuple[Seen, int] | None = None
+        self._order: list[Sorted] = []
 
     def renew(self, page: Page) -> None:
         """Look again. A store that cannot be read keeps the last state on the screen, with a notice."""
@@ -67,9 +71,12 @@ class _Glance:
         except (StoreError, MonitorError) as error:
             self.notice = f"Shown is the last that could be read. {error}"
 
-    def names(self, now: int) -> list[str]:
-        """Streams in the order shown."""
-        return [one.stream.name for one in in_order(self.seen, now)]
+    def order(self, now: int) -> list[Sorted]:
+        """Streams in the order shown; made again for a new state, and each minute for the times in its words."""
+        key = (self.seen, now // (60 * SECOND))
+        if self._order_of is None or self._order_of[0] is not key[0] or self._order_of[1] != key[1]:
+            self._order_of, self._order = key, in_order(self.seen, now)
+        return self._order
 
     def lines(self, page: Page, look: Look, now: int) -> list[Text]:
         """The page, painted."""
@@ -77,24 +84,36 @@ class _Glance:
             return help_page(look)
         if self.focused is not None and page.close:
             return focus_page(self.focused, self.seen, now, look, notice=self.notice, live=True)
-        return overview(self.seen, now, look, selected=page.selected, notice=self.notice, live=True)
+        order = self.order(now)
+        return overview(self.seen, now, look, order=order, selected=page.selected, notice=self.notice, live=True)
 
 
-def run_live(watch: StoreWatch, console: Console, look: Look, stream: str | None) -> None:
-    """Show the screen until the reader quits. Raises what the first look at the store raises."""
+def run_live(
+    watch: StoreWatch,
+    console: Console,
+    look: Look,
+    stream: str | None,
+    *,
+    clock: Callable[[], int] = time.time_ns,
+    over: Callable[[], bool] = lambda: False,
+) -> None:
+    """Show the screen until the reader quits or it is over. Raises what the first look at the store raises.
+
+    Parameters: clock, ns, on the scale of the events' time; over, asked before each look.
+    """
     glance = _Glance(watch)
     page = Page(selected=stream, close=stream is not None)
     with Terminal(console) as terminal:
-        while True:
-            now = time.time_ns()
-            names = glance.names(now)
+        while not over():
+            now = clock()
+            glance.renew(page)
+            names = [one.stream.name for one in glance.order(now)]
             if page.selected not in names:
                 page = msgspec.structs.replace(page, selected=names[0] if names else None, close=False)
-            glance.renew(page)
             look = msgspec.structs.replace(look, width=max(1, console.width), height=max(1, console.height))
             terminal.paint(glance.lines(page, look, now))
             # Wake just after the clock's next second, so that the time shown is never stale by more than that.
-            until = time.monotonic() + (SECOND - now % SECOND) / SECOND + 0.005
+            until = time.monotonic() + (SECOND - time.time_ns() % SECOND) / SECOND + 0.005
             for key in terminal.keys(until):
                 if key == "quit":
                     return

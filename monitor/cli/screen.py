@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import os
 import sys
 import time
 from pathlib import Path
 
 import click
+import msgspec
 from rich.console import Console
 
 from monitor.cli.output import in_option, json_option, print_json
@@ -15,6 +17,8 @@ from monitor.render.documents import screen_document
 from monitor.render.focus import focus_page
 from monitor.render.frame import Look, as_text
 from monitor.render.screen import overview
+
+HEIGHT_WITHOUT_TERMINAL = 50
 
 
 @click.command()
@@ -34,7 +38,7 @@ def screen(*, once: bool, stream: str | None, as_json: bool, place: Path) -> Non
                 document["streams"] = [one for one in document["streams"] if one["stream"] == stream]
             print_json(document)
         elif once or not can_redraw(console):
-            click.echo(one_frame(watch, look_of(console), stream))
+            click.echo(one_frame(watch, still_look(console), stream, time.time_ns()))
         else:
             # Only the live display needs the modules that handle a terminal.
             from monitor.cli.live import run_live
@@ -57,9 +61,16 @@ def look_of(console: Console) -> Look:
     return Look(width=max(1, console.width), height=max(1, console.height), ascii_only=ascii_only)
 
 
-def one_frame(watch: StoreWatch, look: Look, stream: str | None) -> str:
-    """One frame of plain text."""
-    now = time.time_ns()
+def still_look(console: Console) -> Look:
+    """The same for one frame that stays: the prompt after it takes a line, a file has room for more."""
+    look = look_of(console)
+    if console.is_terminal:
+        return msgspec.structs.replace(look, height=max(1, look.height - 1))
+    return look if "LINES" in os.environ else msgspec.structs.replace(look, height=HEIGHT_WITHOUT_TERMINAL)
+
+
+def one_frame(watch: StoreWatch, look: Look, stream: str | None, now: int) -> str:
+    """One frame of plain text; now in ns, on the scale of the events' time."""
     if stream is None:
         return as_text(overview(watch.look(), now, look))
     return as_text(focus_page(watch.focus(stream), watch.look(), now, look))

@@ -7,6 +7,7 @@ is read. Refits are read again only when a row was added, panes only when the fo
 from __future__ import annotations
 
 import os
+import time
 from collections import Counter
 from pathlib import Path
 from types import TracebackType
@@ -25,6 +26,9 @@ from storage.errors import StoreError
 from storage.facts import BaselineSet, StreamState
 from storage.history import Reader
 
+REST = 40.0
+"""Rest after each read, in times what it took: reading takes at most 1/40 of a core, however large the store."""
+
 
 class StoreWatch:
     """A store that is looked at again and again. Close it, or use it in a `with`.
@@ -40,6 +44,7 @@ class StoreWatch:
 
     def _forget(self) -> None:
         self._version: int | None = None
+        self._next_read = 0.0
         self._refits_at: tuple[int | None, int] | None = None
         self._refits: dict[str, tuple[Refit, ...]] = {}
         self._known: dict[tuple[str, int], Refit] = {}
@@ -72,17 +77,20 @@ class StoreWatch:
         return self._reader
 
     def look(self) -> Seen:
-        """The state of the store; the same object while nothing was committed.
+        """The state of the store; the same object while nothing was committed and while resting from a long read.
 
         Raises StoreError or SourceError while it cannot be read; the next look tries again.
         """
         try:
             reader = self._open()
             version = reader.db.execute("pragma data_version").fetchone()[0]
-            if self._seen is None or version != self._version:
+            started = time.monotonic()
+            if self._seen is None or (version != self._version and started >= self._next_read):
                 with reader.snapshot():
                     self._seen = self._read(reader)
                 self._version = version
+                now = time.monotonic()
+                self._next_read = now + REST * (now - started)
             return self._seen
         except StoreError:
             self.close()

@@ -91,7 +91,7 @@ def _axes(drawing: TailDrawing, columns: int, rows: int) -> _Axes:
     starts = [float(tails.xmin[0]) for tails in (drawing.fit, drawing.baseline) if tails is not None]
     top = max([*ends, *starts, *([drawing.limit] if drawing.limit else [])])
     # The body below the tail is of little interest: one decade of it is enough.
-    low = max(ends[0], min([ends[1] / 10, *(start / 10 for start in starts)]))
+    low = max(ends[0], min([ends[1] / 10, *(start / 10 for start in starts)])) if starts else ends[0]
     left, right = floor(log10(low) * 4) / 4, log10(top) + 0.05
     bottom = -max(1.0, log10(float(drawing.counts.sum())))
     return _Axes(left, max(right, left + 0.5), bottom, columns, rows)

@@ -45,7 +45,8 @@ def focus_page(
 ) -> list[Text]:
     """The page as lines: exactly look.height of them when live, else at most so many.
 
-    Sentences come first and take somewhat less than half of the height; then the drawing; the last refits take the rest.
+    Sentences come first and take somewhat less than half of the height, then the drawing; the last refits get
+    the rest.
     """
     zone = seen.plan.timezone
     foot = [styled(look, Part(KEYS))] if live else []
@@ -103,7 +104,7 @@ def _figures(stream: StreamSeen, now: int) -> list[str]:
     if judged is not None and judged.alpha is not None:
         lines.append(_alpha_line(stream))
         if judged.gof is not None:
-            lines.append(f"{_capital(p_words(judged.gof))}.")
+            lines.append(f"{p_words(judged.gof)}.")
         lines += [line for line in [level_line(stream)] if line]
     lines.append(
         f"{plural(state.events, 'event')}, {count_text(state.late)} late, {count_text(stream.open_events)} in the open "

@@ -39,7 +39,7 @@ def baseline_tails(stream: StreamSeen) -> Tails | None:
 def baseline_level(stream: StreamSeen, one_in: int) -> float | None:
     """The size that one event in `one_in` passes by the baseline; None where the baseline does not tell."""
     tails = baseline_tails(stream)
-    return None if tails is None else size_of(float(tails.log_size(1.0 / one_in)[0]))
+    return None if tails is None else size_of(float(tails.log_size(1.0 / one_in)[0]), tails.counting)
 
 
 def fitted_tails(stream: StreamSeen) -> Tails | None:

@@ -18,8 +18,10 @@ from monitor.render.times import plural
 from monitor.render.words.findings import feed_findings, findings, rejected_words
 
 KEYS = "Up, Down: move   Enter: look closer   h: help   q: quit"
-LEAST_ROWS = 4
-"""Lines of streams that sentences must leave room for."""
+LEAST_TABLE = 3
+"""Lines that sentences leave to the table, where a third of the height is less: heading, a stream, how many more."""
+LOW = 16
+"""A terminal with fewer lines has one line for each feed."""
 
 
 def in_order(seen: Seen, now: int) -> list[Sorted]:
@@ -29,14 +31,21 @@ def in_order(seen: Seen, now: int) -> list[Sorted]:
 
 
 def overview(
-    seen: Seen, now: int, look: Look, *, selected: str | None = None, notice: str | None = None, live: bool = False
+    seen: Seen,
+    now: int,
+    look: Look,
+    *,
+    order: Sequence[Sorted] | None = None,
+    selected: str | None = None,
+    notice: str | None = None,
+    live: bool = False,
 ) -> list[Text]:
     """The overview as lines, `look.height` of them when live, else as many as there is something to say.
 
-    Parameters: selected, the name of the marked stream; notice, a sentence about the screen itself, such as
-    that the store cannot be read at the moment.
+    Parameters: order, what in_order gave for this state, when it is at hand; selected, the name of the marked
+    stream; notice, a sentence about the screen itself, such as that the store cannot be read at the moment.
     """
-    streams, zone = in_order(seen, now), seen.plan.timezone
+    streams, zone = in_order(seen, now) if order is None else order, seen.plan.timezone
     top = [head_line(look, f"Tailgauge  {seen.store}", now, zone)]
     top += paragraph(look, notice, style=ABNORMAL) if notice else []
     top += paragraph(look, summary(seen, streams), style=STRONG)
@@ -66,25 +75,30 @@ def summary(seen: Seen, streams: Sequence[Sorted]) -> str:
 
 
 def feed_lines(seen: Seen, look: Look) -> list[Text]:
-    """What became of the lines of each feed, the troubled ones first; of more than three the rest is counted."""
+    """What became of the lines of each feed, the troubled ones first; feeds beyond a few are counted."""
     troubled = {feed.feed for feed, _ in feed_findings(seen)}
+    shown, lines_each = (1, 1) if look.height < LOW else (3, 2)
     lines = []
-    for feed in sorted(seen.feeds, key=lambda one: (one.feed not in troubled, one.feed))[:3]:
+    for feed in sorted(seen.feeds, key=lambda one: (one.feed not in troubled, one.feed))[:shown]:
         text = f"{feed.feed}: {plural(feed.events, 'event')}, {count_text(feed.late)} late; {rejected_words(feed)}"
-        lines += paragraph(look, text, style=ABNORMAL if feed.feed in troubled else "", indent="  ", first="")[:2]
-    if len(seen.feeds) > 3:
-        lines.append(styled(look, Part(f"and {plural(len(seen.feeds) - 3, 'more feed')}")))
+        style = ABNORMAL if feed.feed in troubled else ""
+        lines += paragraph(look, text, style=style, indent="  ", first="")[:lines_each]
+    if len(seen.feeds) > shown:
+        lines.append(styled(look, Part(f"and {plural(len(seen.feeds) - shown, 'more feed')}")))
     return lines
 
 
-def _body(streams: list[Sorted], now: int, look: Look, *, zone: str, selected: str | None, live: bool) -> list[Text]:
+def _body(
+    streams: Sequence[Sorted], now: int, look: Look, *, zone: str, selected: str | None, live: bool
+) -> list[Text]:
     """Sentences, then the table, in look.height lines: as much of the sentences as leaves room for rows."""
     pressing = [one for one in streams if one.findings]
     blank = [Text("", end="")]
-    notes = note_lines(streams, look)
-    least = min(len(streams), LEAST_ROWS) + 1
+    least = min(len(streams) + 1, max(LEAST_TABLE, look.height // 3))
     all_rows = len(streams) + 1
     for depth, rows in ((2, all_rows), (1, all_rows), (1, least), (0, least)):
+        if len(pressing) + rows > look.height:
+            continue  # Each takes a line at least: no need to make hundreds of sentences to learn that.
         said = [line for one in pressing for line in _said(one, look, depth)]
         if len(said) + bool(said) * 2 + rows <= look.height:
             break
@@ -96,6 +110,7 @@ def _body(streams: list[Sorted], now: int, look: Look, *, zone: str, selected: s
         streams, now, msgspec.structs.replace(look, height=room), zone=zone, selected=selected, live=live
     )
     parts += [*blank, *table]
+    notes = note_lines(streams[: look.height], look)
     if len(parts) + len(notes) + 1 <= look.height:
         parts += [*blank, *notes]
     return parts

@@ -47,14 +47,15 @@ def stream_table(
     marked = names.index(selected) if selected in names else None
     first, last = _shown(len(streams), look.height - 1, marked)
     inner = look.width - 2 * live
-    kept, widths = chosen(_columns(streams, now, look), inner)
+    # Only what is shown is made into text: a thousand streams must not cost more than a screenful.
+    kept, widths = chosen(_columns(streams[first:last], now, look), inner)
     lines = [styled(look, Part("  " * live + _cells(kept, widths, None)))]
-    for at in range(first, last):
+    for row, at in enumerate(range(first, last)):
         one = streams[at]
         lead = ("> " if at == marked else "  ") * live
         words = quiet_words(one.stream, zone, now)
-        name, state = (_cells(kept[i : i + 1], widths[i : i + 1], at) for i in (0, 1))
-        figures = words or _cells(kept[2:], widths[2:], at)
+        name, state = (_cells(kept[i : i + 1], widths[i : i + 1], row) for i in (0, 1))
+        figures = words or _cells(kept[2:], widths[2:], row)
         strong = STRONG if at == marked else ""
         lines.append(
             styled(

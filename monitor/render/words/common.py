@@ -46,12 +46,13 @@ def p_text(gof: GoodnessOfFit, *, join: str = "-") -> str:
 
 def p_words(gof: GoodnessOfFit) -> str:
     """p with its interval and what it means; a large p is good, and that is said."""
-    head = f"p {with_bounds(gof.p, gof.p_interval)}"
+    shown = estimate(gof.p, gof.p_interval)
     if gof.at_least_as_far == 0:
+        # None of the simulated samples was as far off: all that is known is the upper bound.
         high = gof.p_interval[1] or 1 / max(1, gof.replicates)
-        often = f"less than {times_in(ceil(high * 1000) / 1000)}"
+        head, often = f"p 0 (0 to {estimate(high)})", f"less than {times_in(ceil(high * 1000) / 1000)}"
     else:
-        often = times_in(gof.p)
+        head, often = f"p {with_bounds(gof.p, gof.p_interval)}", times_in(float(shown) or gof.p)
     if gof.doubtful:
         return (
             f"{head}: doubtful. A true power law would fit this badly {often}; "

@@ -2,7 +2,16 @@
 
 from __future__ import annotations
 
-from monitor.render.numbers import bounds_text, count_text, estimate, percent, size_text, with_bounds
+from monitor.render.numbers import (
+    at_place,
+    bounds_text,
+    count_text,
+    estimate,
+    percent,
+    place_of,
+    size_text,
+    with_bounds,
+)
 from monitor.render.safe import plain
 from monitor.render.times import plural
 from monitor.render.words.common import (
@@ -50,7 +59,8 @@ def fit_sentences(judgement: Judgement, unit: str) -> list[str]:
 
 
 def _sentence(text: str) -> str:
-    text = text[:1].upper() + text[1:]
+    # The name of a figure stays as it is written everywhere else.
+    text = text if text.startswith("p ") else text[:1].upper() + text[1:]
     return text if text.endswith((".", "!", "?")) else text + "."
 
 
@@ -104,8 +114,9 @@ def _fit_quality(judgement: Judgement) -> list[str]:
     lines = []
     if judgement.gof is not None:
         gof = judgement.gof
-        how = "as many as asked for" if gof.stopped == "budget" else "enough to decide"
-        lines.append(_sentence(f"{p_words(gof)} ({plural(gof.replicates, 'simulated sample')}, {how})"))
+        samples = plural(gof.replicates, "simulated sample")
+        how = f"From {samples}" if gof.stopped == "budget" else f"{samples} were enough to decide"
+        lines.append(f"{p_words(gof)}. {how}.")
     if judgement.ks_distance is not None:
         lines.append(
             f"Data and fit differ by at most {estimate(judgement.ks_distance)} in share of tail events "
@@ -169,7 +180,9 @@ def _level_sentence(level: Level, unit: str) -> str:
     if level.by_rival:
         other = level.by_rival.get("size")
         if isinstance(other, int | float):
-            text += f"; by the {level.by_rival.get('tail', 'rival')} {estimate(float(other))} {plain(unit)}".rstrip()
+            place = min(place_of(level.size or 0.0, level.interval), place_of(float(other), None) + 1)
+            size = at_place(float(other), place)
+            text += f"; by the {level.by_rival.get('tail', 'rival')} {size} {plain(unit)}".rstrip()
     return _sentence(text)
 
 

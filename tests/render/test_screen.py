@@ -1,0 +1,228 @@
+"""Frames of the screen as plain text, reviewed by eye; and what holds for every size and every stream name."""
+
+from __future__ import annotations
+
+import re
+from pathlib import Path
+
+import msgspec
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from rich.text import Text
+
+from monitor.cli.watching import StoreWatch
+from monitor.render.focus import Focused, focus_page
+from monitor.render.frame import ABNORMAL, Look, as_text
+from monitor.render.help import help_page
+from monitor.render.screen import overview
+from monitor.render.seen import Seen, StreamSeen
+from monitor.render.words import fit_word
+from tests.stores import NOW, chain, make, settings_fact, stream
+
+FRAME_80 = """\
+Tailgauge  orders.db                                     1 Dec 2026 14:05:09 WET
+2 of 6 streams need a look.
+
+north-dock: tail heavier than planned since 12:00 WET, 3 refits in a row; one
+  event in 10 000 now passes 13 000 units, planned 5 200, limit 6 000.
+north-dock: limit 6 000 units expected to be passed 2.1 times in 30 days
+  (tolerable: 1).
+east-dock: a power law does not describe the tail, since 13:00 WET, 2 refits
+  in a row.
+
+  stream          state    alpha  95 %       base      p   level  newest  last 6
+  north-dock      heavier   2.21  2.15-2.27  2.50   0.31  13 000    12 s  ===HHH
+  east-dock       misfit    2.70  2.62-2.78  2.45  0.002   3 300   1 min  ====MM
+  \\x1b[2J[red]..  steady    2.48  2.42-2.54  2.45   0.62   5 500     1 h  ======
+> south-dock      steady    2.48  2.42-2.54  2.45   0.62   5 500     4 s  ======
+  west-dock       new      not judged yet: 312 events so far
+  倉庫-十番       steady    2.51  2.45-2.57  2.50   0.62   5 000     7 s  =====
+
+
+
+
+orders: 199 955 events, 17 late; 5 of 200 000 lines (0.0025 %) rejected: 3 not
+  JSON, 2 zero
+Up, Down: move   Enter: look closer   h: help   q: quit"""
+
+FRAME_60 = """\
+Tailgauge  orders.db                 1 Dec 2026 14:05:09 WET
+2 of 6 streams need a look.
+
+north-dock (and 1 more): tail heavier than planned since 1..
+east-dock: a power law does not describe the tail, since 1..
+
+  stream      state   alpha  base     p  level  newest
+  south-dock  steady   2.48  2.45  0.62  5 500     4 s
+> west-dock   new     not judged yet: 312 events so far
+  4 streams not shown (3 above, 1 below)
+orders: 199 955 events, 17 late; 5 of 200 000 lines
+Up, Down: move   Enter: look closer   h: help   q: quit"""
+
+FOCUS_80_ASCII = """\
+north-dock  (orders.db)                                  1 Dec 2026 14:05:09 WET
+Tail heavier than planned since 12:00 WET, 3 refits in a row.
+Limit 6 000 units expected to be passed 2.1 times in 30 days (tolerable: 1).
+Alpha 2.21 (2.15 to 2.27), planned 2.50; the tail starts at 120 units (as good
+  from 96 to 140) and holds 2 310 of 81 050 events.
+p 0.31 (0.27 to 0.35): good. A true power law would fit this badly 31 times in
+  100, so nothing speaks against it (large p is good).
+One event in 10 000 passes 13 000 units (10 000 to 16 000), planned 5 200,
+  limit 6 000.
+  (6 more lines in a taller terminal)
+Share of events at or above a size: # data, + fit, b baseline, | limit
+       all ###################                                    limit 6 000 |
+                             #######                                          |
+   1 in 10                         ###                                        |
+                                     #########                                |
+  1 in 100                                  b########+++                      |
+1 in 1 000                                          ########+++++++           |
+                                                           ###bbbbb+++++++++++|
+           +-----------------------+-----------------------+--------------------
+     units 10                     100                    1 000
+window end (WET)  alpha  95 %          p   1 in 10 000  result
+2026-12-01 13:00   2.21  2.15-2.27  0.31  13 000 units  heavier than planned
+2026-12-01 14:00   2.21  2.15-2.27  0.31  13 000 units  heavier than planned
+Left, Right: other streams   Esc: back   h: help   q: quit"""
+
+
+def test_the_overview_at_80x24(watch: StoreWatch) -> None:
+    frame = overview(watch.look(), NOW, Look(width=80, height=24), selected="south-dock", live=True)
+    assert as_text(frame) == FRAME_80
+
+
+def test_a_low_terminal_still_tells_what_needs_a_look_and_counts_what_it_hides(watch: StoreWatch) -> None:
+    frame = overview(watch.look(), NOW, Look(width=60, height=12), selected="west-dock", live=True)
+    assert as_text(frame) == FRAME_60
+
+
+def test_one_stream_at_80x24_in_ascii(watch: StoreWatch) -> None:
+    look = Look(width=80, height=24, ascii_only=True)
+    assert as_text(focus_page(watch.focus("north-dock"), watch.look(), NOW, look, live=True)) == FOCUS_80_ASCII
+
+
+def test_help_fits_80x24_and_ends_with_the_caution() -> None:
+    text = as_text(help_page(Look(width=80, height=24)))
+    assert "licensed practice." in " ".join(text.split())
+    assert text.endswith("Esc: back   q: quit")
+
+
+def test_colour_only_for_what_is_abnormal(watch: StoreWatch) -> None:
+    for line in overview(watch.look(), NOW, Look(width=80, height=24), live=True):
+        coloured = [line.plain[span.start : span.end] for span in line.spans if span.style == ABNORMAL]
+        quiet = any(name in line.plain for name in ("south-dock", "west-dock", "倉庫"))
+        assert not (quiet and coloured)
+        if line.plain.startswith(("north-dock:", "east-dock:")):
+            assert coloured == [line.plain]
+
+
+def test_a_bigger_terminal_tells_more(watch: StoreWatch) -> None:
+    text = as_text(overview(watch.look(), NOW, Look(width=150, height=50)))
+    assert "luck alone would show a difference this large 2 times in 10 000" in text
+    assert "Better described by: power law with cut-off." in text
+    assert "10 000-16 000" in text
+    assert "level: one event in 10 000 passes it, in units; limit 6 000" in text
+
+
+def test_rejected_lines_are_shown_in_a_tall_terminal_and_harmless(watch: StoreWatch) -> None:
+    text = as_text(focus_page(watch.focus("west-dock"), watch.look(), NOW, Look(width=100, height=60)))
+    assert "Feed orders: 5 of 200 000 lines (0.0025 %) rejected: 3 not JSON, 2 zero." in text
+    assert "not JSON, logs/orders.jsonl at byte 17: \\x1b[31mbroken" in text
+
+
+def test_a_store_without_streams_says_what_became_of_the_lines(tmp_path: Path) -> None:
+    with make(tmp_path / "new.db") as store:
+        store.commit([settings_fact(), chain({"not JSON": 60}, lines=100)])
+    with StoreWatch(tmp_path / "new.db") as watch:
+        text = as_text(overview(watch.look(), NOW, Look(width=100, height=24)))
+    assert "No stream yet: no usable line has come. Of 1 feed many lines cannot be used." in text
+    assert "60 of 100 lines (60 %) rejected: 60 not JSON" in text
+
+
+def test_many_streams_are_counted_and_the_marked_one_is_always_shown(tmp_path: Path) -> None:
+    names = [f"dock-{i:03d}" for i in range(300)]
+    with make(tmp_path / "many.db") as store:
+        store.commit([settings_fact(), chain(), *(stream(name) for name in names)])
+    with StoreWatch(tmp_path / "many.db") as watch:
+        seen = watch.look()
+        for name in (names[0], names[150], names[299]):
+            lines = as_text(overview(seen, NOW, Look(width=80, height=24), selected=name, live=True)).splitlines()
+            assert any(line.startswith(f"> {name}") for line in lines)
+            count = next(re.search(r"(\d+) streams not shown", line) for line in lines if "not shown" in line)
+            assert count is not None
+            assert int(count[1]) + sum("dock-" in line for line in lines) == 300
+
+
+sizes = st.tuples(st.integers(1, 250), st.integers(1, 75), st.booleans())
+
+
+def assert_fits(lines: list[Text], look: Look) -> None:
+    assert len(lines) <= look.height
+    for line in lines:
+        assert line.cell_len <= look.width
+        assert "\x1b" not in line.plain
+        assert "\u202e" not in line.plain
+        if look.ascii_only:
+            assert line.plain.isascii()
+
+
+@settings(max_examples=60, deadline=None)
+@given(sizes, st.sampled_from(["north-dock", "west-dock", None]))
+def test_no_line_is_wider_and_no_frame_higher_than_the_terminal(
+    watch: StoreWatch, size: tuple[int, int, bool], name: str | None
+) -> None:
+    look = Look(width=size[0], height=size[1], ascii_only=size[2])
+    seen = watch.look()
+    for live in (False, True):
+        assert_fits(overview(seen, NOW, look, selected=name, live=live, notice="Cannot be read now."), look)
+    for one in seen.streams:
+        assert_fits(focus_page(watch.focus(one.name), seen, NOW, look, live=True), look)
+    assert_fits(help_page(look), look)
+
+
+def renamed(seen: Seen, name: str) -> Seen:
+    """The same warehouse with one stream and its unit named otherwise."""
+
+    def changed(one: StreamSeen) -> StreamSeen:
+        state = msgspec.structs.replace(one.state, stream=name)
+        return msgspec.structs.replace(one, state=state, plan=msgspec.structs.replace(one.plan, unit=name))
+
+    return msgspec.structs.replace(seen, streams=(changed(seen.streams[1]), *seen.streams[2:]))
+
+
+@settings(max_examples=60, deadline=None)
+@given(st.text(st.characters(), min_size=1, max_size=90), st.integers(20, 160))
+def test_no_stream_name_breaks_a_frame(watch: StoreWatch, name: str, width: int) -> None:
+    look = Look(width=width, height=24)
+    seen = renamed(watch.look(), name)
+    assert_fits(overview(seen, NOW, look, selected=name, live=True), look)
+    focused = Focused(stream=seen.streams[0], feed=None, drawing=None, samples=())
+    assert_fits(focus_page(focused, seen, NOW, look, live=True), look)
+
+
+@pytest.mark.parametrize("name", ["north-dock", "east-dock", "south-dock"])
+def test_every_figure_of_a_row_is_the_stores(watch: StoreWatch, name: str) -> None:
+    seen = watch.look()
+    one = next(stream for stream in seen.streams if stream.name == name)
+    judged = one.judgement
+    assert judged is not None
+    assert judged.gof is not None
+    lines = as_text(overview(seen, NOW, Look(width=170, height=40))).splitlines()
+    head, row = (next(line for line in lines if re.match(rf"{word} .*  ", line)) for word in ("stream", name))
+    titles = [match.group() for match in re.finditer(r"\S+(?: \S+)*", head)]
+    cells = re.split(r"  +", row)
+    assert len(titles) == len(cells)
+    shown = list(zip(titles, cells, strict=True))[2:]
+    level = judged.levels[0]
+    wanted = [
+        judged.alpha, judged.alpha_interval, one.baseline and one.baseline.alpha, judged.gof.p, judged.gof.p_interval,
+        level.size, level.interval, one.plan.limit, one.state.events, one.state.late,
+    ]  # fmt: skip
+    for (title, cell), value in zip(shown, wanted, strict=False):
+        parts = cell.split("-") if title == "95 %" else [cell]
+        values = value if isinstance(value, tuple) else (value,)
+        for text, number in zip(parts, values, strict=True):
+            digits = len(text.partition(".")[2])
+            assert float(text.replace(" ", "")) == pytest.approx(number, rel=0.06, abs=0.51 * 10**-digits), title
+    assert fit_word(judged.gof) == ("bad" if name == "east-dock" else "good")

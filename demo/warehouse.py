@@ -18,19 +18,24 @@ DAY = 24 * HOUR
 OPENING = int(datetime(2026, 3, 2, tzinfo=UTC).timestamp()) * 1_000_000_000
 """The story's first moment: a Monday, 00:00 UTC."""
 
-TAIL_FROM = 150.0
+TAIL_FROM = 20.0
 """kg from which order weights follow a power law."""
-SPLIT_ABOVE = 600.0
+BODY_WIDTH = 0.6
+"""Standard deviation of ln(weight) in the lognormal body below it."""
+SPLIT_ABOVE = 80.0
 """kg above which the new rule splits an order."""
 
 
 @dataclass(frozen=True, slots=True)
 class Dock:
-    """One dock's orders: how many a day, which share lies in the tail, its exponent, and a cap if there is one."""
+    """One dock's orders: how many a day, the exponent of their tail, and a cap if there is one.
+
+    usual_alpha shapes the body, whose density meets the tail's without a step or a bend.
+    """
 
     name: str
     orders_a_day: int
-    tail_share: float
+    usual_alpha: float
     alpha: float
     split_above: float | None = None
 
@@ -48,10 +53,10 @@ class Change:
 
 
 DOCKS = (
-    Dock("north", 16_000, 0.08, 2.8),
-    Dock("south", 18_000, 0.08, 2.6),
-    Dock("east", 14_000, 0.07, 2.7),
-    Dock("west", 12_000, 0.09, 2.5),
+    Dock("north", 16_000, 2.8, 2.8),
+    Dock("south", 18_000, 2.65, 2.65),
+    Dock("east", 14_000, 2.7, 2.7),
+    Dock("west", 12_000, 2.6, 2.6),
 )
 
 
@@ -82,12 +87,12 @@ def dock_at(dock: Dock, moment: int, changes: tuple[Change, ...]) -> Dock:
 
 
 def weights(dock: Dock, count: int, rng: np.random.Generator) -> NDArray[np.float64]:
-    """Weights of orders in kg, to 0.1 kg: a lognormal body below TAIL_FROM, a Pareto tail above."""
-    in_tail = rng.random(count) < dock.tail_share
-    body = np.exp(log(40.0) + 0.7 * rng.standard_normal(count))
-    body = np.where(body < TAIL_FROM, body, TAIL_FROM * rng.random(count))
+    """Weights of orders in kg, to 10 g: a lognormal body below TAIL_FROM, a Pareto tail above."""
+    # A lognormal density falls like x^-alpha where (ln x - mu) / width^2 = alpha - 1: there the tail takes over.
+    mu = log(TAIL_FROM) - BODY_WIDTH**2 * (dock.usual_alpha - 1.0)
+    body = np.exp(mu + BODY_WIDTH * rng.standard_normal(count))
     tail = TAIL_FROM * (1.0 - rng.random(count)) ** (-1.0 / (dock.alpha - 1.0))
-    return np.maximum(np.round(np.where(in_tail, tail, body), 1), 0.1)
+    return np.maximum(np.round(np.where(body < TAIL_FROM, body, tail), 2), 0.01)
 
 
 def split(order: float, most: float | None) -> list[float]:
@@ -95,7 +100,7 @@ def split(order: float, most: float | None) -> list[float]:
     if most is None or order <= most:
         return [order]
     parts = int(np.ceil(order / most))
-    return [round(order / parts, 1)] * parts
+    return [round(order / parts, 2)] * parts
 
 
 def hour_of_orders(seed: int, hour: int, changes: tuple[Change, ...]) -> list[tuple[int, str]]:

@@ -43,8 +43,8 @@ def test_a_drawing_has_its_height_and_is_no_wider(
 
 
 def test_the_share_of_the_data_stands_in_its_row() -> None:
-    # 1000 sizes of 1, 10 of 100, one of 10 000: shares 1, 11/1011, 1/1011.
-    lines = tail_chart(drawing([1.0] * 1000 + [100.0] * 10 + [10_000.0]), 80, 22, ascii_only=True)
+    # Of 1000 sizes 990 are 1, nine are 100, one is 10 000: shares 1, 1 in 100, 1 in 1000.
+    lines = tail_chart(drawing([1.0] * 990 + [100.0] * 9 + [10_000.0]), 80, 22, ascii_only=True)
     labelled = {line[:LEFT].strip(): line[LEFT:] for line in lines[:-2] if line[:LEFT].strip()}
     assert set(labelled) == {"all", "1 in 10", "1 in 100", "1 in 1 000"}
     assert "#" in labelled["all"]

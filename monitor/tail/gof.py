@@ -69,9 +69,11 @@ class Bootstrap:
 
     def __init__(self, law: Law, fit: TailFit, options: Options) -> None:
         from monitor.tail.kernels.chance import key_of  # loads the compiler, hence not above
+        from monitor.tail.laws.law import HAIR
 
         self._fit = fit
         self._options = options
+        self._reach = fit.ks_distance * (1.0 - HAIR)
         self._replicate = law.replicate(fit, "model", key_of(options.seed, MODEL_KEY))
         self._resample = law.replicate(fit, "data", key_of(options.seed, DATA_KEY))
 
@@ -141,7 +143,7 @@ class Bootstrap:
         return min(self._fit.n, 200_000)
 
     def _far(self, chunk: Chunk, full: bool) -> NDArray[np.bool_]:
-        return chunk.distance >= self._fit.ks_distance * (1.0 - 1e-12) if full else chunk.distance > 0.5
+        return chunk.distance >= self._reach if full else chunk.distance > 0.5
 
     def _trimmed(self, tally: Tally) -> Tally:
         """Cut off what a chunk drew beyond the replicate that decided."""

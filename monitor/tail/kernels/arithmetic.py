@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from monitor.tail.kernels.compiling import helper
+from monitor.tail.kernels.compiling import helper, kernel
 
 # ln 2 in two parts; the first has its last 32 bits clear, so that k * LN2_HIGH is exact for |k| < 2^31.
 LN2_HIGH = 6.93147180369123816490e-01
@@ -49,7 +49,7 @@ def exp_nonpositive(x):
     return series * np.int64((np.int64(k) + np.int64(1023)) << np.int64(52)).view(np.float64)
 
 
-@helper
+@kernel
 def exponential(x):
     """exp(x) for any x; infinite beyond the largest double."""
     if x <= 0.0:
@@ -70,7 +70,7 @@ def log_one_plus(f):
     return f - (half - s * (half + z * (even + z * odd)))
 
 
-@helper
+@kernel
 def logarithm(x):
     """ln(x) for finite x > 0, subnormal numbers included, within 2 units in the last place."""
     scale = 0.0
@@ -83,10 +83,16 @@ def logarithm(x):
     return k * LN2_HIGH + (log_one_plus(f) + k * LN2_LOW)
 
 
-@helper
+@kernel
 def log_ratio(a, b):
     """ln(a / b) for a >= b > 0, accurate also where a and b are large neighbours."""
     f = (a - b) / b
     if f < 0.4:
         return log_one_plus(f)
     return logarithm(a / b)
+
+
+@kernel
+def exp_apart(x):
+    """exp_nonpositive as a call, for places where speed does not hang on it and code would swell."""
+    return exp_nonpositive(x)

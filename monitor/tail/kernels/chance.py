@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from monitor.tail.kernels.arithmetic import exp_nonpositive, log_one_plus, log_ratio, logarithm
+from monitor.tail.kernels.arithmetic import exp_apart, log_one_plus, log_ratio, logarithm
 from monitor.tail.kernels.compiling import helper, kernel
 
 _GOLDEN = np.uint64(0x9E3779B97F4A7C15)
@@ -72,13 +72,13 @@ _AREA = 0.0039496598225815571993
 @kernel
 def _layers(edges, heights):
     """Right edges of the layers and the density there, from our own exp and log so that they never differ."""
-    edges[0] = _AREA / exp_nonpositive(-_EDGE)
+    edges[0] = _AREA / exp_apart(-_EDGE)
     edges[1] = _EDGE
     for i in range(2, 256):
-        edges[i] = -logarithm(exp_nonpositive(-edges[i - 1]) + _AREA / edges[i - 1])
+        edges[i] = -logarithm(exp_apart(-edges[i - 1]) + _AREA / edges[i - 1])
     edges[256] = 0.0
     for i in range(257):
-        heights[i] = exp_nonpositive(-edges[i])
+        heights[i] = exp_apart(-edges[i])
 
 
 def _tables() -> tuple[NDArray[np.float64], NDArray[np.float64]]:
@@ -91,11 +91,11 @@ def _tables() -> tuple[NDArray[np.float64], NDArray[np.float64]]:
 _EDGES, _HEIGHTS = _tables()
 
 
-@helper
+@kernel
 def _exponential_rare(state, layer, x):
     """The one draw in a hundred that the layer's rectangle does not settle; below 0: draw again."""
     height = _HEIGHTS[layer] + (_HEIGHTS[layer + 1] - _HEIGHTS[layer]) * uniform(state)
-    if height < exp_nonpositive(-x):
+    if height < exp_apart(-x):
         return x
     return -1.0
 
@@ -127,7 +127,7 @@ def _log1m(p):
     return logarithm(1.0 - p)
 
 
-@helper
+@kernel
 def _by_waiting(state, n, p):
     """Binomial by waiting times: failures before each success are geometric. About n p + 1 draws."""
     scale = -1.0 / _log1m(p)
@@ -157,14 +157,14 @@ _STIRLING = np.array(
 )  # fmt: skip
 
 
-@helper
+@kernel
 def _signed_log_ratio(a, b):
     if a >= b:
         return log_ratio(a, b)
     return -log_ratio(b, a)
 
 
-@helper
+@kernel
 def _log_weight(n, p, k, mode):
     """ln of the binomial probability of k over that of the mode."""
     odds = p / (1.0 - p)
@@ -177,7 +177,7 @@ def _log_weight(n, p, k, mode):
     )
 
 
-@helper
+@kernel
 def _by_rejection(state, n, p):
     """Binomial by transformed rejection with squeeze, for n p >= 10 and p <= 1/2.
 

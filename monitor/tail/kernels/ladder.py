@@ -1,8 +1,4 @@
-"""What the three scans share: the rows a scan runs over, its scratch space, and how bests are kept.
-
-A scan looks for the candidate (a row) whose fitted tail is nearest to the data in the Kolmogorov-Smirnov
-distance. Equal distances: the row with the smallest size wins.
-"""
+"""What the three laws share: the rows that a scan runs over, its scratch space, and how bests are kept."""
 
 from __future__ import annotations
 
@@ -20,6 +16,30 @@ STARTS = 20
 """Candidates tried first, geometric in the number of events above them."""
 
 
+MEASURED = 0
+WHOLE = 1
+BINNED = 2
+
+
+class Ladder(NamedTuple):
+    """The distinct sizes of a sample, ascending, with what every candidate above them needs to know.
+
+    law     MEASURED, WHOLE or BINNED
+    place   float64 (K,)      ln(size), whole size (on the grid: lowest of the cell), or number of the cell
+    beyond  float64 (K,)      whole sizes only: the lowest whole size that no longer belongs to the row
+    events  float64 (K + 1,)  W_i, events in rows i and above; W_K = 0
+    spread  float64 (K,)      S_i, sum over rows k >= i of w_k times how far k lies above i: in ln(size), or cells
+    within  float64 (K,)      whole sizes on the grid only: sum over k >= i of w_k times the variance of ln(size) in k
+    """
+
+    law: int
+    place: Any
+    beyond: Any
+    events: Any
+    spread: Any
+    within: Any
+
+
 class Scratch(NamedTuple):
     """Space that the scans write in, made once a thread.
 
@@ -27,7 +47,8 @@ class Scratch(NamedTuple):
     ends    int64 (128, 2)    stretches still to be searched
     model   float64 (128, 2)  the model's survival at their ends
     grid    float64 (g,)      the model's survival on a regular grid of rows
-    terms   float64 (1024,)   sums of a zeta function near its start
+    terms   float64 (512,)    whole sizes: sums of a zeta function from its start on, one by one
+    series  float64 (9,)      whole sizes: coefficients of its Euler-Maclaurin series
     """
 
     probes: Any
@@ -35,6 +56,7 @@ class Scratch(NamedTuple):
     model: Any
     grid: Any
     terms: Any
+    series: Any
 
 
 class Worst(NamedTuple):
@@ -54,7 +76,7 @@ class Best(NamedTuple):
 
 
 class Near(NamedTuple):
-    """Candidates whose distance is at most a limit: first and last row, smallest and largest exponent."""
+    """Candidates whose distance is at most a limit: first and last row, least and largest rate."""
 
     first: int
     last: int
@@ -62,15 +84,15 @@ class Near(NamedTuple):
     most: float
 
 
-@helper
-def new_scratch(rows):
+def new_scratch(rows: int) -> Scratch:
     """Scratch space for scans of up to `rows` rows."""
     return Scratch(
-        np.full(PROBES, -1, np.int64),
-        np.empty((128, 2), np.int64),
-        np.empty((128, 2)),
-        np.empty(np.int64(4.0 * np.sqrt(rows + 1.0)) + 64),
-        np.empty(1024),
+        probes=np.full(PROBES, -1, np.int64),
+        ends=np.empty((128, 2), np.int64),
+        model=np.empty((128, 2)),
+        grid=np.empty(int(4.0 * np.sqrt(rows + 1.0)) + 64),
+        terms=np.empty(512),
+        series=np.empty(9),
     )
 
 
@@ -95,10 +117,8 @@ def remember(probes, slot, row):
 
 
 @helper
-def noted(worst, row, model, data, data_after):
-    """`worst` after a look at one row: model's survival against the data's before and after the step there."""
-    over = data - model
-    under = model - data_after
+def noted(worst, row, over, under):
+    """`worst` after a look at one row: by how much the data lie over the model there, and under it."""
     return Worst(
         over if over > worst.above else worst.above,
         row if over > worst.above else worst.above_row,

@@ -1,29 +1,38 @@
-"""What a law must be able to do, and what the three of them share."""
+"""What the three laws share: from a sample to a ladder, from a row of it to a fit, from a fit to replicates."""
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Literal, Protocol
+from math import sqrt
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
-from monitor.tail.judgement import Options
-from monitor.tail.kernels.replicating import Body, Kept, Recipe
+from monitor.tail.judgement import NearMinimum, Options
+from monitor.tail.kernels.ladder import Ladder, last_candidate, new_scratch
+from monitor.tail.kernels.replicates import replicates
+from monitor.tail.kernels.replicating import Body, Kept, Recipe, Sources, Steps, new_kept, new_space
+from monitor.tail.kernels.scanning import distance_at, near, nearest, rate_of
 from monitor.tail.sample import Sample
 from monitor.tail.tail_fit import NoTail, TailFit
+from storage.grid import cell_of
 
+Floats = NDArray[np.float64]
 Source = Literal["model", "data"]
 
 CLOSENESS = 1.05
 """Candidates whose distance is at most this many times the smallest are reported as equally good."""
 
+HAIR = 1e-12
+"""The observed distance less this share counts as far, so that exact ties (whole sizes, grids) count in both modes."""
+
 # From here on one binomial a row is cheaper than one pick an event.
 _EVENTS_A_ROW = 24
 
-# The observed distance less this share counts as far, so that exact ties (whole sizes, grids) count in both modes.
-_HAIR = 1e-12
+NOTHING: Floats = np.zeros(0)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -33,9 +42,9 @@ class Chunk:
     distance, alpha, xmin  float64 (r,);  n_tail  int64 (r,)
     """
 
-    distance: NDArray[np.float64]
-    alpha: NDArray[np.float64]
-    xmin: NDArray[np.float64]
+    distance: Floats
+    alpha: Floats
+    xmin: Floats
     n_tail: NDArray[np.int64]
 
 
@@ -43,50 +52,182 @@ Replicate = Callable[[int, int, bool], Chunk]
 """(number of the first replicate, how many, decide only) -> Chunk; safe to call from several threads."""
 
 
-class Law(Protocol):
-    """A sample made ready to be scanned under one law."""
+@dataclass(frozen=True, slots=True)
+class Rungs:
+    """A ladder; `first` int64 (K,) the index of each row's smallest size in the sample, `sizes` float64 (K,) that
+    size as people are told it."""
+
+    ladder: Ladder
+    first: NDArray[np.int64]
+    sizes: Floats
+
+
+class Law(ABC):
+    """A sample made ready to be scanned under one law. The subclasses know the law, this class the method."""
+
+    def __init__(self, sample: Sample, options: Options) -> None:
+        self.sample = sample
+        self.options = options
+        self.rungs = self.climb(0, None)
+
+    @abstractmethod
+    def climb(self, start: int, xmin: float | None) -> Rungs:
+        """Rows of the sizes from index `start` on; with `xmin`, the lowest row is there, if need be without events."""
+
+    @abstractmethod
+    def given(self, xmin: float) -> tuple[int, float]:
+        """For a given xmin: the index of the first size in the tail, and xmin as this law takes it."""
+
+    @abstractmethod
+    def sizes_at(self, places: Floats) -> Floats:
+        """The sizes that places of the ladder stand for."""
+
+    @abstractmethod
+    def standard_error(self, alpha: float, ladder: Ladder, row: int) -> float:
+        """Standard error of the exponent fitted at a row."""
+
+    @abstractmethod
+    def log_likelihood(self, ladder: Ladder, row: int) -> Callable[[float], float]:
+        """Log-likelihood of the exponent at a row, up to a constant."""
+
+    @abstractmethod
+    def most_rows(self, fit: TailFit, events: int) -> int:
+        """Rows that a tail of so many events may fill."""
+
+    def steps(self, fit: TailFit) -> Steps:
+        """The fitted law row by row, where draws from it need that."""
+        return NO_STEPS
+
+    def cell(self, xmin: float) -> int | None:
+        """The cell of the grid that a tail begins with; None for exact sizes."""
+        return None if self.sample.cells is None else int(cell_of(np.array([xmin]))[0])
+
+    def body(self, rows: int) -> Body:
+        """The lowest rows of the ladder, to be drawn from."""
+        ladder = self.rungs.ladder
+        return body_of(ladder.place[:rows], -np.diff(ladder.events)[:rows])
+
+    rate_unit = 1.0
+    """What a rate of the ladder is multiplied by to give alpha - 1."""
 
     def fit(self) -> TailFit | NoTail:
         """The tail with the smallest distance, or the one at the given xmin."""
+        if self.options.xmin is not None:
+            return self._fit_at(self.options.xmin)
+        ladder = self.rungs.ladder
+        scratch = new_scratch(ladder.place.size)
+        last = last_candidate(ladder.events, self.options.min_tail)
+        best = nearest(ladder, last, np.inf, -1, False, scratch)
+        if best.row < 0:
+            return no_candidate(self.sample, self.options)
+        as_good = near(ladder, last, CLOSENESS * best.distance, best.row, scratch)
+        sizes = self.rungs.sizes
+        spread = NearMinimum(
+            xmin=(float(sizes[as_good.first]), float(sizes[as_good.last])),
+            alpha=(1.0 + self.rate_unit * as_good.least, 1.0 + self.rate_unit * as_good.most),
+        )
+        return self._told(self.rungs, int(best.row), int(self.rungs.first[best.row]), best.distance, near=spread)
 
-    def replicate(self, fit: TailFit, source: Source, key: np.uint64) -> Replicate:
-        """How replicates of this fit (or of the data themselves) are made."""
+    def _fit_at(self, xmin: float) -> TailFit | NoTail:
+        start, taken = self.given(xmin)
+        n_tail = int(self.sample.counts[start:].sum())
+        if n_tail < self.options.min_tail:
+            return too_few(n_tail, self.options.min_tail, xmin)
+        rungs = self.climb(start, taken)
+        if rungs.ladder.place.size < 2 or rungs.ladder.spread[0] <= 0.0:
+            return NO_SPREAD
+        return self._told(
+            rungs, 0, start, distance_at(rungs.ladder, 0, new_scratch(rungs.ladder.place.size)), near=None
+        )
+
+    def _told(self, rungs: Rungs, row: int, start: int, distance: float, *, near: NearMinimum | None) -> TailFit:
+        alpha = 1.0 + self.rate_unit * float(rate_of(rungs.ladder, row))
+        return TailFit(
+            alpha=alpha,
+            alpha_se=self.standard_error(alpha, rungs.ladder, row),
+            xmin=float(rungs.sizes[row]),
+            start=start,
+            n_tail=int(rungs.ladder.events[row]),
+            n=self.sample.n,
+            ks_distance=float(distance),
+            counting=self.options.counting,
+            start_cell=self.cell(float(rungs.sizes[row])),
+            chosen=near is not None,
+            near_minimum=near,
+        )
+
+    def _tail_at(self, fit: TailFit) -> tuple[Rungs, int]:
+        """The ladder that a fit is a row of, and the row."""
+        if fit.chosen:
+            return self.rungs, int(np.searchsorted(self.rungs.first, fit.start))
+        return self.climb(*self.given(fit.xmin)), 0
 
     def profile(self, fit: TailFit) -> Callable[[float], float]:
         """Log-likelihood of the tail at fit.xmin as a function of alpha, up to a constant."""
+        rungs, row = self._tail_at(fit)
+        return self.log_likelihood(rungs.ladder, row)
+
+    def replicate(self, fit: TailFit, source: Source, key: np.uint64) -> Replicate:
+        """How replicates of this fit ('model') or of the data themselves ('data') are made."""
+        rungs, row = self._tail_at(fit)
+        below = int(np.searchsorted(self.rungs.first, fit.start)) if source == "model" else self.rungs.first.size
+        body = self.body(below)
+        sources = Sources(body, self.steps(fit) if source == "model" else NO_STEPS)
+        recipe = self._recipe(fit, source, float(rungs.ladder.place[row]))
+
+        def made(begin: int, count: int, decide: bool) -> Chunk:
+            kept = new_kept(count)
+            replicates(recipe._replace(decide=decide), sources, key, begin, new_space(recipe, body), kept)
+            return Chunk(
+                distance=kept.distance,
+                alpha=1.0 + self.rate_unit * kept.rate,
+                xmin=self._lower_ends(kept) if fit.chosen else np.full(count, fit.xmin),
+                n_tail=kept.events.astype(np.int64),
+            )
+
+        return made
+
+    def _recipe(self, fit: TailFit, source: Source, start: float) -> Recipe:
+        events = min(fit.n, fit.n_tail + int(12.0 * sqrt(fit.n_tail)) + 100)  # 12 standard deviations and more
+        return Recipe(
+            law=int(self.rungs.ladder.law),
+            n=fit.n,
+            share=fit.n_tail / fit.n if source == "model" else 0.0,
+            rate=(fit.alpha - 1.0) / self.rate_unit,
+            start=start,
+            rows=self.most_rows(fit, events) if source == "model" else 0,
+            least=int(self.options.min_tail),
+            reach=fit.ks_distance * (1.0 - HAIR),
+            given=not fit.chosen,
+            decide=False,
+        )
+
+    def _lower_ends(self, kept: Kept) -> Floats:
+        """xmin of each replicate: the size itself where it is one of the data's, else from its place."""
+        known = kept.row >= 0
+        ends = self.sizes_at(np.where(known | np.isnan(kept.place), self.rungs.ladder.place[0], kept.place))
+        ends[known] = self.rungs.sizes[kept.row[known]]
+        return ends
 
 
-def body_of(place: NDArray[np.float64], counts: NDArray[np.int64]) -> Body:
-    """The rows that are drawn with replacement, with the cheaper way of drawing chosen."""
-    total = int(counts.sum())
-    if counts.size and total == counts.size:
+def body_of(
+    place: Floats, counts: Floats, *, beyond: Floats = NOTHING, offset: Floats = NOTHING, variance: Floats = NOTHING
+) -> Body:
+    """Rows to be drawn from with replacement, with the cheaper way of drawing chosen (see chance.resampled)."""
+    held = counts.astype(np.int64)
+    total = int(held.sum())
+    if held.size and total == held.size:
         owner = np.zeros(1, np.int32)
-    elif counts.size and total <= _EVENTS_A_ROW * counts.size:
-        owner = np.repeat(np.arange(counts.size, dtype=np.int32), counts)
+    elif held.size and total <= _EVENTS_A_ROW * held.size:
+        owner = np.repeat(np.arange(held.size, dtype=np.int32), held)
     else:
         owner = np.zeros(0, np.int32)
-    return Body(np.ascontiguousarray(place, np.float64), np.ascontiguousarray(counts, np.int64), owner)
+    return Body(np.ascontiguousarray(place), beyond, offset, variance, held, owner)
 
 
-def recipe_of(fit: TailFit, source: Source, *, start: float, least: int, decide: bool) -> Recipe:
-    """The recipe of replicates of `fit`; from 'data' every event is drawn from the rows."""
-    return Recipe(
-        n=fit.n,
-        share=fit.n_tail / fit.n if source == "model" else 0.0,
-        rate=fit.alpha - 1.0,
-        start=float(start),
-        least=int(least),
-        reach=fit.ks_distance * (1.0 - _HAIR),
-        given=not fit.chosen,
-        decide=decide,
-    )
+NO_STEPS = Steps(NOTHING, NOTHING, NOTHING, NOTHING, NOTHING, NOTHING)
 
-
-def room_for(count: int) -> Kept:
-    """Empty arrays for `count` replicates."""
-    return Kept(
-        np.empty(count), np.full(count, np.nan), np.full(count, np.nan), np.full(count, -1, np.int64), np.zeros(count)
-    )
+NO_SPREAD = NoTail(reason="the sizes at and above the given xmin are all the same, so that they show no tail")
 
 
 def too_few(n_tail: int, least: int, xmin: float) -> NoTail:
@@ -95,9 +236,6 @@ def too_few(n_tail: int, least: int, xmin: float) -> NoTail:
         reason=f"only {n_tail} events are at or above the given xmin of {xmin:g}, fewer than the {least} a tail must "
         "hold: give a smaller xmin, or a smaller least tail"
     )
-
-
-NO_SPREAD = NoTail(reason="the sizes at and above xmin are all the same, so that they show no tail")
 
 
 def no_candidate(sample: Sample, options: Options) -> NoTail:

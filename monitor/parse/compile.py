@@ -9,12 +9,18 @@ from monitor import rejects as why
 from monitor.parse import csv_lines
 from monitor.parse.blocks import BOM, CODE, Findings, assemble, cut, mark_unreadable
 from monitor.parse.csv_lines import CsvReader
+from monitor.parse.free_lines import CombinedReader, PairsReader, PatternReader
 from monitor.parse.json_lines import JsonReader
 from monitor.parse.lines import FormatError, LineFormat, ParsedLines, Parser
 from monitor.parse.text_lines import NumberReader, TextReader
 from monitor.rejects import Rejected
 
 _Reader = JsonReader | TextReader
+_TEXT: dict[str, type[CombinedReader | PairsReader | PatternReader]] = {
+    "combined": CombinedReader,
+    "pairs": PairsReader,
+    "pattern": PatternReader,
+}
 
 
 def compile_parser(format: LineFormat) -> Parser:  # noqa: A002 - the word that users see
@@ -95,6 +101,8 @@ def _check(format_: LineFormat) -> None:
 def _reader(format_: LineFormat) -> _Reader:
     if format_.lines == "json":
         return JsonReader(format_)
+    if format_.lines in _TEXT:
+        return _TEXT[format_.lines](format_)
     if format_.lines == "number":
         for key in ("size", "time", "stream", "where"):
             if getattr(format_, key) not in (None, ()):

@@ -12,7 +12,7 @@ from collections.abc import Sequence
 
 from monitor import rejects as why
 from monitor.parse.lines import Field, FormatError, LineFormat, ParseSetupError
-from monitor.parse.text_lines import TextReader
+from monitor.parse.text_lines import TextReader, keyed_fields
 
 
 class CsvReader(TextReader):
@@ -79,17 +79,6 @@ def check(format_: LineFormat) -> None:
             raise FormatError(f"{key}: there is no column {field!r}; columns are numbered from 1")
         if isinstance(field, str) and not has_header(format_):
             raise FormatError(f"{key}: {field!r} is a name, but header = false says that columns have none")
-
-
-def keyed_fields(format_: LineFormat) -> list[tuple[str, Field]]:
-    """All fields that a format names, each with its key."""
-    if format_.size is None:
-        raise FormatError("size: missing; say where in the line the size stands")
-    keyed: list[tuple[str, Field]] = [("size", format_.size)]
-    if format_.time is not None:
-        keyed.append(("time", format_.time))
-    keyed += [("stream", f) for f in format_.stream]
-    return keyed + [("where", f) for f, _ in format_.where]
 
 
 def columns_of(format_: LineFormat, header: bytes | None) -> tuple[dict[Field, int], int | None]:

@@ -16,7 +16,7 @@ import numpy as np
 
 from monitor import rejects as why
 from monitor.parse.blocks import CODE, OK, Cut, Findings
-from monitor.parse.lines import Field, LineFormat
+from monitor.parse.lines import Field, FormatError, LineFormat
 from monitor.parse.stamps import StampReader
 
 _NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
@@ -28,6 +28,17 @@ def number(text: str) -> float | None:
     if _NUMBER.fullmatch(text):
         return float(text)
     return math.nan if _BEYOND.fullmatch(text) else None
+
+
+def keyed_fields(format_: LineFormat) -> list[tuple[str, Field]]:
+    """All fields that a format names, each with its key."""
+    if format_.size is None:
+        raise FormatError("size: missing; say where in the line the size stands")
+    keyed: list[tuple[str, Field]] = [("size", format_.size)]
+    if format_.time is not None:
+        keyed.append(("time", format_.time))
+    keyed += [("stream", f) for f in format_.stream]
+    return keyed + [("where", f) for f, _ in format_.where]
 
 
 class TextReader(ABC):

@@ -7,7 +7,7 @@ LAYERS = {
     "storage.errors": 0,
     "storage.facts": 0,
     "storage.grid": 0,
-    "storage.pane": 1,
+    "storage.pane": 0,
     "storage.window": 1,
     "storage.schema": 3,
     "storage.store": 3,

@@ -113,7 +113,12 @@ def test_imports_point_down_and_pure_modules_are_pure() -> None:
     ],
 )
 def test_a_planted_fault_is_found(tmp_path: Path, module: str, text: str, complaint: str) -> None:
-    for stub in ("monitor/engine/step.py", "monitor/parse/formats.py", "monitor/errors.py", "monitor/engine/__init__.py"):
+    for stub in (
+        "monitor/engine/step.py",
+        "monitor/parse/formats.py",
+        "monitor/errors.py",
+        "monitor/engine/__init__.py",
+    ):
         (tmp_path / stub).parent.mkdir(parents=True, exist_ok=True)
         (tmp_path / stub).write_text("")
     (tmp_path / module).parent.mkdir(parents=True, exist_ok=True)

@@ -24,7 +24,7 @@ def no_unknown_keys(name: str, raw: Any, table: Any, path: str = "") -> None:
         )
     if get_origin(table) is dict and isinstance(raw, dict):
         for key, value in raw.items():
-            no_unknown_keys(name, value, get_args(table)[1], f"{path}{_quoted(key)}.")
+            no_unknown_keys(name, value, get_args(table)[1], f"{path}{quoted(key)}.")
     elif get_origin(table) is list and isinstance(raw, list):
         for index, value in enumerate(raw):
             no_unknown_keys(name, value, get_args(table)[0], f"{path.rstrip('.')}[{index}].")
@@ -35,11 +35,11 @@ def no_unknown_keys(name: str, raw: Any, table: Any, path: str = "") -> None:
             if key not in fields:
                 near = get_close_matches(key, fields, n=1, cutoff=0.5)
                 hint = f'Did you mean "{near[0]}"?' if near else f"Known keys here: {', '.join(sorted(fields))}."
-                raise SettingsError(f"{name}: {path}{_quoted(key)}: unknown key. {hint}")
+                raise SettingsError(f"{name}: {path}{quoted(key)}: unknown key. {hint}")
             no_unknown_keys(name, value, fields[key], f"{path}{key}.")
 
 
-def _quoted(key: str) -> str:
+def quoted(key: str) -> str:
     """A key as TOML would write it."""
     return key if re.fullmatch(r"[A-Za-z0-9_-]+", key) and not re.search(r"[*?\[]", key) else f'"{key}"'
 

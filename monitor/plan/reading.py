@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import tomllib
 from hashlib import blake2b
-from typing import Any
+from typing import Any, TypeVar
 
 import msgspec
 
@@ -15,6 +15,7 @@ from monitor.plan.checks import (
     in_range,
     no_unknown_keys,
     passages,
+    quoted,
     span,
     time_of,
     timezone_of,
@@ -22,6 +23,7 @@ from monitor.plan.checks import (
 from monitor.plan.records import FeedPlan, KnownChange, Plan, PlannedTail, StreamPlan
 from monitor.plan.spans import DAY, SECOND
 
+Table = TypeVar("Table", bound=msgspec.Struct)
 Fields = str | int | list[str | int]
 
 
@@ -95,7 +97,9 @@ class StreamTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_on
     plan: PlannedTable | None = None
 
 
-class KnownTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True, rename={"start": "from", "end": "to"}):
+class KnownTable(
+    msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True, rename={"start": "from", "end": "to"}
+):
     """[[known]] as written."""
 
     start: Any  # a TOML date, date-time or text
@@ -133,18 +137,22 @@ def read_plan(text: str, name: str) -> Plan:
     except tomllib.TOMLDecodeError as error:
         raise SettingsError(f"{name}: not valid TOML: {error}.") from None
     no_unknown_keys(name, raw, SettingsTable)
+    for section, kind in (("feed", FeedTable), ("stream", StreamTable), ("notify", NotifyTable)):
+        tables = raw.get(section)
+        for key, value in tables.items() if isinstance(tables, dict) else ():
+            # One by one, since in a whole dict the offending table's name would not be told.
+            _typed(name, f"{section}.{quoted(key)}", value, kind)
+    return _plan(name, _typed(name, "", raw, SettingsTable), text)
+
+
+def _typed(name: str, path: str, raw: Any, kind: type[Table]) -> Table:
+    """The table as a record. Raises SettingsError with the key first: 'watch.replicates: expected `int` ...'."""
     try:
-        table = msgspec.convert(raw, SettingsTable)
+        return msgspec.convert(raw, kind)
     except msgspec.ValidationError as error:
-        raise SettingsError(f"{name}: {_plain(str(error))}.") from None
-    return _plan(name, table, text)
-
-
-def _plain(message: str) -> str:
-    """msgspec's sentence with the key first: 'watch.replicates: expected `int`, got `str`'."""
-    what, _, where = message.partition(" - at `$")
-    path = where.rstrip("`").lstrip(".").replace("[...]", ".*") or "settings"
-    return f"{path}: {what[0].lower()}{what[1:]}"
+        what, _, where = str(error).partition(" - at `$")
+        full = (path + where.rstrip("`")).lstrip(".") or "settings"
+        raise SettingsError(f"{name}: {full}: {what[0].lower()}{what[1:]}.") from None
 
 
 def _plan(name: str, table: SettingsTable, text: str) -> Plan:
@@ -281,17 +289,12 @@ def _feed(name: str, key: str, given: FeedTable, timezone: str) -> FeedPlan:
         for field, value in given.where.items()
     )
     in_range(name, f"{path}.scale", given.scale, low=0.0, open_low=True)
-    try:
-        line_format = msgspec.convert(
-            {
-                "lines": given.lines, "size": given.size, "time": given.time, "time_unit": given.time_unit,
-                "stream": fields, "where": where, "scale": given.scale, "pattern": given.pattern,
-                "delimiter": given.delimiter, "header": given.header, "timezone": zone,
-            },
-            LineFormat,
-        )  # fmt: skip
-    except msgspec.ValidationError as error:
-        raise SettingsError(f"{name}: {path}.{_plain(str(error))}.") from None
+    given_format = {
+        "lines": given.lines, "size": given.size, "time": given.time, "time_unit": given.time_unit, "stream": fields,
+        "where": where, "scale": given.scale, "pattern": given.pattern, "delimiter": given.delimiter,
+        "header": given.header, "timezone": zone,
+    }  # fmt: skip
+    line_format = _typed(name, path, given_format, LineFormat)
     try:
         compile_parser(line_format)
     except FormatError as error:

@@ -56,9 +56,10 @@ def chosen(columns: Sequence[Column], width: int) -> tuple[list[Column], list[in
                 widths[i] -= cut
                 over -= cut
         first_to_go = max((column.need for column in kept), default=0)
-        if over <= 0 or first_to_go == 0:
+        fewer = [column for column in kept if column.need != first_to_go]
+        if over <= 0 or first_to_go == 0 or not fewer:
             return kept, widths
-        kept = [column for column in kept if column.need != first_to_go]
+        kept = fewer
 
 
 def _joined(row: Sequence[str], columns: Sequence[Column], widths: Sequence[int]) -> str:

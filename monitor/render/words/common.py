@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import ceil, log1p
+from math import ceil, floor, log1p, log10
 
 from monitor.plan.spans import parse_span
 from monitor.render.numbers import at_place, bounds_text, count_text, estimate, grouped, percent, size_text, with_bounds
@@ -29,6 +29,14 @@ def times_in(share: float) -> str:
     return "less than once in 1 000 000"
 
 
+def chance_text(p: float) -> str:
+    """A chance in two digits; a tiny one as what it is below."""
+    if p < 1e-6:
+        return "under 0.000001"
+    text = at_place(p, floor(log10(p)) - 1)
+    return text.rstrip("0").rstrip(".") if "." in text else text
+
+
 def chance_by_luck(p: float) -> str:
     """How often luck alone would show a difference like this."""
     return f"luck alone would show a difference this large {times_in(p)}"
@@ -50,7 +58,8 @@ def p_words(gof: GoodnessOfFit) -> str:
     if gof.at_least_as_far == 0:
         # None of the simulated samples was as far off: all that is known is the upper bound.
         high = gof.p_interval[1] or 1 / max(1, gof.replicates)
-        head, often = f"p 0 (0 to {estimate(high)})", f"less than {times_in(ceil(high * 1000) / 1000)}"
+        often = f"less than {times_in(ceil(high * 1000) / 1000)}"
+        head = f"p 0 (0 to {chance_text(high)})"
     else:
         head, often = f"p {with_bounds(gof.p, gof.p_interval)}", times_in(float(shown) or gof.p)
     if gof.doubtful:

@@ -17,6 +17,7 @@ from monitor.render.times import plural
 from monitor.render.words.common import (
     CAUTION,
     beyond_words,
+    chance_text,
     doubling_words,
     level_words,
     limit_words,
@@ -106,7 +107,9 @@ def xmin_sentence(judgement: Judgement, unit: str) -> str:
         assert low is not None
         assert high is not None
         text += f"; as good from {size_text(low)} to {size_text(high)}"
-        text += f" (alpha {bounds_text(judgement.alpha or 0.0, near.alpha)})"
+        place = place_of(judgement.alpha or 0.0, judgement.alpha_interval)
+        ends = [at_place(alpha, place) for alpha in near.alpha if alpha is not None]
+        text += f" (alpha {ends[0]} throughout)" if ends[0] == ends[1] else f" (alpha {ends[0]} to {ends[1]})"
     return text + "."
 
 
@@ -133,7 +136,7 @@ def rival_words(rival: Rival) -> str:
     if rival.favours == "not determined" or rival.log_likelihood_ratio is None:
         return head + "not determined (its fit runs off to the edge of its range)."
     figures = f"log-likelihood ratio {estimate(rival.log_likelihood_ratio)}"
-    figures += "" if rival.p is None else f", p {estimate(rival.p)}"
+    figures += "" if rival.p is None else f", p {chance_text(rival.p)}"
     verdict = {
         "power law": "the power law describes the tail better",
         "rival": f"the {name} describes the tail better",
@@ -176,6 +179,8 @@ def _levels(judgement: Judgement, unit: str) -> list[str]:
 
 
 def _level_sentence(level: Level, unit: str) -> str:
+    if level.size is None:
+        return f"No size can be given that {one_in_words(level.one_in)} passes."
     text = f"{one_in_words(level.one_in)} passes {level_words(level, unit)}"
     if level.by_rival:
         other = level.by_rival.get("size")

@@ -72,6 +72,7 @@ def compare_windows(earlier: Sample, later: Sample, *, xmin: float, counting: Co
     xmin is best the baseline's, else the larger of the two; when either window is on the grid both are
     rounded to it and an exceedance is a size in xmin's cell or above.
     """
+    xmin = float(xmin)
     if (earlier.cells is None) != (later.cells is None):
         earlier, later = _on_grid(earlier), _on_grid(later)
     return _compared(_side(earlier, xmin, counting), _side(later, xmin, counting), xmin, counting)
@@ -85,7 +86,7 @@ def compare_with_fit(
     Parameters: alpha, its maximum-likelihood exponent at xmin; n_tail, events at or above xmin out of n. The
     exponent holds all that the earlier sizes say about it (it is sufficient), so nothing is lost.
     """
-    slope = alpha - 1
+    xmin, slope = float(xmin), float(alpha) - 1
     if counting == "whole":
         single = TailData(Nodes(np.array([1.0]), np.zeros(1)), None, np.array([1.0]), xmin)
         nodes = support("whole", xmin, reach_of(single, slope), first=min(1.0, 2 / slope))
@@ -106,8 +107,8 @@ def compare_with_plan(later: Sample, *, xmin: float, alpha: float, counting: Cou
 
     Measured sizes: exact chi-square test; whole sizes: likelihood ratio against the planned exponent.
     """
-    side = _side(later, xmin, counting)
-    slope = alpha - 1
+    xmin, alpha = float(xmin), float(alpha)
+    side, slope = _side(later, xmin, counting), alpha - 1
     share = side.n_tail / side.n if side.n else None
     if _silent(side):
         return _untested(_why(side, "the window", xmin), side, xmin, alpha_earlier=alpha, share_later=share)

@@ -22,7 +22,7 @@ def expected_largest(sample: Sample, fit: TailFit, events: int) -> float | None:
     data's sizes.
     """
     above = _above_whole(fit, events) if fit.counting == "whole" else _above_measured(fit, events)
-    return None if above is None else above + _below(sample, fit, events)
+    return None if above is None else float(above + _below(sample, fit, events))
 
 
 def _above_measured(fit: TailFit, events: int) -> float | None:
@@ -40,19 +40,20 @@ def _above_whole(fit: TailFit, events: int) -> float | None:
     of x to 1e-8; from there on the sum is x P / (alpha - 2).
     """
     alpha, slope = np.array(fit.alpha), fit.alpha - 1
-    stop = max(log(1e8 * max(events * fit.share, 1.0)) / slope, log(1e8) - log(fit.xmin), 1.0)
+    xmin = float(np.ceil(fit.xmin))  # on the grid fit.xmin is the edge of a cell
+    stop = max(log(1e8 * max(events * fit.share, 1.0)) / slope, log(1e8) - log(xmin), 1.0)
     if stop > 300:
         return None
-    nodes = whole_nodes(fit.xmin + 1, fit.xmin, Reach(stop, stop, min(0.5, 2 / slope)), 0.25)
+    nodes = whole_nodes(xmin + 1, xmin, Reach(stop, stop, min(0.5, 2 / slope)), 0.25)
 
     def at_least(y: Floats) -> Floats:
-        survival = np.exp(log_zeta(alpha, fit.xmin * np.exp(y)) - log_zeta(alpha, np.array(fit.xmin)))
+        survival = np.exp(log_zeta(alpha, xmin * np.exp(y)) - log_zeta(alpha, np.array(xmin)))
         out: Floats = -np.expm1(events * np.log1p(-np.minimum(fit.share * survival, 1 - 1e-16)))
         return out
 
-    mean = fit.xmin * float(at_least(np.zeros(1))[0])
-    mean += fit.xmin * float(np.sum(np.exp(nodes.log_weight + nodes.y) * at_least(nodes.y)))
-    mean += fit.xmin * float(np.exp(stop) * at_least(np.array([stop]))[0]) / (slope - 1)
+    mean = xmin * float(at_least(np.zeros(1))[0])
+    mean += xmin * float(np.sum(np.exp(nodes.log_weight + nodes.y) * at_least(nodes.y)))
+    mean += xmin * float(np.exp(stop) * at_least(np.array([stop]))[0]) / (slope - 1)
     return mean
 
 

@@ -82,10 +82,12 @@ def _size_passed(sample: Sample, fit: TailFit, draws: Draws | None, chance: floa
         slope = fit.alpha - 1
         reach = log(fit.share / chance)
         half = _Z * sqrt((reach * fit.alpha_se / slope**2) ** 2 + _share_variance(fit) / slope**2)
-        return size_of(log_size), (size_of(log_size - half), size_of(log_size + half))
-    values = Tails.of_draws(draws, fit.counting).log_size(chance)
-    low, high = order_limits(values, missing=_logs(empirical_interval(sample, chance)))
-    return size_of(log_size), (_size(low), _size(high))
+        ends: Interval = (log_size - half, log_size + half)
+    else:
+        values = Tails.of_draws(draws, fit.counting).log_size(chance)
+        ends = order_limits(values, missing=_logs(empirical_interval(sample, chance)))
+    low, high = (size_of(end, fit.counting) for end in ends)
+    return size_of(log_size, fit.counting), (low, high)
 
 
 def _share_variance(fit: TailFit) -> float:
@@ -96,10 +98,6 @@ def _share_variance(fit: TailFit) -> float:
 def _logs(interval: Interval) -> Interval:
     low, high = interval
     return (None if low is None else log(low)), (None if high is None else log(high))
-
-
-def _size(log_size: float | None) -> float | None:
-    return None if log_size is None else size_of(log_size)
 
 
 def limit(sample: Sample, fit: TailFit, draws: Draws | None, options: Options) -> Limit | None:

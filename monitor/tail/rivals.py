@@ -174,7 +174,7 @@ def _cut_off_shows(data: TailData, slope: float, counting: Counting) -> bool:
         inside = np.logaddexp.reduceat(at_data + y, data.starts) - np.logaddexp.reduceat(at_data, data.starts)
         log_mean = float(logsumexp(inside + weight)) - log(data.n)
     if counting == "whole":
-        ends = log_zeta(np.array([slope, slope + 1]), np.array(data.xmin))
+        ends = log_zeta(np.array([slope, slope + 1]), np.ceil(data.xmin))
         expected = float(ends[0] - ends[1]) - log(data.xmin)
     else:
         expected = log(slope) - log(slope - 1)
@@ -230,12 +230,13 @@ def _whole_quantile(log_survival: _Survival, wanted: float) -> float | None:
     def passed(x: float) -> float:
         return log_survival(log((x + 1) / xmin))
 
-    low, high = xmin - 1, xmin
+    high = float(np.ceil(xmin))  # on the grid xmin is the edge of a cell
+    low = high - 1
     while passed(high) > wanted:
         low, high = high, 2 * high
         if high > 1e300:
             return None
     while high - low > 1 and high - low > 1e-15 * high:
-        middle = float(np.floor((low + high) / 2))
+        middle = float(np.floor(low + (high - low) / 2))
         low, high = (middle, high) if passed(middle) > wanted else (low, middle)
     return high

@@ -15,6 +15,7 @@ Floats = NDArray[np.float64]
 
 _LARGEST_LOG = 709.0
 """exp of more is beyond doubles: such a size is reported as unknowable."""
+_EXACT_INTEGERS = 2.0**53
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,7 +47,7 @@ class Tails:
         known = self.share >= chance * (1 - 1e-12)
         log_survival = np.minimum(np.log(chance) - np.log(np.where(known, self.share, 1.0)), 0.0)
         if self.counting == "whole":
-            sizes = whole_quantile(self.alpha, self.xmin, log_survival)
+            sizes = whole_quantile(self.alpha, np.ceil(self.xmin), log_survival)
             log_size = np.log(np.maximum(sizes, 1e-300))
         else:
             log_size = np.log(self.xmin) - log_survival / (self.alpha - 1)
@@ -56,16 +57,20 @@ class Tails:
         """Probability that an event passes `size` (strictly), float64 (r,); NaN where size < xmin."""
         known = self.xmin <= size
         if self.counting == "whole":
-            lowest = np.where(known, np.floor(size) + 1, self.xmin)
-            log_survival = log_zeta(self.alpha, lowest) - log_zeta(self.alpha, self.xmin)
+            first = np.ceil(self.xmin)  # on the grid xmin is the edge of a cell
+            lowest = np.where(known, np.floor(size) + 1, first)
+            log_survival = log_zeta(self.alpha, lowest) - log_zeta(self.alpha, first)
         else:
             log_survival = (self.alpha - 1) * np.minimum(np.log(self.xmin) - np.log(size), 0.0)
         return np.where(known, self.share * np.exp(log_survival), np.nan)
 
 
-def size_of(log_size: float) -> float | None:
-    """exp of it; None when it is unknown or beyond doubles."""
-    return float(np.exp(log_size)) if log_size < _LARGEST_LOG else None
+def size_of(log_size: float | None, counting: Counting) -> float | None:
+    """exp of it, for whole sizes the integer it stands for; None when it is unknown or beyond doubles."""
+    if log_size is None or not log_size < _LARGEST_LOG:
+        return None
+    size = float(np.exp(log_size))
+    return float(round(size)) if counting == "whole" and size < _EXACT_INTEGERS else size
 
 
 def order_limits(values: Floats, *, missing: Interval = (None, None)) -> Interval:

@@ -17,6 +17,7 @@ def top_share_of(alpha: Floats, xmin: Floats, fraction: float, counting: Countin
     """
     if counting == "measured":
         return np.asarray(fraction ** ((alpha - 2) / (alpha - 1)), np.float64)
+    xmin = np.ceil(xmin)  # on the grid xmin is the edge of a cell
     dividing = whole_quantile(alpha, xmin, np.full(len(alpha), np.log(fraction)))
     total = log_zeta(alpha - 1, xmin)
     above = np.exp(log_zeta(alpha, dividing + 1) - log_zeta(alpha, xmin))

@@ -22,13 +22,13 @@ def log_zeta(alpha: Floats, q: Floats) -> Floats:
     """
     alpha, q = np.broadcast_arrays(np.asarray(alpha, np.float64), np.asarray(q, np.float64))
     far = q > np.maximum(100.0, 50 * alpha)
-    safe = np.where(far, q, 1e6)
+    safe = np.where(far, np.minimum(q, 1e60), 1e6)  # beyond, the corrections are nothing and their squares overflow
     a = np.where(far, alpha, 2.0)
     first = (a - 1) / (2 * safe)
     second = (a - 1) * a / (12 * safe**2)
     fourth = (a - 1) * a * (a + 1) * (a + 2) / (720 * safe**4)
     sixth = fourth * (a + 3) * (a + 4) / (42 * safe**2)
-    series = (1 - a) * np.log(safe) - np.log(a - 1) + np.log1p(first + second - fourth + sixth)
+    series = (1 - a) * np.log(np.where(far, q, 1e6)) - np.log(a - 1) + np.log1p(first + second - fourth + sixth)
     near = np.log(np.maximum(zeta(np.where(far, 2.0, alpha), np.where(far, 1.0, q)), 1e-300))
     out: Floats = np.where(far, series, near)
     return out

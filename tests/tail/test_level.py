@@ -13,6 +13,7 @@ from monitor.tail.tail_fit import Draws, TailFit
 from monitor.tail.tails import Tails, order_limits
 from monitor.tail.top_share import top_share_of
 from monitor.tail.whole_law import log_zeta, whole_quantile
+from storage.grid import cell_of, edges
 
 
 def fitted(sample, xmin, *, counting="measured", alpha=None):
@@ -283,3 +284,29 @@ def test_a_level_that_doubles_cannot_hold_is_none():
     assert level.size is None
     assert level.beyond_data is None
     assert largest(sample, fit, None, Options(one_in=(1000,)), alpha_interval=None).median is None
+
+
+def test_whole_sizes_on_the_grid_begin_at_the_first_integer_of_the_cell():
+    # On the grid xmin is the edge of a cell, 6.9977 for the cell of 7: all figures must be those of xmin 7.
+    edge = float(edges(cell_of(np.array([7.0])))[0])
+    assert 6.9 < edge < 7
+    sample = Sample.of_sizes(np.arange(7.0, 60.0))
+    options = Options(one_in=(100, 5000), limit=90.0, period_days=1.0, events_per_day=50.0)
+    on_edge, exact = (
+        fitted(sample, 7.0, counting="whole", alpha=2.6),
+        TailFit(
+            alpha=2.6, alpha_se=1.6 / 53**0.5, xmin=edge, start=0, n_tail=53, n=53, ks_distance=0.01, counting="whole"
+        ),
+    )
+    first, second = (
+        (
+            levels(sample, fit, None, options, (), True),
+            limit(sample, fit, None, options),
+            expected_largest(sample, fit, 99),
+        )
+        for fit in (on_edge, exact)
+    )
+    assert first[0][1].size == second[0][1].size == round(first[0][1].size)
+    assert first[1].expected == pytest.approx(second[1].expected, rel=1e-12)
+    assert first[2] == pytest.approx(second[2], rel=1e-9)
+    assert top_share(on_edge, None, alpha_interval=None).share == top_share(exact, None, alpha_interval=None).share

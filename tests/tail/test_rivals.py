@@ -338,3 +338,18 @@ def test_whole_sizes_by_rivals_are_the_smallest_integers():
     q = np.exp(-1 / rivals["exponential"].parameters["scale"])
     size = rival_size(rivals["exponential"], sample, xmin, sample.n, 1e4, counting="whole")
     assert q ** (size + 1 - xmin) <= 1e-4 < q ** (size - xmin)
+
+
+def test_whole_sizes_by_rivals_on_the_grid_come_to_an_end():
+    # There xmin is the edge of a cell, no integer: the search for the smallest integer must still end.
+    x = np.ceil(2 * lognormal_tail(np.random.default_rng(27), 800)) + 1
+    exact, grid = Sample.of_sizes(x), on_grid(x)
+    alpha = exponent(exact, "whole")
+    for sample in (exact, grid):
+        xmin = float(sample.sizes[0])
+        found = compare_rivals(sample, xmin=xmin, alpha=alpha, counting="whole")
+        sizes = [rival_size(rival, sample, xmin, sample.n, 1e4, counting="whole") for rival in found]
+        assert all(size == round(size) for size in sizes)
+        if sample is exact:
+            expected = sizes
+    assert sizes == pytest.approx(expected, rel=0.02)

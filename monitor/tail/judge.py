@@ -18,6 +18,7 @@ from monitor.tail.judgement import GoodnessOfFit, Interval, Judgement, Options, 
 from monitor.tail.rivals import compare_rivals
 from monitor.tail.sample import Sample
 from monitor.tail.scan import law_of, why_no_tail
+from monitor.tail.shape import misfit_warning, moment_warnings, shape_warnings
 from monitor.tail.tail_fit import Draws, NoTail, TailFit
 
 if TYPE_CHECKING:
@@ -111,7 +112,7 @@ def _with_tail(
         smallest_size=float(sample.sizes[0]),
         largest_size=float(sample.sizes[-1]),
         assumed=_assumed(sample, options, fit, evidence),
-        warnings=tuple(_fit_warnings(fit, finite, gof)),
+        warnings=(*_fit_warnings(fit, alpha_interval, gof), *shape_warnings(sample, fit.xmin)),
         seed=options.seed,
     )
 
@@ -128,6 +129,7 @@ def _without_tail(sample: Sample, options: Options, refusal: NoTail) -> Judgemen
         smallest_size=float(sample.sizes[0]) if sample.sizes.size else None,
         largest_size=float(sample.sizes[-1]) if sample.sizes.size else None,
         assumed=(_kind(options),),
+        warnings=shape_warnings(sample, float(sample.sizes[0])) if usable else (),
         seed=options.seed,
     )
 
@@ -169,25 +171,20 @@ def _interval_source(draws: Draws | None) -> str:
     return f"intervals come from {draws.alpha.size} replicates of the fitted power law, each choosing its own tail"
 
 
-def _fit_warnings(fit: TailFit, finite: level.Finite, gof: GoodnessOfFit | None) -> list[str]:
-    said = []
-    if finite.mean is False:
-        said.append("the mean of this tail is infinite (alpha is at most 2): an average of its sizes never settles")
-    elif finite.mean is None:
-        said.append("whether the mean of this tail is finite is undecided: the interval of alpha holds 2")
-    if finite.variance is False and finite.mean is not False:
-        said.append("the variance of this tail is infinite (alpha is at most 3): a standard deviation never settles")
-    elif finite.variance is None and finite.mean:
-        said.append("whether the variance of this tail is finite is undecided: the interval of alpha holds 3")
+def _fit_warnings(fit: TailFit, alpha_interval: Interval, gof: GoodnessOfFit | None) -> list[str]:
+    said = list(moment_warnings(fit.alpha, alpha_interval))
     if gof is not None and not gof.plausible:
+        slight = misfit_warning(fit.n_tail, fit.ks_distance, gof.p, rule_out=gof.rule_out)
         said.append(
-            f"a power law is ruled out (p {gof.p:.3g}, at or below {gof.rule_out:g}); the tail is nowhere more than "
-            f"{100 * fit.ks_distance:.2g} % of its events off"
+            slight
+            or f"a power law is ruled out (p {gof.p:.3g}, at or below {gof.rule_out:g}): it is up to "
+            f"{100 * fit.ks_distance:.2g} % of the tail's events off"
         )
     if gof is not None and gof.doubtful:
+        low, high = gof.p_interval
         said.append(
-            f"doubtful: p could lie on either side of {gof.rule_out:g} "
-            f"({gof.p_interval[0]:.3f} to {gof.p_interval[1]:.3f} after {gof.replicates} replicates)"
+            f"doubtful: p could lie on either side of {gof.rule_out:g} ({low:.3f} to {high:.3f} after "
+            f"{gof.replicates} replicates)"
         )
     return said
 

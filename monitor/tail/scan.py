@@ -55,7 +55,7 @@ def why_no_tail(sample: Sample, options: Options) -> NoTail | None:
     n, distinct = sample.n, sample.sizes.size
     if n == 0:
         return NoTail(reason="there are no events")
-    if not np.all(np.isfinite(sample.sizes)) or sample.sizes[0] <= 0.0:
+    if not np.isfinite(sample.sizes[-1]) or not sample.sizes[0] > 0.0:  # ascending: the ends tell
         return NoTail(reason=f"a size must be a positive number; the smallest here is {sample.sizes[0]:g}")
     if n < options.min_tail:
         return NoTail(reason=f"{n} events are fewer than the {options.min_tail} that a tail must hold")

@@ -32,7 +32,8 @@ def log_mixture(successes: NDArray[np.int64], m: NDArray[np.int64], threshold: f
     """
     u, v = 1.0, (1.0 - threshold) / threshold
     mixed: NDArray[np.float64] = betaln(u + successes, v + m - successes) - betaln(u, v)
-    return mixed - successes * np.log(threshold) - (m - successes) * np.log1p(-threshold)
+    mixed -= successes * np.log(threshold) + (m - successes) * np.log1p(-threshold)
+    return mixed
 
 
 def first_decision(verdicts: NDArray[np.bool_], threshold: float, *, risk: float = RESAMPLING_RISK) -> int | None:

@@ -10,6 +10,8 @@ the polynomials are the Taylor series of exp and of 2 artanh, long enough for th
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from monitor.tail.kernels.compiling import helper, kernel
@@ -34,7 +36,7 @@ _L7, _L8, _L9, _L10, _L11 = 2 / 15, 2 / 17, 2 / 19, 2 / 21, 2 / 23
 
 
 @helper
-def exp_nonpositive(x):
+def exp_nonpositive(x: float) -> Any:
     """exp(x) for x <= 0, within 2 units in the last place."""
     if x < SMALLEST_EXPONENT:
         x = SMALLEST_EXPONENT
@@ -50,7 +52,7 @@ def exp_nonpositive(x):
 
 
 @kernel
-def exponential(x):
+def exponential(x: float) -> Any:
     """exp(x) for any x; infinite beyond the largest double."""
     if x <= 0.0:
         return exp_nonpositive(x)
@@ -59,7 +61,7 @@ def exponential(x):
 
 
 @helper
-def log_one_plus(f):
+def log_one_plus(f: float) -> Any:
     """ln(1 + f) for -0.3 < f < 0.42, also where f is tiny."""
     s = f / (2.0 + f)
     z = s * s
@@ -70,8 +72,8 @@ def log_one_plus(f):
     return f - (half - s * (half + z * (even + z * odd)))
 
 
-@kernel
-def logarithm(x):
+@helper
+def log_in_place(x: float) -> Any:
     """ln(x) for finite x > 0, subnormal numbers included, within 2 units in the last place."""
     scale = 0.0
     if x < 2.2250738585072014e-308:
@@ -84,7 +86,13 @@ def logarithm(x):
 
 
 @kernel
-def log_ratio(a, b):
+def logarithm(x: float) -> Any:
+    """log_in_place as a call."""
+    return log_in_place(x)
+
+
+@kernel
+def log_ratio(a: float, b: float) -> Any:
     """ln(a / b) for a >= b > 0, accurate also where a and b are large neighbours."""
     f = (a - b) / b
     if f < 0.4:
@@ -93,6 +101,6 @@ def log_ratio(a, b):
 
 
 @kernel
-def exp_apart(x):
+def exp_apart(x: float) -> Any:
     """exp_nonpositive as a call, for places where speed does not hang on it and code would swell."""
     return exp_nonpositive(x)

@@ -3,8 +3,8 @@
 A row is an occupied cell k, ascending; above the lower edge of cell k_i a power law gives the number of cells K - k_i
 a geometric law, P(K >= k) = exp(-g_i (k - k_i)), with the exponent of highest likelihood in closed form,
 g_i = ln(1 + W_i/S_i), S_i = sum of w_k (k - k_i); alpha = 1 + g/width (Y. Virkar & A. Clauset, Annals of Applied
-Statistics 8 (2014) 89-119, for bins equally wide in ln(size)). The distance is the largest over all edges above: between
-occupied cells the data's survival stands still, so it is the largest of W_j/W_i - P(K >= k_j) and
+Statistics 8 (2014) 89-119, for bins equally wide in ln(size)). The distance is the largest over all edges above:
+between occupied cells the data's survival stands still, so it is the largest of W_j/W_i - P(K >= k_j) and
 P(K >= k_j + 1) - W_{j+1}/W_i.
 
 **Many candidates refused by one row.** As for measured sizes (measured.py) with t = k_q - k_i in [0, T], Y = k_j - k_q:
@@ -17,6 +17,8 @@ end. From above h_i is at most (Y + t) ln(1 + (W_p/W_q)/(c + t)) <= (Y + T) ln(1
 
 from __future__ import annotations
 
+from typing import Any
+
 from monitor.tail.kernels.arithmetic import exp_nonpositive, log_one_plus, logarithm
 from monitor.tail.kernels.compiling import helper, kernel
 from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
@@ -26,7 +28,7 @@ SLACK = 1e-12
 
 
 @kernel
-def _log1p(x):
+def _log1p(x: float) -> Any:
     """ln(1 + x) for x >= 0."""
     if x < 0.4:
         return log_one_plus(x)
@@ -34,13 +36,13 @@ def _log1p(x):
 
 
 @kernel
-def binned_rate(ladder, row):
+def binned_rate(ladder: Any, row: int) -> Any:
     """g of candidate `row`: exponent less one, per cell."""
     return _log1p(ladder.events[row] / ladder.spread[row])
 
 
 @helper
-def _look(ladder, row, j, rate, worst):
+def _look(ladder: Any, row: int, j: int, rate: float, worst: Worst) -> Any:
     """`worst` after comparing data and model at the edges of row j."""
     share = 1.0 / ladder.events[row]
     at = exp_nonpositive(-rate * (ladder.place[j] - ladder.place[row]))
@@ -49,7 +51,7 @@ def _look(ladder, row, j, rate, worst):
 
 
 @kernel
-def binned_deviations(ladder, row, stop, scratch):
+def binned_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`.
 
     A grid has some thousands of rows at most, so beyond a few probes all are looked at, in a loop that compiles to
@@ -71,7 +73,7 @@ def binned_deviations(ladder, row, stop, scratch):
 
 
 @kernel
-def _all_looked_at(ladder, row, rate, worst, stop, scratch):
+def _all_looked_at(ladder: Any, row: int, rate: float, worst: Worst, stop: float, scratch: Any) -> Any:
     """`worst` after a walk over the rows in strides; a stride is skipped where its ends show that nothing in it
     can be worse, by the same argument as in measured.py."""
     place = ladder.place
@@ -98,7 +100,7 @@ def _all_looked_at(ladder, row, rate, worst, stop, scratch):
 
 
 @kernel
-def binned_bound(ladder, p, q, j, above):
+def binned_bound(ladder: Any, p: int, q: int, j: int, above: bool) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     events = ladder.events
     few = events[q]

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_one_plus, log_ratio, logarithm
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.compiling import helper, int64, kernel
 
 _GOLDEN = np.uint64(0x9E3779B97F4A7C15)
 _MIX_1 = np.uint64(0xBF58476D1CE4E5B9)
@@ -23,7 +23,7 @@ _UNIT = 1.0 / 9007199254740992.0  # 2^-53
 
 
 @helper
-def mixed(z):
+def mixed(z: Any) -> Any:
     """SplitMix64's finaliser: a bijection of 64-bit words in which every bit touches every other."""
     z = (z ^ (z >> np.uint64(30))) * _MIX_1
     z = (z ^ (z >> np.uint64(27))) * _MIX_2
@@ -31,7 +31,7 @@ def mixed(z):
 
 
 @helper
-def start(state, key, replicate):
+def start(state: Any, key: Any, replicate: int) -> None:
     """Fill uint64 (4,) `state` for this replicate."""
     word = mixed(np.uint64(key) + _GOLDEN * (np.uint64(replicate) + np.uint64(1)))
     for k in range(4):
@@ -40,12 +40,12 @@ def start(state, key, replicate):
 
 
 @helper
-def _rotated(x, k):
+def _rotated(x: Any, k: int) -> Any:
     return (x << np.uint64(k)) | (x >> np.uint64(64 - k))
 
 
 @helper
-def word(state):
+def word(state: Any) -> Any:
     """The next 64 random bits."""
     out = _rotated(state[0] + state[3], 23) + state[0]
     shifted = state[1] << np.uint64(17)
@@ -59,7 +59,7 @@ def word(state):
 
 
 @helper
-def uniform(state):
+def uniform(state: Any) -> Any:
     """Uniform on the open interval (0, 1)."""
     return (np.float64(word(state) >> np.uint64(11)) + 0.5) * _UNIT
 
@@ -70,7 +70,7 @@ _AREA = 0.0039496598225815571993
 
 
 @kernel
-def _layers(edges, heights):
+def _layers(edges: Any, heights: Any) -> None:
     """Right edges of the layers and the density there, from our own exp and log so that they never differ."""
     edges[0] = _AREA / exp_apart(-_EDGE)
     edges[1] = _EDGE
@@ -92,7 +92,7 @@ _EDGES, _HEIGHTS = _tables()
 
 
 @kernel
-def _exponential_rare(state, layer, x):
+def _exponential_rare(state: Any, layer: Any, x: float) -> Any:
     """The one draw in a hundred that the layer's rectangle does not settle; below 0: draw again."""
     height = _HEIGHTS[layer] + (_HEIGHTS[layer + 1] - _HEIGHTS[layer]) * uniform(state)
     if height < exp_apart(-x):
@@ -101,12 +101,12 @@ def _exponential_rare(state, layer, x):
 
 
 @helper
-def exponential_draw(state):
+def exponential_draw(state: Any) -> Any:
     """One draw from the exponential law of mean 1."""
     past = 0.0
     while True:
         bits = word(state)
-        layer = np.int64(bits & np.uint64(255))
+        layer = int64(bits & np.uint64(255))
         x = np.float64(bits >> np.uint64(11)) * _UNIT * _EDGES[layer]
         if x < _EDGES[layer + 1]:
             return past + x
@@ -120,7 +120,7 @@ def exponential_draw(state):
 
 # -- binomial
 @helper
-def _log1m(p):
+def _log1m(p: float) -> Any:
     """ln(1 - p) for 0 < p <= 1/2."""
     if p < 0.29:
         return log_one_plus(-p)
@@ -128,7 +128,7 @@ def _log1m(p):
 
 
 @kernel
-def _by_waiting(state, n, p):
+def _by_waiting(state: Any, n: float, p: float) -> Any:
     """Binomial by waiting times: failures before each success are geometric. About n p + 1 draws."""
     scale = -1.0 / _log1m(p)
     successes = 0
@@ -141,7 +141,7 @@ def _by_waiting(state, n, p):
 
 
 @helper
-def _stirling(k):
+def _stirling(k: int) -> Any:
     """ln k! minus Stirling's formula at k + 1 (the correction of W. Hoermann 1993, table for small k)."""
     if k < 10:
         return _STIRLING[k]
@@ -158,27 +158,27 @@ _STIRLING = np.array(
 
 
 @kernel
-def _signed_log_ratio(a, b):
+def _signed_log_ratio(a: float, b: float) -> Any:
     if a >= b:
         return log_ratio(a, b)
     return -log_ratio(b, a)
 
 
 @kernel
-def _log_weight(n, p, k, mode):
+def _log_weight(n: float, p: float, k: float, mode: float) -> Any:
     """ln of the binomial probability of k over that of the mode."""
     odds = p / (1.0 - p)
     return (
         (mode + 0.5) * _signed_log_ratio(mode + 1.0, odds * (n - mode + 1.0))
         + (n + 1.0) * _signed_log_ratio(n - mode + 1.0, n - k + 1.0)
         + (k + 0.5) * _signed_log_ratio(odds * (n - k + 1.0), k + 1.0)
-        + (_stirling(np.int64(mode)) + _stirling(np.int64(n - mode)))
-        - (_stirling(np.int64(k)) + _stirling(np.int64(n - k)))
+        + (_stirling(int64(mode)) + _stirling(int64(n - mode)))
+        - (_stirling(int64(k)) + _stirling(int64(n - k)))
     )
 
 
 @kernel
-def _by_rejection(state, n, p):
+def _by_rejection(state: Any, n: float, p: float) -> Any:
     """Binomial by transformed rejection with squeeze, for n p >= 10 and p <= 1/2.
 
     Algorithm BTRS of W. Hoermann, The generation of binomial random variates, Journal of Statistical
@@ -199,27 +199,27 @@ def _by_rejection(state, n, p):
         if k < 0.0 or k > n:
             continue
         if us >= 0.07 and v <= sure:
-            return np.int64(k)
+            return int64(k)
         if logarithm(v * alpha / (a / (us * us) + b)) <= _log_weight(n, p, k, mode):
-            return np.int64(k)
+            return int64(k)
 
 
 @kernel
-def binomial(state, n, p):
+def binomial(state: Any, n: float, p: float) -> Any:
     """Number of successes in n trials of chance p (int64 n >= 0, 0 <= p <= 1)."""
     if n <= 0 or p <= 0.0:
-        return np.int64(0)
+        return int64(0)
     if p >= 1.0:
-        return np.int64(n)
+        return int64(n)
     q = p if p <= 0.5 else 1.0 - p
     trials = np.float64(n)
-    k = np.int64(_by_waiting(state, trials, q)) if trials * q < 10.0 else _by_rejection(state, trials, q)
-    return k if p <= 0.5 else np.int64(n - k)
+    k = int64(_by_waiting(state, trials, q)) if trials * q < 10.0 else _by_rejection(state, trials, q)
+    return k if p <= 0.5 else int64(n - k)
 
 
 # -- draws with replacement
 @kernel
-def _pick_one_by_one(state, draws, owner, total, counts):
+def _pick_one_by_one(state: Any, draws: int, owner: Any, total: Any, counts: Any) -> None:
     """Histogram of `draws` uniform picks among `total` events; owner[e] is the row of event e (empty: row e).
 
     Two 32-bit picks from each 64-bit word, without bias (D. Lemire, ACM TOMACS 29 (2019) 3).
@@ -235,15 +235,15 @@ def _pick_one_by_one(state, draws, owner, total, counts):
             bits = bits >> np.uint64(32)
             if (product & np.uint64(0xFFFFFFFF)) < unfair or done == draws:
                 continue
-            event = np.int64(product >> np.uint64(32))
-            counts[event if same else np.int64(owner[event])] += 1
+            event = int64(product >> np.uint64(32))
+            counts[event if same else int64(owner[event])] += 1
             done += 1
 
 
 @kernel
-def _pick_by_rows(state, draws, weights, total, counts):
+def _pick_by_rows(state: Any, draws: int, weights: Any, total: Any, counts: Any) -> None:
     """The same histogram by one binomial a row: the cost is that of the rows, not of the draws."""
-    left = np.int64(draws)
+    left = int64(draws)
     weight_left = np.float64(total)
     for i in range(counts.size):
         if left == 0:
@@ -255,7 +255,7 @@ def _pick_by_rows(state, draws, weights, total, counts):
 
 
 @kernel
-def resampled(state, draws, weights, owner, counts):
+def resampled(state: Any, draws: int, weights: Any, owner: Any, counts: Any) -> None:
     """Histogram `counts` of `draws` events drawn with replacement from rows holding `weights` events.
 
     Parameters: weights int64 (k,); owner int32 (events,) row of each event when the picks are to be made one

@@ -6,6 +6,9 @@ the same numbers come out on every processor, for every number of threads and fo
 
 from __future__ import annotations
 
+from typing import Any
+
+import numpy as np
 from numba import njit
 
 # Without numba's reference counting (_nrt): a loop borrows its caller's arrays and makes none of its own, so there is
@@ -15,3 +18,6 @@ kernel = njit(nogil=True, cache=True, _nrt=False, error_model="numpy", fastmath=
 
 helper = njit(nogil=True, forceinline=True, _nrt=False, error_model="numpy", fastmath=False)
 """A few operations that disappear into the kernel calling them."""
+
+int64: Any = np.int64
+"""A 64-bit integer. A bare 0 or -1 in a call has a type of its own, and a second version would be compiled for it."""

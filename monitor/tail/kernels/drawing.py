@@ -8,11 +8,13 @@ an exponential. Where cells hold many events each, their counts are binomials, o
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_nonpositive, exponential, log_ratio, logarithm
 from monitor.tail.kernels.chance import binomial, exponential_draw
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.compiling import helper, int64, kernel
 from monitor.tail.kernels.ladder import MEASURED, WHOLE, Ladder
 from monitor.tail.kernels.whole import survival
 
@@ -21,13 +23,13 @@ _LARGEST = 1e300
 
 
 @helper
-def gap(law, above, here):
+def gap(law: Any, above: float, here: float) -> Any:
     """How far one place lies above another, in the unit of the spread."""
     return log_ratio(above, here) if law == WHOLE else above - here
 
 
 @kernel
-def part(rows, begin, end):
+def part(rows: Any, begin: int, end: int) -> Any:
     """Rows begin..end-1 as a ladder of their own."""
     whole = rows.law == WHOLE
     return Ladder(
@@ -41,7 +43,7 @@ def part(rows, begin, end):
 
 
 @kernel
-def settle(rows, begin, end):
+def settle(rows: Any, begin: int, end: int) -> None:
     """Turn the events of rows begin..end-1 into events at or above, and fill their spread.
 
     On entry events[i] holds the row's own count, spread[i] (whole sizes: and within[i]) what the row itself adds.
@@ -63,7 +65,7 @@ def settle(rows, begin, end):
 
 
 @kernel
-def _measured_tail(rows, base, tail, recipe, state):
+def _measured_tail(rows: Any, base: int, tail: int, recipe: Any, state: Any) -> Any:
     """`tail` ordered draws above xmin in rows base.. ; returns the row after the last."""
     y = rows.place
     events = rows.events
@@ -87,7 +89,7 @@ def _measured_tail(rows, base, tail, recipe, state):
 
 
 @helper
-def _put(rows, at, base, place, count):
+def _put(rows: Any, at: Any, base: int, place: float, count: int) -> Any:
     """Add `count` events at `place` to the row last filled or to a new one; returns the row after it."""
     if at > base and rows.place[at - 1] == place:
         rows.events[at - 1] += count
@@ -99,7 +101,7 @@ def _put(rows, at, base, place, count):
 
 
 @kernel
-def _binned_tail(rows, base, tail, recipe, state):
+def _binned_tail(rows: Any, base: int, tail: int, recipe: Any, state: Any) -> Any:
     """Counts of cells from xmin on, while an empty cell is rarer than a full one; the rest draw by draw."""
     chance = 1.0 - exp_nonpositive(-recipe.rate)
     cell = recipe.start
@@ -114,13 +116,13 @@ def _binned_tail(rows, base, tail, recipe, state):
     height = 0.0
     for r in range(left):
         height += exponential_draw(state) / (left - r)
-        at = _put(rows, at, base, cell + np.floor(height / recipe.rate), np.int64(1))
+        at = _put(rows, at, base, cell + np.floor(height / recipe.rate), int64(1))
     settle(rows, base, at)
     return at
 
 
 @kernel
-def _far_whole(law, chance, guess, scratch):
+def _far_whole(law: Any, chance: float, guess: float, scratch: Any) -> Any:
     """The largest v with P(X >= v) >= chance, from a guess that is hardly ever more than one off."""
     v = guess
     if v >= _LARGEST_EXACT:
@@ -133,7 +135,7 @@ def _far_whole(law, chance, guess, scratch):
 
 
 @kernel
-def _whole_tail(rows, base, tail, recipe, steps, law, scratch, state):
+def _whole_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any, scratch: Any, state: Any) -> Any:
     """`tail` ordered draws from the zeta law, equal ones in one row."""
     table = steps.survival
     edge = recipe.start + table.size - 1.0
@@ -151,7 +153,7 @@ def _whole_tail(rows, base, tail, recipe, steps, law, scratch, state):
         else:
             guess = np.floor(0.5 + (edge - 0.5) * exponential((height - edge_height) / recipe.rate))
             v = _far_whole(law, chance, guess, scratch)
-        at = _put(rows, at, base, v, np.int64(1))
+        at = _put(rows, at, base, v, int64(1))
     for i in range(base, at):
         rows.beyond[i] = rows.place[i] + 1.0
         rows.within[i] = 0.0
@@ -160,7 +162,7 @@ def _whole_tail(rows, base, tail, recipe, steps, law, scratch, state):
 
 
 @kernel
-def _whole_cells_tail(rows, base, tail, steps, state):
+def _whole_cells_tail(rows: Any, base: int, tail: int, steps: Any, state: Any) -> Any:
     """Counts of the grid's cells from xmin on, one binomial after another."""
     left = tail
     at = base
@@ -182,7 +184,7 @@ def _whole_cells_tail(rows, base, tail, steps, state):
 
 
 @kernel
-def draw_tail(rows, base, tail, recipe, steps, law, scratch, state):
+def draw_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any, scratch: Any, state: Any) -> Any:
     """Fill rows base.. with `tail` draws from the fitted law; returns the row after the last."""
     if tail == 0:
         rows.events[base] = 0.0
@@ -197,7 +199,7 @@ def draw_tail(rows, base, tail, recipe, steps, law, scratch, state):
 
 
 @kernel
-def draw_body(rows, base, top, counts, body, origin):
+def draw_body(rows: Any, base: int, top: int, counts: Any, body: Any, origin: Any) -> Any:
     """Put the body's rows that `counts` hit below the tail (rows base..top-1), walking down; returns the first."""
     whole = rows.law == WHOLE
     filled = top > base
@@ -227,7 +229,7 @@ def draw_body(rows, base, top, counts, body, origin):
 
 
 @kernel
-def anchor(rows, begin, end, place):
+def anchor(rows: Any, begin: int, end: int, place: float) -> Any:
     """Put a given xmin, holding no event, below the first row at or above it; returns the row it is in."""
     row = begin
     while row < end and rows.place[row] < place:

@@ -16,6 +16,9 @@ STARTS = 20
 """Candidates tried first, geometric in the number of events above them."""
 
 
+WORTH_A_GUESS = 64
+"""With fewer candidates than this they are simply tried in turn."""
+
 MEASURED = 0
 WHOLE = 1
 BINNED = 2
@@ -97,17 +100,17 @@ def new_scratch(rows: int) -> Scratch:
 
 
 @helper
-def distance_of(worst):
+def distance_of(worst: Worst) -> Any:
     return worst.above if worst.above > worst.below else worst.below
 
 
 @helper
-def witness_of(worst):
+def witness_of(worst: Worst) -> Any:
     return worst.above_row if worst.above >= worst.below else worst.below_row
 
 
 @helper
-def remember(probes, slot, row):
+def remember(probes: Any, slot: int, row: int) -> Any:
     """Keep a witness; returns the slot for the next one."""
     for t in range(PROBES):
         if probes[t] == row:
@@ -117,7 +120,7 @@ def remember(probes, slot, row):
 
 
 @helper
-def noted(worst, row, over, under):
+def noted(worst: Worst, row: int, over: float, under: float) -> Any:
     """`worst` after a look at one row: by how much the data lie over the model there, and under it."""
     return Worst(
         over if over > worst.above else worst.above,
@@ -128,13 +131,13 @@ def noted(worst, row, over, under):
 
 
 @helper
-def better(best, row, distance):
+def better(best: Best, row: int, distance: float) -> Any:
     """True when this candidate takes the lead: smaller distance, or the same at a smaller size."""
     return distance < best.distance or (distance == best.distance and row < best.row)
 
 
 @kernel
-def row_with(events, last, wanted):
+def row_with(events: Any, last: int, wanted: float) -> Any:
     """Smallest row in 0..last with at most `wanted` events at or above it; `last` if there is none."""
     low = 0
     high = last
@@ -148,7 +151,7 @@ def row_with(events, last, wanted):
 
 
 @kernel
-def start_row(events, last, g):
+def start_row(events: Any, last: int, g: int) -> Any:
     """The g-th of STARTS + 1 candidates spread geometrically in their numbers of events."""
     high = logarithm(events[0])
     low = logarithm(events[last])
@@ -156,13 +159,13 @@ def start_row(events, last, g):
 
 
 @kernel
-def neighbour_row(events, last, row, step):
+def neighbour_row(events: Any, last: int, row: int, step: float) -> Any:
     """The candidate whose tail holds exp(step) times as many events."""
     return row_with(events, last, exponential(logarithm(events[row]) + step))
 
 
 @kernel
-def last_candidate(events, least):
+def last_candidate(events: Any, least: int) -> Any:
     """Last row with at least `least` events and another row above it; -1 if there is none."""
     row = events.size - 3
     while row >= 0 and events[row] < least:

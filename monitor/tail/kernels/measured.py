@@ -21,10 +21,12 @@ either is above the best distance known, no candidate of the block can be the an
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
-from monitor.tail.kernels.arithmetic import exp_nonpositive, logarithm
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.arithmetic import exp_nonpositive, log_in_place
+from monitor.tail.kernels.compiling import helper, int64, kernel
 from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
 
 SLACK = 1e-12
@@ -36,41 +38,38 @@ _GRID_DENSITY = 3.0
 
 
 @kernel
-def build(sizes, counts, y, first, events, spread):
-    """Fill the ladder of distinct sizes with counts; sizes whose logarithms agree become one row.
+def build(sizes: Any, counts: Any, y: Any, first: Any, events: Any, spread: Any) -> Any:
+    """Fill the rows of distinct sizes with counts, from above; sizes whose logarithms agree become one row.
 
-    Parameters: sizes float64 (k,) ascending, counts int64 (k,). Written: y, spread (k,), events (k + 1,),
-    first int64 (k,) index of each row's smallest size. Returns the number of rows.
+    Parameters: sizes float64 (k,) ascending, counts int64 (k,). Written: y, spread float64 (k,), events float64
+    (k + 1,), and first int64 (k,), the index of each row's smallest size; an empty `first` is left out. Returns
+    where the rows begin: they are the last ones of the arrays.
     """
-    for i in range(sizes.size):
-        y[i] = logarithm(sizes[i])
-    rows = np.int64(0)
-    for i in range(sizes.size):
-        if rows > 0 and y[i] <= y[rows - 1]:
-            events[rows - 1] += counts[i]
-        else:
-            y[rows] = y[i]
-            first[rows] = i
-            events[rows] = counts[i]
-            rows += 1
-    fill_suffixes(y, events, spread, rows)
-    return rows
-
-
-@kernel
-def fill_suffixes(y, events, spread, rows):
-    """Turn events in each row into events at or above it, and fill the spread."""
-    events[rows] = 0.0
-    spread[rows - 1] = 0.0
+    k = sizes.size
+    for i in range(k):
+        y[i] = log_in_place(sizes[i])
+    row = k
+    held = 0.0
     total = 0.0
-    for i in range(rows - 2, -1, -1):
-        total += events[i + 1] * (y[i + 1] - y[i])
-        spread[i] = total
-        events[i] += events[i + 1]
+    above = y[k - 1]
+    events[k] = 0.0
+    for i in range(k - 1, -1, -1):
+        here = y[i]
+        if row == k or here < above:
+            row -= 1
+            total += held * (above - here)
+            above = here
+        held += counts[i]
+        y[row] = here
+        events[row] = held
+        spread[row] = total
+        if first.size > 0:
+            first[row] = i
+    return row
 
 
 @helper
-def _look(ladder, row, j, worst):
+def _look(ladder: Any, row: int, j: int, worst: Worst) -> Any:
     """`worst` after comparing data and model of candidate `row` at row j."""
     events = ladder.events
     share = 1.0 / events[row]
@@ -79,7 +78,7 @@ def _look(ladder, row, j, worst):
 
 
 @kernel
-def _probed(ladder, row, probes):
+def _probed(ladder: Any, row: int, probes: Any) -> Any:
     """Largest deviations at the remembered witnesses and at 16 rows spread over the tail."""
     rows = ladder.place.size
     worst = Worst(0.0, row, 1.0 - ladder.events[row + 1] * (1.0 / ladder.events[row]), row)
@@ -94,7 +93,7 @@ def _probed(ladder, row, probes):
 
 
 @kernel
-def _searched(ladder, row, worst, ends, scratch):
+def _searched(ladder: Any, row: int, worst: Worst, ends: Any, scratch: Any) -> Any:
     """`worst` after searching the stretch between two rows; ends = (left, right, model at left, model at right)."""
     events = ladder.events
     share = 1.0 / events[row]
@@ -125,7 +124,7 @@ def _searched(ladder, row, worst, ends, scratch):
 
 
 @kernel
-def measured_deviations(ladder, row, stop, scratch):
+def measured_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`; above it, only
     so much is certain that the distance passes `stop`."""
     worst = _probed(ladder, row, scratch.probes)
@@ -137,7 +136,7 @@ def measured_deviations(ladder, row, stop, scratch):
     rows = y.size
     share = 1.0 / events[row]
     rate = -(events[row] / ladder.spread[row])
-    stride = max(np.int64(np.sqrt(rows - row) / _GRID_DENSITY), 4)
+    stride = max(int64(np.sqrt(rows - row) / _GRID_DENSITY), 4)
     steps = (rows - 1 - row) // stride
     for g in range(steps + 1):
         grid[g] = exp_nonpositive(rate * (y[row + g * stride] - y[row]))
@@ -159,7 +158,7 @@ def measured_deviations(ladder, row, stop, scratch):
 
 
 @helper
-def measured_bound(ladder, p, q, j, above):
+def measured_bound(ladder: Any, p: int, q: int, j: int, above: bool) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     y = ladder.place
     events = ladder.events

@@ -11,10 +11,12 @@ distance are those of the full scan, so the answer is the same.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from monitor.tail.kernels.chance import binomial, resampled, start
-from monitor.tail.kernels.compiling import kernel
+from monitor.tail.kernels.compiling import int64, kernel
 from monitor.tail.kernels.drawing import anchor, draw_body, draw_tail, part
 from monitor.tail.kernels.ladder import WHOLE, last_candidate
 from monitor.tail.kernels.scanning import distance_at, nearest, rate_of
@@ -22,7 +24,7 @@ from monitor.tail.kernels.whole import prepared
 
 
 @kernel
-def _keep_nothing(kept, r):
+def _keep_nothing(kept: Any, r: int) -> None:
     """A replicate without candidates is infinitely far."""
     kept.distance[r] = np.inf
     kept.rate[r] = np.nan
@@ -32,7 +34,7 @@ def _keep_nothing(kept, r):
 
 
 @kernel
-def _keep(kept, r, ladder, row, distance, origin):
+def _keep(kept: Any, r: int, ladder: Any, row: int, distance: float, origin: Any) -> None:
     kept.distance[r] = distance
     kept.rate[r] = rate_of(ladder, row)
     kept.place[r] = ladder.place[row]
@@ -41,19 +43,19 @@ def _keep(kept, r, ladder, row, distance, origin):
 
 
 @kernel
-def _judge_given(ladder, recipe, kept, r, scratch):
+def _judge_given(ladder: Any, recipe: Any, kept: Any, r: int, scratch: Any) -> None:
     """The tail at a given xmin, the ladder's first row; nothing else is a candidate."""
     if ladder.events[0] < max(recipe.least, 2) or ladder.spread[0] <= 0.0:
         _keep_nothing(kept, r)
     else:
-        row = np.int64(0)  # typed, so that no second version is compiled for the constant
-        _keep(kept, r, ladder, row, distance_at(ladder, row, scratch), np.int64(-1))
+        row = int64(0)  # typed, so that no second version is compiled for the constant
+        _keep(kept, r, ladder, row, distance_at(ladder, row, scratch), int64(-1))
     if recipe.decide:
         kept.distance[r] = 1.0 if kept.distance[r] >= recipe.reach else 0.0
 
 
 @kernel
-def replicates(recipe, sources, key, first, space, kept):
+def replicates(recipe: Any, sources: Any, key: Any, first: int, space: Any, kept: Any) -> None:
     """Make and fit the replicates with numbers first, first + 1, ..., as many as `kept` has room for.
 
     Parameters: recipe (Recipe), sources (Sources), space (Space, of the caller's thread alone), kept (Kept).
@@ -93,5 +95,5 @@ def replicates(recipe, sources, key, first, space, kept):
         elif best.row < 0:
             _keep_nothing(kept, r)
         else:
-            source = space.origin[begin + best.row] if best.row < below else np.int64(-1)
+            source = space.origin[begin + best.row] if best.row < below else int64(-1)
             _keep(kept, r, ladder, best.row, best.distance, source)

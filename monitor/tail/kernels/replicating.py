@@ -13,7 +13,7 @@ class Body(NamedTuple):
     """Rows that replicates draw from as they are, with replacement: those below xmin, or all.
 
     place, beyond     float64 (b,)  as in a Ladder; beyond only for whole sizes, else empty
-    offset, variance  float64 (b,)  whole sizes: mean of ln(size) in the row less ln(place), and its variance; else empty
+    offset, variance  float64 (b,)  whole sizes: mean of ln(size/place) in the row, and its variance; else empty
     counts            int64 (b,)    events in each row
     owner             int32         row of each event, for picks one by one; see chance.resampled
     """

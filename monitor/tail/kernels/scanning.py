@@ -9,15 +9,18 @@ and shrink to a quarter when not; what cannot be refused is evaluated.
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import logarithm
 from monitor.tail.kernels.binned import binned_bound, binned_deviations, binned_rate
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.compiling import helper, int64, kernel
 from monitor.tail.kernels.ladder import (
     BINNED,
     MEASURED,
     STARTS,
+    WORTH_A_GUESS,
     Best,
     Near,
     Worst,
@@ -33,7 +36,7 @@ from monitor.tail.kernels.whole import whole_bound, whole_deviations, whole_rate
 
 
 @kernel
-def rate_of(ladder, row):
+def rate_of(ladder: Any, row: int) -> Any:
     """The fitted exponent less one of candidate `row` (binned: per cell instead of per unit of ln(size))."""
     if ladder.law == MEASURED:
         return ladder.events[row] / ladder.spread[row]
@@ -43,7 +46,7 @@ def rate_of(ladder, row):
 
 
 @kernel
-def deviations(ladder, row, stop, scratch):
+def deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`; above it, only
     so much is certain that the distance passes `stop`."""
     if ladder.law == MEASURED:
@@ -54,7 +57,7 @@ def deviations(ladder, row, stop, scratch):
 
 
 @helper
-def _bound(ladder, p, q, j, above, scratch):
+def _bound(ladder: Any, p: int, q: int, j: int, above: bool, scratch: Any) -> Any:
     if ladder.law == MEASURED:
         return measured_bound(ladder, p, q, j, above)
     if ladder.law == BINNED:
@@ -63,7 +66,7 @@ def _bound(ladder, p, q, j, above, scratch):
 
 
 @helper
-def refused(ladder, p, q, worst, limit, scratch):
+def refused(ladder: Any, p: int, q: int, worst: Worst, limit: float, scratch: Any) -> Any:
     """True when one of the two witnesses shows that every candidate in p..q is farther than `limit`."""
     for above in (True, False):
         j = worst.above_row if above else worst.below_row
@@ -73,21 +76,23 @@ def refused(ladder, p, q, worst, limit, scratch):
 
 
 @kernel
-def _first_guesses(ladder, last, best, hint, first_hit, scratch):
+def _first_guesses(ladder: Any, last: int, best: Best, hint: int, first_hit: bool, scratch: Any) -> Any:
     """A good candidate soon: the hint, a few spread over all tails, then a search around the best of them."""
     events = ladder.events
-    slot = np.int64(0)
-    for g in range(-1, STARTS + 1):
+    slot = int64(0)
+    before = int64(-1)
+    for g in range(-1, STARTS + 1 if last >= WORTH_A_GUESS else 0):
         row = hint if g < 0 else start_row(events, last, g)
-        if row < 0 or row > last:
+        if row < 0 or row > last or row == before:
             continue
+        before = row
         worst = deviations(ladder, row, best.distance, scratch)
         if better(best, row, distance_of(worst)):
             best = Best(row, distance_of(worst))
             if first_hit:
                 return best
             slot = remember(scratch.probes, slot, witness_of(worst))
-    if best.row < 0:
+    if best.row < 0 or last < WORTH_A_GUESS:
         return best
     step = 0.5 * logarithm(events[0] / events[last]) / STARTS
     while step * events[best.row] >= 0.5:
@@ -108,7 +113,7 @@ def _first_guesses(ladder, last, best, hint, first_hit, scratch):
 
 
 @kernel
-def nearest(ladder, last, least_far, hint, first_hit, scratch):
+def nearest(ladder: Any, last: int, least_far: float, hint: int, first_hit: bool, scratch: Any) -> Any:
     """The candidate in rows 0..last with the smallest distance, if that is below `least_far`.
 
     Parameters: hint, a row worth trying first, or -1; first_hit, stop at the first candidate nearer than
@@ -121,10 +126,10 @@ def nearest(ladder, last, least_far, hint, first_hit, scratch):
     best = _first_guesses(ladder, last, best, hint, first_hit, scratch)
     if first_hit and best.row >= 0:
         return best
-    slot = np.int64(0)
-    row = np.int64(0)
-    length = np.int64(1)
-    worst = Worst(0.0, np.int64(-1), 0.0, np.int64(-1))
+    slot = int64(0)
+    row = int64(0)
+    length = int64(1)
+    worst = Worst(0.0, int64(-1), 0.0, int64(-1))
     while row <= last:
         q = min(row + length - 1, last)
         if refused(ladder, row, q, worst, best.distance, scratch):
@@ -145,11 +150,11 @@ def nearest(ladder, last, least_far, hint, first_hit, scratch):
 
 
 @kernel
-def _edge(ladder, last, limit, scratch):
+def _edge(ladder: Any, last: int, limit: float, scratch: Any) -> Any:
     """Last candidate no farther than `limit`, walking down from the top; -1 if there is none."""
     row = last
-    length = np.int64(1)
-    worst = Worst(0.0, np.int64(-1), 0.0, np.int64(-1))
+    length = int64(1)
+    worst = Worst(0.0, int64(-1), 0.0, int64(-1))
     while row >= 0:
         p = max(row - length + 1, 0)
         if refused(ladder, p, row, worst, limit, scratch):
@@ -167,7 +172,7 @@ def _edge(ladder, last, limit, scratch):
 
 
 @kernel
-def near(ladder, last, limit, best_row, scratch):
+def near(ladder: Any, last: int, limit: float, best_row: Any, scratch: Any) -> Any:
     """Range of rows and rates (exponent minus one) of all candidates no farther than `limit` (a Near).
 
     Walking up, a candidate is only evaluated where its rate would widen the range found so far.
@@ -175,9 +180,9 @@ def near(ladder, last, limit, best_row, scratch):
     end = _edge(ladder, last, limit, scratch)
     rate = rate_of(ladder, best_row)
     found = Near(-1, end, rate, rate)
-    row = np.int64(0)
-    length = np.int64(1)
-    worst = Worst(0.0, np.int64(-1), 0.0, np.int64(-1))
+    row = int64(0)
+    length = int64(1)
+    worst = Worst(0.0, int64(-1), 0.0, int64(-1))
     while row <= end:
         rate = rate_of(ladder, row)
         if length == 1 and found.first >= 0 and found.least <= rate <= found.most:
@@ -200,7 +205,7 @@ def near(ladder, last, limit, best_row, scratch):
 
 
 @kernel
-def distance_at(ladder, row, scratch):
+def distance_at(ladder: Any, row: int, scratch: Any) -> Any:
     """Distance of one candidate."""
     scratch.probes[:] = -1
     return distance_of(deviations(ladder, row, np.inf, scratch))

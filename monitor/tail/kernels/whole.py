@@ -19,12 +19,12 @@ The survival zeta(a, v)/zeta(a, u) falls in a and rises with u, so for a witness
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_ratio, logarithm
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.compiling import helper, int64, kernel
 from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
 from monitor.tail.kernels.zeta import (
     NEGLIGIBLE,
@@ -56,14 +56,14 @@ class Zeta(NamedTuple):
 
 
 @kernel
-def whole_rate(ladder, row):
+def whole_rate(ladder: Any, row: int) -> Any:
     """Exponent less one of candidate `row`."""
     held = ladder.events[row]
     return exponent(ladder.place[row], ladder.spread[row] / held, ladder.within[row] / held, 0.0) - 1.0
 
 
 @kernel
-def prepared(s, start, scratch):
+def prepared(s: float, start: float, scratch: Any) -> Any:
     """The survival function of the zeta law from `start` on: terms[k] = sum over l >= k of (1 + l/start)^-s."""
     terms = scratch.terms
     fill_series(s, scratch.series)
@@ -84,18 +84,18 @@ def prepared(s, start, scratch):
 
 
 @kernel
-def survival(law, v, scratch):
+def survival(law: Zeta, v: float, scratch: Any) -> Any:
     """P(X >= v) for a whole v >= law.start."""
     if v >= law.series_from:
         return exp_apart(-law.s * log_ratio(v, law.start)) * by_series(scratch.series, v) * law.scale
     k = v - law.start
     if k >= law.summed:
         return 0.0
-    return scratch.terms[np.int64(k)] * law.scale
+    return scratch.terms[int64(k)] * law.scale
 
 
 @helper
-def _look(ladder, row, j, law, worst, scratch):
+def _look(ladder: Any, row: int, j: int, law: Zeta, worst: Worst, scratch: Any) -> Any:
     """(worst after comparing data and model at row j, survival at its lowest size, survival beyond it)."""
     share = 1.0 / ladder.events[row]
     at = survival(law, ladder.place[j], scratch)
@@ -108,7 +108,7 @@ def _look(ladder, row, j, law, worst, scratch):
 
 
 @kernel
-def _searched(ladder, row, law, worst, stop, scratch, depth):
+def _searched(ladder: Any, row: int, law: Zeta, worst: Worst, stop: float, scratch: Any, depth: int) -> Any:
     """`worst` after searching all stretches on the stack: between rows l and r the deviations are at most
     W_{l+1}/W_i - P(X >= u_r) and P(X >= u'_l) - W_r/W_i."""
     events = ladder.events
@@ -138,7 +138,7 @@ def _searched(ladder, row, law, worst, stop, scratch, depth):
 
 
 @kernel
-def whole_deviations(ladder, row, stop, scratch):
+def whole_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`."""
     rows = ladder.place.size
     s = whole_rate(ladder, row) + 1.0
@@ -155,7 +155,7 @@ def whole_deviations(ladder, row, stop, scratch):
         return worst
     span = rows - 1 - row
     strides = 16 if span >= 16 else span
-    depth = np.int64(0)
+    depth = int64(0)
     left = row
     for g in range(1, strides + 1):
         right = row + (span * g) // strides
@@ -172,7 +172,7 @@ def whole_deviations(ladder, row, stop, scratch):
 
 
 @kernel
-def _survival_ratio(s, v, start, series):
+def _survival_ratio(s: float, v: float, start: float, series: Any) -> Any:
     """zeta(s, v) / zeta(s, start) for v >= start; NaN where s is."""
     fill_series(s, series)
     lower = scaled_zeta(s, start, series)
@@ -180,7 +180,7 @@ def _survival_ratio(s, v, start, series):
 
 
 @kernel
-def whole_bound(ladder, p, q, j, above, series):
+def whole_bound(ladder: Any, p: int, q: int, j: int, above: bool, series: Any) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     events = ladder.events
     low = ladder.place[p]
@@ -202,7 +202,7 @@ def whole_bound(ladder, p, q, j, above, series):
 
 
 @kernel
-def fill_survivals(s, start, values, out, scratch):
+def fill_survivals(s: float, start: float, values: Any, out: Any, scratch: Any) -> None:
     """P(X >= v) of the zeta law from `start` on, for float64 (n,) whole values, into `out`."""
     law = prepared(s, start, scratch)
     for i in range(values.size):
@@ -210,13 +210,13 @@ def fill_survivals(s, start, values, out, scratch):
 
 
 @kernel
-def log_normaliser(s, start, scratch):
+def log_normaliser(s: float, start: float, scratch: Any) -> Any:
     """ln(start^s zeta(s, start)): what a log-likelihood in ln(X/start) is normalised by."""
     fill_series(s, scratch.series)
     return logarithm(scaled_zeta(s, start, scratch.series))
 
 
 @kernel
-def spread_of_logs(s, start):
+def spread_of_logs(s: float, start: float) -> Any:
     """Variance of ln X under the zeta law from `start` on."""
     return -mean_log(s, start).slope

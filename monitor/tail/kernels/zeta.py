@@ -9,7 +9,7 @@ are added one by one.
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_one_plus, log_ratio, logarithm
 from monitor.tail.kernels.compiling import helper, kernel
@@ -31,13 +31,13 @@ class MeanLog(NamedTuple):
 
 
 @helper
-def series_starts(s):
+def series_starts(s: float) -> Any:
     """From here on the series may be used."""
     return 16.0 + 2.0 * s
 
 
 @helper
-def fill_series(s, series):
+def fill_series(s: float, series: Any) -> None:
     """Coefficients of the series in powers of 1/w, into float64 (9,)."""
     product = s
     for r in range(8):
@@ -47,7 +47,7 @@ def fill_series(s, series):
 
 
 @helper
-def by_series(series, w):
+def by_series(series: Any, w: float) -> Any:
     """A(s, w) for w at or beyond series_starts(s)."""
     inverse = 1.0 / w
     v = inverse * inverse
@@ -56,7 +56,7 @@ def by_series(series, w):
 
 
 @kernel
-def scaled_zeta(s, q, series):
+def scaled_zeta(s: float, q: float, series: Any) -> Any:
     """A(s, q) = q^s zeta(s, q) for s > 1, q >= 1; `series` as filled for s."""
     begin = series_starts(s)
     total = 0.0
@@ -71,7 +71,7 @@ def scaled_zeta(s, q, series):
 
 
 @kernel
-def _remainder(s, w):
+def _remainder(s: float, w: float) -> Any:
     """The series with its first and second derivative in s."""
     inverse = 1.0 / (s - 1.0)
     a = w * inverse + 0.5
@@ -95,7 +95,7 @@ def _remainder(s, w):
 
 
 @kernel
-def mean_log(s, q):
+def mean_log(s: float, q: float) -> Any:
     """MeanLog at exponent s > 1 from q >= 1 on."""
     z, z1, z2 = 0.0, 0.0, 0.0
     begin = series_starts(s)
@@ -121,7 +121,7 @@ def mean_log(s, q):
 
 
 @kernel
-def exponent(q, mean, within, guess):
+def exponent(q: float, mean: float, within: float, guess: float) -> Any:
     """The s at which E[ln(X/q)] + (s - 2) within = mean: the exponent of highest likelihood.
 
     `within` is the mean variance of ln X inside rows that hold several integers, 0 for exact sizes; see whole.py.

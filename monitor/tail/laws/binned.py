@@ -23,13 +23,12 @@ class Binned(Law):
         """Rows of the cells from index `start` on; with `xmin`, the lowest row is its cell, if need be empty."""
         assert self.sample.cells is not None
         cells, counts = self.sample.cells[start:], self.sample.counts[start:]
-        first = np.arange(start, start + cells.size)
         if xmin is not None and (cell := int(cell_of(np.array([xmin]))[0])) != cells[:1]:
-            cells, counts, first = np.append(cell, cells), np.append(0, counts), np.append(start, first)
+            cells, counts = np.append(cell, cells), np.append(0, counts)
         events = np.append(counts, 0).astype(np.float64)
         ladder = Ladder(BINNED, cells.astype(np.float64), NOTHING, events, np.zeros(cells.size), NOTHING)
         settle(ladder, 0, cells.size)
-        return Rungs(ladder, first, edges(cells))
+        return Rungs(ladder, None, edges(cells))
 
     def given(self, xmin: float) -> tuple[int, float]:
         """For a given xmin: the index of the first cell in the tail, and the lower edge of the cell xmin lies in."""
@@ -42,7 +41,7 @@ class Binned(Law):
         return edges(np.clip(places, LOWEST_CELL, HIGHEST_CELL).astype(np.int64))
 
     def standard_error(self, alpha: float, ladder: Ladder, row: int) -> float:
-        """From the information of the geometric law of cells: (1 - r)/(width sqrt(n r)), r = exp(-(alpha - 1) width)."""
+        """By the geometric law of cells: (1 - r)/(width sqrt(n r)), r = exp(-(alpha - 1) width)."""
         slope = (alpha - 1.0) * CELL_WIDTH
         return -expm1(-slope) / (CELL_WIDTH * sqrt(ladder.events[row] * np.exp(-slope)))
 

@@ -54,12 +54,20 @@ Replicate = Callable[[int, int, bool], Chunk]
 
 @dataclass(frozen=True, slots=True)
 class Rungs:
-    """A ladder; `first` int64 (K,) the index of each row's smallest size in the sample, `sizes` float64 (K,) that
-    size as people are told it."""
+    """A ladder; `first` int64 (K,) the index of each row's smallest size in the sample, None where row and index are
+    the same; `sizes` float64 (K,) that size as people are told it."""
 
     ladder: Ladder
-    first: NDArray[np.int64]
+    first: NDArray[np.int64] | None
     sizes: Floats
+
+    def index_of(self, row: int) -> int:
+        """Index in the sample of the smallest size in a row."""
+        return row if self.first is None else int(self.first[row])
+
+    def row_of(self, index: int) -> int:
+        """The row that begins with the size of this index."""
+        return index if self.first is None else int(np.searchsorted(self.first, index))
 
 
 class Law(ABC):
@@ -126,7 +134,7 @@ class Law(ABC):
             xmin=(float(sizes[as_good.first]), float(sizes[as_good.last])),
             alpha=(1.0 + self.rate_unit * as_good.least, 1.0 + self.rate_unit * as_good.most),
         )
-        return self._told(self.rungs, int(best.row), int(self.rungs.first[best.row]), best.distance, near=spread)
+        return self._told(self.rungs, int(best.row), self.rungs.index_of(int(best.row)), best.distance, near=spread)
 
     def _fit_at(self, xmin: float) -> TailFit | NoTail:
         start, taken = self.given(xmin)
@@ -159,7 +167,7 @@ class Law(ABC):
     def _tail_at(self, fit: TailFit) -> tuple[Rungs, int]:
         """The ladder that a fit is a row of, and the row."""
         if fit.chosen:
-            return self.rungs, int(np.searchsorted(self.rungs.first, fit.start))
+            return self.rungs, self.rungs.row_of(fit.start)
         return self.climb(*self.given(fit.xmin)), 0
 
     def profile(self, fit: TailFit) -> Callable[[float], float]:
@@ -170,7 +178,7 @@ class Law(ABC):
     def replicate(self, fit: TailFit, source: Source, key: np.uint64) -> Replicate:
         """How replicates of this fit ('model') or of the data themselves ('data') are made."""
         rungs, row = self._tail_at(fit)
-        below = int(np.searchsorted(self.rungs.first, fit.start)) if source == "model" else self.rungs.first.size
+        below = self.rungs.row_of(fit.start) if source == "model" else self.rungs.sizes.size
         body = self.body(below)
         sources = Sources(body, self.steps(fit) if source == "model" else NO_STEPS)
         recipe = self._recipe(fit, source, float(rungs.ladder.place[row]))

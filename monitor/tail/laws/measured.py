@@ -12,6 +12,8 @@ from monitor.tail.kernels.measured import build
 from monitor.tail.laws.law import NOTHING, Floats, Law, Rungs
 from monitor.tail.tail_fit import TailFit
 
+_NO_INDEX = np.zeros(0, np.int64)
+
 
 class Measured(Law):
     """Rows are distinct values of ln(size)."""
@@ -22,10 +24,14 @@ class Measured(Law):
         if xmin is not None:
             sizes, counts = np.concatenate(([xmin], sizes)), np.concatenate(([0], counts))
         k = sizes.size
-        y, first, events, spread = np.empty(k), np.empty(k, np.int64), np.empty(k + 1), np.empty(k)
-        rows = build(sizes, counts, y, first, events, spread)
-        ladder = Ladder(MEASURED, y[:rows], NOTHING, events[: rows + 1], spread[:rows], NOTHING)
-        return Rungs(ladder, first[:rows], sizes if rows == k else sizes[first[:rows]])
+        y, events, spread = np.empty(k), np.empty(k + 1), np.empty(k)
+        begin = build(sizes, counts, y, _NO_INDEX, events, spread)
+        if begin == 0:
+            return Rungs(Ladder(MEASURED, y, NOTHING, events, spread, NOTHING), None, sizes)
+        first = np.empty(k, np.int64)  # rare: two sizes share a logarithm
+        begin = build(sizes, counts, y, first, events, spread)
+        ladder = Ladder(MEASURED, y[begin:], NOTHING, events[begin:], spread[begin:], NOTHING)
+        return Rungs(ladder, first[begin:], sizes[first[begin:]])
 
     def given(self, xmin: float) -> tuple[int, float]:
         """For a given xmin: the index of the first size in the tail, and xmin itself."""

@@ -47,7 +47,6 @@ class Whole(Law):
         """Rows of the sizes from index `start` on; with `xmin`, the lowest row is there, if need be without events."""
         rows = _rows_of(self.sample).at(slice(start, None))
         counts = self.sample.counts[start:]
-        first = np.arange(start, start + counts.size)
         if xmin is not None and not (counts.size and rows.place[0] == xmin):
             rows = _Rows(
                 np.append(xmin, rows.place),
@@ -55,11 +54,11 @@ class Whole(Law):
                 np.append(0.0, rows.offset),
                 np.append(0.0, rows.variance),
             )
-            counts, first = np.append(0, counts), np.append(start, first)
+            counts = np.append(0, counts)
         held = counts.astype(np.float64)
         ladder = Ladder(WHOLE, rows.place, rows.beyond, np.append(held, 0.0), held * rows.offset, held * rows.variance)
         settle(ladder, 0, counts.size)
-        return Rungs(ladder, first, rows.place)
+        return Rungs(ladder, None, rows.place)
 
     def given(self, xmin: float) -> tuple[int, float]:
         """For a given xmin: the index of the first size in the tail, and the lowest integer in it."""

@@ -47,6 +47,19 @@ class Cut:
         """Line i without its newline and a carriage return before it."""
         return self.block[self.starts[i] : self.ends[i]].removesuffix(b"\r")
 
+    def bare_ends(self) -> NDArray[np.int64]:
+        """The ends without a carriage return before the newline."""
+        back = (self.bytes_[np.maximum(self.ends - 1, 0)] == 13) & (self.ends > self.starts)
+        return np.asarray(self.ends - back, np.int64)
+
+    def lines_with(self, byte: int) -> NDArray[np.bool_]:
+        """Which lines hold a byte."""
+        hit = np.zeros(self.ends.size, bool)
+        at = np.flatnonzero(self.bytes_ == byte)
+        if at.size:
+            hit[np.searchsorted(self.ends, at)] = True
+        return hit
+
 
 @dataclass(slots=True)
 class Findings:

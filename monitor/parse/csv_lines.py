@@ -10,9 +10,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+import numpy as np
+from numpy.typing import NDArray
+
 from monitor import rejects as why
+from monitor.parse.blocks import Cut
 from monitor.parse.lines import Field, FormatError, LineFormat, ParseSetupError
-from monitor.parse.text_lines import TextReader, keyed_fields
+from monitor.parse.text_lines import Places, TextReader, keyed_fields
 
 
 class CsvReader(TextReader):
@@ -32,6 +36,34 @@ class CsvReader(TextReader):
         if self._width is not None and len(columns) != self._width:
             return why.WRONG_COLUMNS
         return [columns[p] if p < len(columns) else None for p in self._places]
+
+    def places(self, cut: Cut, rows: NDArray[np.int64]) -> Places | None:
+        marks = np.flatnonzero(cut.bytes_ == ord(self._delimiter))
+        first, count = _marks_of(cut, marks)
+        farthest = max(self._places)
+        fits = count == self._width - 1 if self._width is not None else count >= farthest
+        fits &= ~cut.lines_with(ord('"'))
+        rows = rows[fits[rows]]
+        first, count = first[rows], count[rows]
+        line_starts, line_ends = cut.starts[rows], cut.bare_ends()[rows]
+        marks = np.append(marks, 0)  # read, but not used, behind a line's last delimiter
+        starts, ends = [], []
+        for p in self._places:
+            starts.append(marks[first + p - 1] + 1 if p else line_starts)
+            ends.append(np.where(count > p, marks[np.minimum(first + p, marks.size - 1)], line_ends))
+        return Places(rows, starts, ends)
+
+
+def _marks_of(cut: Cut, marks: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """For each line the place of its first delimiter in `marks`, and how many it has."""
+    n = cut.ends.size
+    each, rest = divmod(marks.size, n)
+    if each and not rest:
+        table = marks.reshape(n, each)
+        if (table[:, 0] >= cut.starts).all() and (table[:, -1] < cut.ends).all():
+            return np.arange(n) * each, np.full(n, each)
+    first = np.searchsorted(marks, cut.starts)
+    return first, np.searchsorted(marks, cut.ends) - first
 
 
 def split(line: str, delimiter: str) -> list[str] | None:

@@ -5,10 +5,14 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 
+import numpy as np
+from numpy.typing import NDArray
+
 from monitor import rejects as why
+from monitor.parse.blocks import Cut
 from monitor.parse.lines import FormatError, LineFormat
 from monitor.parse.pattern_guard import LONGEST_LINE, Unsafe, check_pattern
-from monitor.parse.text_lines import TextReader, keyed_fields
+from monitor.parse.text_lines import Places, TextReader, keyed_fields
 
 _QUOTED = r'"((?:[^"\\]|\\.)*)"'
 _COMBINED = re.compile(
@@ -61,6 +65,33 @@ class PairsReader(TextReader):
         if not pairs:
             return why.NOT_PAIRS
         return [pairs.get(str(f)) for f in self.fields]
+
+    def places(self, cut: Cut, rows: NDArray[np.int64]) -> Places | None:
+        array = cut.bytes_
+        equals = np.flatnonzero(array == ord("="))
+        gaps = np.flatnonzero((array == 32) | (array == 9) | (array == 10))
+        line_ends = cut.bare_ends()
+        good = ~cut.lines_with(ord('"'))
+        starts, ends = [], []
+        for field in self.fields:
+            found = _after_key(array, equals, str(field).encode("utf-8"))
+            line = np.searchsorted(cut.ends, found)
+            start = np.zeros(cut.ends.size, np.int64)
+            start[line] = found + 1
+            good &= np.bincount(line, minlength=cut.ends.size) == 1
+            starts.append(start)
+            ends.append(np.minimum(gaps[np.searchsorted(gaps, start)], line_ends))
+        rows = rows[good[rows]]
+        return Places(rows, [s[rows] for s in starts], [e[rows] for e in ends])
+
+
+def _after_key(array: NDArray[np.uint8], equals: NDArray[np.int64], key: bytes) -> NDArray[np.int64]:
+    """The equals signs that stand behind a key which is a whole word."""
+    at = equals[equals >= len(key)]
+    for back, byte in enumerate(reversed(key), 1):
+        at = at[array[at - back] == byte]
+    before = array[np.maximum(at - len(key) - 1, 0)]
+    return np.asarray(at[(before == 32) | (before == 9) | (before == 10) | (at == len(key))], np.int64)
 
 
 _WORD = re.compile(r'([^ \t="]*)(?:(=)(?:"((?:[^"\\]|\\.)*)"|([^ \t"]*)))?(?:[ \t]+|\Z)', re.DOTALL)

@@ -15,6 +15,7 @@ from __future__ import annotations
 import re
 from collections.abc import Sequence
 from itertools import pairwise
+from operator import attrgetter
 from typing import Any
 
 import msgspec
@@ -143,12 +144,16 @@ class _Block:
         tail = cut.bytes_[np.maximum(cut.ends - 1, 0)]
         before = cut.bytes_[np.maximum(cut.ends - 2, 0)]
         last = np.where(tail == 13, before, tail)
+        self._records: list[Any] = []
+        self._rows: list[NDArray[np.int64]] = []
         self._framed = (cut.bytes_[cut.starts] == ord("{")) & (last == ord("}"))
 
     def read(self) -> None:
         n = self._cut.ends.size
         if n:
             self._run(0, n)
+        if self._records:
+            self._take(self._records, np.concatenate(self._rows))
 
     def _run(self, first: int, last: int) -> None:
         """Lines first..last-1 at once if they can be, else in eight smaller runs."""
@@ -163,7 +168,8 @@ class _Block:
             # Two objects on one line would make the count differ; one object on two lines cannot
             # be, since each line starts and ends as an object does.
             if len(records) == last - first:
-                self._take(records, np.arange(first, last))
+                self._records += records
+                self._rows.append(np.arange(first, last))
                 return
         if last - first <= _FEWEST:
             self._one_by_one(first, last)
@@ -173,18 +179,16 @@ class _Block:
                 self._run(a, b)
 
     def _one_by_one(self, first: int, last: int) -> None:
-        decode, records, rows = self._reader._decode_one, [], []
-        verdict = self._found.verdict
+        decode, verdict, rows = self._reader._decode_one, self._found.verdict, []
         for i in range(first, last):
             if verdict[i] != OK:
                 continue
             try:
-                records.append(decode(self._cut.line(i)))
+                self._records.append(decode(self._cut.line(i)))
                 rows.append(i)
             except (msgspec.DecodeError, UnicodeDecodeError, RecursionError):
                 self._hard(i)
-        if records:
-            self._take(records, np.array(rows))
+        self._rows.append(np.array(rows, np.int64))
 
     def _hard(self, i: int) -> None:
         found = self._found
@@ -207,14 +211,13 @@ class _Block:
             records, rows = self._meant(records, rows)
             if not records:
                 return
-        found.sizes[rows] = (
-            [_get(r, reader._size) for r in records] if len(reader._size) > 1 else _column(records, reader._size)
-        )
+        where: NDArray[np.int64] | slice = rows if len(records) < found.sizes.size else slice(None)
+        found.sizes[where] = _column(records, reader._size)
         if reader._time:
-            found.stamps[rows] = reader._stamps.values(_column(records, reader._time))
+            found.stamps[where] = reader._stamps.values(_column(records, reader._time))
         if reader._stream:
             columns = [_column(records, path) for path in reader._stream]
-            found.codes[rows] = self._codes(columns)
+            found.codes[where] = self._codes(columns)
 
     def _meant(self, records: list[Any], rows: NDArray[np.int64]) -> tuple[list[Any], NDArray[np.int64]]:
         """Only the records that meet the conditions and have all fields."""
@@ -246,7 +249,7 @@ class _Block:
             if any(empty):  # an empty part makes the whole name unusable, though the rest is not empty
                 texts = ["" if e else t for e, t in zip(empty, texts, strict=True)]
         codes = {text: names.code(text) for text in dict.fromkeys(texts)}
-        return [codes[text] for text in texts]
+        return list(map(codes.__getitem__, texts))
 
 
 def depth(line: bytes) -> int:
@@ -311,8 +314,7 @@ def _get(record: Any, path: tuple[str, ...]) -> Any:
 
 def _column(records: list[Any], path: tuple[str, ...]) -> list[Any]:
     for name in path:
-        attribute = _attribute(name)
-        records = [getattr(r, attribute) for r in records]
+        records = list(map(attrgetter(_attribute(name)), records))
     return records
 
 

@@ -12,8 +12,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 NS = 1_000_000_000
-_BEFORE_MONTH = np.array([0, 31, 59, 90, 120, 151, 181, 212, 243, 273, 304, 334])
-_IN_MONTH = np.array([31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31])
+_BEFORE = (0, 31, 59, 90, 120, 151, 181, 212, 243, 273, 304, 334)
+_LEAPS_BEFORE = 477  # leap days up to the end of 1969
 _MONTH_NAMES = np.frombuffer(b"JanFebMarAprMayJunJulAugSepOctNovDec", np.uint8).reshape(12, 3).astype(np.int64)
 _MONTH_KEYS = (_MONTH_NAMES[:, 0] << 16) | (_MONTH_NAMES[:, 1] << 8) | _MONTH_NAMES[:, 2]
 _MOST_LAYOUTS = 4
@@ -46,7 +46,16 @@ class _Layout:
 
 def days_since_1970(year: int, month: int, day: int) -> int:
     """Days from 1970-01-01 to a date of the Gregorian calendar."""
-    return int(_days(np.array([year]), np.array([month]), np.array([day]))[0])
+    before = year - 1
+    leaps = before // 4 - before // 100 + before // 400 - _LEAPS_BEFORE
+    leap = year % 4 == 0 and (year % 100 != 0 or year % 400 == 0)
+    return (year - 1970) * 365 + leaps + _BEFORE[month - 1] + (leap and month > 2) + day - 1
+
+
+def days_in(year: int, month: int) -> int:
+    """Days of a month of the Gregorian calendar."""
+    leap = year % 4 == 0 and (year % 100 != 0 or year % 400 == 0)
+    return 29 if month == 2 and leap else (31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31)[month - 1]
 
 
 def read_matrix(matrix: NDArray[np.uint8]) -> Found:
@@ -126,63 +135,80 @@ def _with_offset(row: bytes, at: int, base: _Layout) -> _Layout | None:
     )
 
 
-def _read(m: NDArray[np.uint8], layout: _Layout) -> Found:
-    good = np.ones(m.shape[0], bool)
+def _read(matrix: NDArray[np.uint8], layout: _Layout) -> Found:
+    columns = np.ascontiguousarray(matrix.T)  # whole columns are worked on
+    good = np.ones(matrix.shape[0], bool)
     for column, allowed in layout.marks:
-        mark = m[:, column] == allowed[0]
+        mark = columns[column] == allowed[0]
         for other in allowed[1:]:
-            mark |= m[:, column] == other
+            mark |= columns[column] == other
         good &= mark
-    year = _digits(m, layout.year, 4, good)
-    month = _month(m, layout.month, good) if layout.named_month else _digits(m, layout.month, 2, good)
-    day, hour = _digits(m, layout.day, 2, good), _digits(m, layout.hour, 2, good)
-    minute, second = _digits(m, layout.hour + 3, 2, good), _digits(m, layout.hour + 6, 2, good)
+    digits = columns - np.uint8(48)  # anything below '0' wraps to a large number
+    y, m, d, h = layout.year, layout.month, layout.day, layout.hour
+    pairs = [y, y + 2, d, h, h + 3, h + 6] + ([] if layout.named_month else [m])
+    good &= (digits[pairs] <= 9).all(axis=0) & (digits[[p + 1 for p in pairs]] <= 9).all(axis=0)
+    year = _pair(digits, y).astype(np.int64) * 100 + _pair(digits, y + 2)
+    month = _month(columns, m, good) if layout.named_month else _pair(digits, m)
+    hour, minute, second = _pair(digits, h), _pair(digits, h + 3), _pair(digits, h + 6)
     good &= (month >= 1) & (month <= 12) & (year >= 1969) & (year <= 2201)
-    month = np.where(good, month, 1)
-    leap = (year % 4 == 0) & ((year % 100 != 0) | (year % 400 == 0))
-    good &= (day >= 1) & (day <= _IN_MONTH[month - 1] + (leap & (month == 2)))
+    days = _days(year, month, _pair(digits, d), good)
     good &= (hour <= 23) & (minute <= 59) & (second <= 59)  # a second 60 is left to the one-by-one reader
-    seconds = _days(year, month, day) * 86400 + hour * 3600 + minute * 60 + second
+    seconds = days * 86400 + (hour.astype(np.int64) * 3600 + minute.astype(np.int64) * 60 + second)
     if layout.offset:
         sign, hours, minutes = layout.offset
-        ahead_h, ahead_m = _digits(m, hours, 2, good), _digits(m, minutes, 2, good)
+        good &= (digits[[hours, hours + 1, minutes, minutes + 1]] <= 9).all(axis=0)
+        ahead_h, ahead_m = _pair(digits, hours), _pair(digits, minutes)
         good &= (ahead_h <= 23) & (ahead_m <= 59)
-        seconds = seconds - (ahead_h * 3600 + ahead_m * 60) * np.where(m[:, sign] == ord("+"), 1, -1)
-    return Found(seconds, _fraction(m, layout.fraction, good), np.full(good.size, layout.local), good)
+        ahead = ahead_h.astype(np.int64) * 3600 + ahead_m.astype(np.int64) * 60
+        seconds = seconds - np.where(columns[sign] == ord("+"), ahead, -ahead)
+    return Found(seconds, _fraction(digits, layout.fraction, good), np.full(good.size, layout.local), good)
 
 
-def _fraction(m: NDArray[np.uint8], columns: tuple[int, int], good: NDArray[np.bool_]) -> NDArray[np.int64]:
+def _pair(digits: NDArray[np.uint8], column: int) -> NDArray[np.uint8]:
+    """Two columns as a number; what it is for rows that hold no digits does not matter."""
+    return np.asarray(digits[column] * np.uint8(10) + digits[column + 1], np.uint8)
+
+
+def _fraction(digits: NDArray[np.uint8], columns: tuple[int, int], good: NDArray[np.bool_]) -> NDArray[np.int64]:
     first, last = columns
     if first == last:
-        return np.zeros(m.shape[0], np.int64)
+        return np.zeros(digits.shape[1], np.int64)
+    good &= (digits[first:last] <= 9).all(axis=0)
     used = min(last - first, 9)
-    for column in range(first + used, last):
-        good &= (m[:, column] - np.uint8(48)) <= 9
-    return np.asarray(_digits(m, first, used, good) * 10 ** (9 - used), np.int64)
+    value = np.zeros(digits.shape[1], np.int64)
+    for column in range(first, first + used):
+        value = value * 10 + digits[column]
+    return np.asarray(value * 10 ** (9 - used), np.int64)
 
 
-def _digits(m: NDArray[np.uint8], start: int, count: int, good: NDArray[np.bool_]) -> NDArray[np.int64]:
-    """The number in `count` columns; rows with anything but digits become not good."""
-    value = np.zeros(m.shape[0], np.int64)
-    for column in range(start, start + count):
-        digit = m[:, column] - np.uint8(48)  # anything below '0' wraps to a large number
-        good &= digit <= 9
-        value = np.asarray(value * 10 + digit, np.int64)
-    return value
+def _distinct(keys: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Distinct keys and, for each row, the place of its key among them."""
+    if keys.size and keys.min() == keys.max():  # by far the most usual
+        return keys[:1], np.zeros(keys.size, np.int64)
+    distinct, where = np.unique(keys, return_inverse=True)
+    return distinct, where.reshape(-1)
 
 
-def _month(m: NDArray[np.uint8], start: int, good: NDArray[np.bool_]) -> NDArray[np.int64]:
-    wide = m[:, start : start + 3].astype(np.int64)
-    key = (wide[:, 0] << 16) | (wide[:, 1] << 8) | wide[:, 2]
-    hit = key[:, None] == _MONTH_KEYS[None, :]
-    good &= hit.any(axis=1)
-    return np.asarray(hit.argmax(axis=1) + 1, np.int64)
+def _month(columns: NDArray[np.uint8], start: int, good: NDArray[np.bool_]) -> NDArray[np.uint8]:
+    wide = columns[start : start + 3].astype(np.int64)
+    key = (wide[0] << 16) | (wide[1] << 8) | wide[2]
+    keys, where = _distinct(key)  # few months in a block
+    hit = keys[:, None] == _MONTH_KEYS[None, :]
+    good &= hit.any(axis=1)[where]
+    return np.asarray((hit.argmax(axis=1) + 1)[where], np.uint8)
 
 
-def _days(year: NDArray[np.int64], month: NDArray[np.int64], day: NDArray[np.int64]) -> NDArray[np.int64]:
-    """Days since 1970-01-01: whole years, their leap days (Gregorian rule), whole months, days."""
-    before = year - 1
-    leaps = before // 4 - before // 100 + before // 400 - 477  # 477 leap days up to the end of 1969
-    leap = (year % 4 == 0) & ((year % 100 != 0) | (year % 400 == 0))
-    in_year = _BEFORE_MONTH[month - 1] + (leap & (month > 2)) + day - 1
-    return np.asarray((year - 1970) * 365 + leaps + in_year, np.int64)
+def _days(
+    year: NDArray[np.int64], month: NDArray[np.uint8], day: NDArray[np.uint8], good: NDArray[np.bool_]
+) -> NDArray[np.int64]:
+    """Days since 1970-01-01; rows whose day is not in the calendar become not good."""
+    date = np.where(good, (year << 16) | (month.astype(np.int64) << 8) | day, (1970 << 16) | (1 << 8) | 1)
+    dates, where = _distinct(date)  # few days in a block
+    days = np.zeros(dates.size, np.int64)
+    there = np.ones(dates.size, bool)
+    for i, packed in enumerate(dates.tolist()):
+        y, m, d = packed >> 16, packed >> 8 & 255, packed & 255
+        there[i] = 1 <= d <= days_in(y, m)
+        days[i] = days_since_1970(y, m, d)
+    good &= there[where]
+    return np.asarray(days[where], np.int64)

@@ -24,7 +24,7 @@ from zoneinfo import ZoneInfo
 import numpy as np
 from numpy.typing import NDArray
 
-from monitor.parse.stamp_digits import NS, days_since_1970, read_matrix
+from monitor.parse.stamp_digits import NS, days_in, days_since_1970, read_matrix
 
 NO_STAMP = int(np.iinfo(np.int64).min)
 LAST = (days_since_1970(2201, 1, 1) * 86400) * NS  # the first moment that is too late
@@ -50,26 +50,30 @@ class StampReader:
 
     def __init__(self, timezone: str = "UTC", unit: str = "auto") -> None:
         self._zone = None if timezone == "UTC" else ZoneInfo(timezone)
-        self._unit = unit
+        self.unit = unit
         self._offsets: dict[int, int] = {}
 
     def texts(self, texts: Sequence[str]) -> NDArray[np.int64]:
         """Stamps as text -> int64 (n,), NO_STAMP where a text is no usable time."""
         if len(texts) < _FEWEST_FOR_ARRAYS:
             return np.fromiter((self.text(t) for t in texts), np.int64, len(texts))
+        if len(set(map(len, texts))) == 1:
+            return self._of_one_length(texts)
         out = np.full(len(texts), NO_STAMP, np.int64)
         lengths = np.fromiter(map(len, texts), np.int64, len(texts))
         for length in np.unique(lengths).tolist():
             rows = np.flatnonzero(lengths == length)
-            joined = "".join(texts if rows.size == len(texts) else [texts[i] for i in rows.tolist()])
-            if length < 16 or length > 40 or not joined.isascii():
-                todo = rows
-            else:
-                matrix = np.frombuffer(joined.encode("ascii"), np.uint8).reshape(rows.size, length)
-                out[rows], read = self.matrix(matrix)
-                todo = rows[~read]
-            for i in todo.tolist():
-                out[i] = self.text(texts[i])
+            out[rows] = self._of_one_length([texts[i] for i in rows.tolist()])
+        return out
+
+    def _of_one_length(self, texts: Sequence[str]) -> NDArray[np.int64]:
+        length, joined = len(texts[0]), "".join(texts)
+        if not 16 <= length <= 40 or not joined.isascii():
+            return np.fromiter((self.text(t) for t in texts), np.int64, len(texts))
+        matrix = np.frombuffer(joined.encode("ascii"), np.uint8).reshape(len(texts), length)
+        out, read = self.matrix(matrix)
+        for i in np.flatnonzero(~read).tolist():
+            out[i] = self.text(texts[i])
         return out
 
     def matrix(self, matrix: NDArray[np.uint8]) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
@@ -160,16 +164,16 @@ class StampReader:
 
     def _integer(self, value: int, nano: int) -> int:
         """An epoch number: integer part, and the fraction in thousand-millionths of its unit."""
-        factor = UNITS[self._unit] if self._unit != "auto" else _by_magnitude(value)
+        factor = UNITS[self.unit] if self.unit != "auto" else _by_magnitude(value)
         return _bounded(value * factor + nano * factor // NS)
 
     def _floats(self, values: NDArray[np.float64]) -> NDArray[np.int64]:
         good = (values >= 0) & (values < 1e19)
         held = np.where(good, values, 0.0)
-        if self._unit == "auto":
+        if self.unit == "auto":
             factor = np.select([held < 1e11, held < 1e14, held < 1e17], [1e6, 1e3, 1.0], 1e-3)
         else:
-            factor = np.full(held.size, UNITS[self._unit] / 1000)
+            factor = np.full(held.size, UNITS[self.unit] / 1000)
         micros = np.rint(held * factor)
         good &= micros < LAST / 1000
         return np.where(good, np.where(good, micros, 0.0).astype(np.int64) * 1000, NO_STAMP)
@@ -186,14 +190,9 @@ def _by_magnitude(value: int) -> int:
 def _seconds(year: int, month: int, day: int, hour: int, minute: int, second: int) -> int | None:
     if not 1 <= month <= 12 or hour > 23 or minute > 59 or second > 60 or (second == 60 and minute != 59):
         return None
-    if not 1 <= day <= _days_in(year, month) or not 1969 <= year <= 2201:
+    if not 1 <= day <= days_in(year, month) or not 1969 <= year <= 2201:
         return None
     return days_since_1970(year, month, day) * 86400 + hour * 3600 + minute * 60 + second
-
-
-def _days_in(year: int, month: int) -> int:
-    leap = year % 4 == 0 and (year % 100 != 0 or year % 400 == 0)
-    return 29 if month == 2 and leap else (31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31)[month - 1]
 
 
 def _bounded(stamp: int) -> int:

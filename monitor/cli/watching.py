@@ -45,6 +45,7 @@ class StoreWatch:
     def _forget(self) -> None:
         self._version: int | None = None
         self._next_read = 0.0
+        self._next_drawing = 0.0
         self._refits_at: tuple[int | None, int] | None = None
         self._refits: dict[str, tuple[Refit, ...]] = {}
         self._known: dict[tuple[str, int], Refit] = {}
@@ -164,7 +165,8 @@ class StoreWatch:
             return None
         key = f"{judged.id} {stream.baseline.id if stream.baseline else ''}"
         held = self._drawings.get(stream.name)
-        if held is None or held[0] != key:
+        started = time.monotonic()
+        if held is None or (held[0] != key and started >= self._next_drawing):
             content = reader.window(stream.name, judged.start, judged.end, seen.plan.window_distinct).content
             drawing = TailDrawing(
                 sizes=np.asarray(content.sizes),
@@ -176,6 +178,8 @@ class StoreWatch:
             )
             # One at a time: the sizes of many large windows would be held for nothing.
             self._drawings = {stream.name: (key, drawing)}
+            now = time.monotonic()
+            self._next_drawing = now + REST * (now - started)
         return self._drawings[stream.name][1]
 
 

@@ -26,7 +26,7 @@ Floats = NDArray[np.float64]
 _DOTS = ((0x01, 0x08), (0x02, 0x10), (0x04, 0x20), (0x40, 0x80))
 _ASCII_DATA = "#"
 FIT_MARK, BASELINE_MARK, LIMIT_MARK = "+", "b", "|"
-LEFT = 11
+LEFT = 12
 """Cells left of the drawing, for the shares."""
 LEAST_WIDTH, LEAST_HEIGHT = LEFT + 16, 5
 
@@ -205,7 +205,7 @@ STRIP_LETTERS: tuple[tuple[str, str], ...] = (
     ("=", "as the baseline"),
     ("H", "heavier"),
     ("L", "lighter"),
-    ("M", "misfit (power law ruled out)"),
+    ("M", "misfit (power law doubtful or ruled out)"),
     (".", "no tail"),
     ("x", "failed"),
     ("-", "skipped"),

@@ -10,7 +10,7 @@ from monitor.render.planned import baseline_level
 from monitor.render.safe import plain
 from monitor.render.seen import FeedAccount, Refit, Seen, StreamSeen
 from monitor.render.times import utc_text
-from monitor.render.words.findings import feed_findings, findings, flag_words
+from monitor.render.words.findings import feed_findings, findings, flags_in_words
 from monitor.tail.judgement import as_document
 from storage.facts import BaselineSet
 
@@ -35,8 +35,10 @@ def refit_document(refit: Refit, unit: str, baseline: BaselineSet | None) -> dic
         "version": _version(refit.versions),
         "baseline": _against_document(refit, baseline),
         "flags": [
-            {**msgspec.to_builtins(flag), "words": flag_words(flag, None if baseline is None else baseline.source)}
-            for flag in refit.flags
+            {**msgspec.to_builtins(flag), "words": words}
+            for flag, words in zip(
+                refit.flags, flags_in_words(refit, None if baseline is None else baseline.source), strict=True
+            )
         ],
     }
 
@@ -117,7 +119,7 @@ def _stream_document(stream: StreamSeen, zone: str, now: int) -> dict[str, Any]:
                 "id": refit.id, "at": utc_text(refit.end), "state": refit.state,
                 "alpha": None if refit.judgement is None else refit.judgement.alpha,
                 "p": None if refit.judgement is None or refit.judgement.gof is None else refit.judgement.gof.p,
-                "flags": [flag_words(flag, None if base is None else base.source) for flag in refit.flags],
+                "flags": flags_in_words(refit, None if base is None else base.source),
             }
             for refit in stream.refits
         ],

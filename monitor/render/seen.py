@@ -34,6 +34,11 @@ class Refit(msgspec.Struct, frozen=True, kw_only=True):
         return next((flag for flag in self.flags if flag.rule == "exponent"), None)
 
     @property
+    def doubtful(self) -> bool:
+        """Whether p lies too near the mark to settle if a power law fits."""
+        return self.judgement is not None and self.judgement.gof is not None and self.judgement.gof.doubtful
+
+    @property
     def fit_flag(self) -> Flag | None:
         """The finding that a power law is ruled out, if there is one."""
         return next((flag for flag in self.flags if flag.rule == "fit"), None)

@@ -32,7 +32,9 @@ class Sorted(msgspec.Struct, frozen=True, kw_only=True):
 def state_word(one: Sorted) -> str:
     """The state of a stream in one word or two."""
     if one.findings:
-        return {"fit": "misfit"}.get(one.findings[0].kind, one.findings[0].kind)
+        kind = one.findings[0].kind
+        misfit = "doubtful" if one.stream.judged is not None and one.stream.judged.doubtful else "misfit"
+        return misfit if kind == "fit" else kind
     judged = one.stream.judgement
     if one.stream.latest is None:
         return "new"

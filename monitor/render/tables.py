@@ -14,7 +14,7 @@ from monitor.render.safe import padded, plain, shorten, width_of
 from monitor.render.seen import Refit
 from monitor.render.times import local, table_time, utc_text, zone_name
 from monitor.render.words.common import fit_word
-from monitor.render.words.findings import flag_words
+from monitor.render.words.findings import flags_in_words
 from monitor.tail.judgement import Judgement
 from storage.facts import BaselineSet
 
@@ -84,7 +84,7 @@ def result_words(row: RefitRow) -> str:
     if refit.judgement is None or refit.judgement.alpha is None:
         return plain(f"no tail: {(refit.judgement.reason if refit.judgement else None) or 'no reason stored'}")
     if refit.flags:
-        return ", ".join(flag_words(flag, source) for flag in refit.flags)
+        return ", ".join(flags_in_words(refit, source))
     if refit.against is None or refit.against.p is None:
         return "nothing to compare with"
     return "as planned" if source == "plan" else "as baseline"
@@ -202,7 +202,7 @@ def _csv_row(row: RefitRow, levels: Sequence[int]) -> list[object]:
     values += _csv_judgement(judgement, levels)
     values += [None] * 3 if base is None else [base.source, base.alpha, base.xmin]
     values += [None] * 3 if against is None else [against.alpha_later, against.p, against.direction]
-    flags = "; ".join(flag_words(flag, None if base is None else base.source) for flag in refit.flags)
+    flags = "; ".join(flags_in_words(refit, None if base is None else base.source))
     return [*values, flags, result_words(row)]
 
 

@@ -72,15 +72,15 @@ One event in 10 000 passes 13 000 units (10 000 to 16 000), planned 5 200,
   limit 6 000.
   (6 more lines in a taller terminal)
 Share of events at or above a size: # data, + fit, b baseline, | limit
-       all ###################                                    limit 6 000 |
-                             #######                                          |
-   1 in 10                         ###                                        |
+        all ###################                                   limit 6 000 |
+                              #######                                         |
+    1 in 10                         ##                                        |
                                      #########                                |
-  1 in 100                                  b########+++                      |
-1 in 1 000                                          ########+++++++           |
+   1 in 100                                 b########+++                      |
+ 1 in 1 000                                         ########+++++++           |
                                                            ###bbbbb+++++++++++|
-           +-----------------------+-----------------------+--------------------
-     units 10                     100                    1 000
+            +-----------------------+----------------------+--------------------
+      units 10                     100                   1 000
 window end (WET)  alpha  95 %          p   1 in 10 000  result
 2026-12-01 13:00   2.21  2.15-2.27  0.31  13 000 units  heavier than planned
 2026-12-01 14:00   2.21  2.15-2.27  0.31  13 000 units  heavier than planned

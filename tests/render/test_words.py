@@ -11,6 +11,7 @@ from monitor.render.words import (
     CAUTION,
     findings,
     fit_sentences,
+    flags_in_words,
     limit_words,
     moments_words,
     p_words,
@@ -27,6 +28,7 @@ from tests.stores import (
     HOUR,
     LAST_PANE,
     LIGHTER,
+    MISFIT,
     NOW,
     PASSED,
     SETTINGS,
@@ -219,3 +221,11 @@ def test_accounts_of_a_feed() -> None:
     account = FeedAccount(feed="f", chains=1, idle=0, lines=1, events=0, late=0, skipped={}, rejected={"not JSON": 1})
     assert rejected_words(account) == "1 of 1 line (100 %) rejected: 1 not JSON"
     assert rejected_words(msgspec.structs.replace(account, rejected={})) == "no line rejected of 1"
+
+
+def test_a_doubtful_fit_is_not_called_ruled_out() -> None:
+    near = judged(2.5, 0.06, gof(0.083, 0.064, 0.106, doubtful=True))
+    stored = refit("dock", LAST_PANE, near, flags=MISFIT, against=against(2.5, 2.49, 0.7))
+    found = findings(seen([stored], plan=True), ZONE, NOW)
+    assert found[0].headline == "it is doubtful whether a power law describes the tail, since the refit of 14:00 WET"
+    assert flags_in_words(decode_refit(stored), "plan") == ["power law in doubt"]

@@ -21,6 +21,7 @@ from monitor.render.words.findings import (
     feed_findings,
     findings,
     flag_words,
+    flags_in_words,
     level_against,
     level_line,
     quiet_words,
@@ -29,7 +30,8 @@ from monitor.render.words.findings import (
 from monitor.render.words.fit import fit_sentences, no_tail_words, rival_words, verdict_words
 
 __all__ = [
-    "CAUTION", "Finding", "beyond_words", "feed_findings", "findings", "fit_sentences", "fit_word", "flag_words",
+    "CAUTION", "Finding", "beyond_words", "feed_findings", "findings", "fit_sentences", "fit_word",
+    "flag_words", "flags_in_words",
     "level_against", "level_line", "level_words", "limit_words", "moments_words", "no_tail_words", "p_text",
     "p_words", "quiet_words", "rejected_words", "rival_words", "size_with_unit", "times_in", "verdict_words",
 ]  # fmt: skip

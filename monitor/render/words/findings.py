@@ -55,11 +55,16 @@ def than_baseline(source: str | None) -> str:
     return "than planned" if source == "plan" else "than its baseline"
 
 
-def flag_words(flag: Flag, source: str | None) -> str:
-    """A finding in a few words, for tables."""
+def flag_words(flag: Flag, source: str | None, *, doubtful: bool = False) -> str:
+    """A finding in a few words, for tables. doubtful: p's interval holds the mark, so that it is not settled."""
     if flag.rule == "fit":
-        return "power law ruled out"
+        return "power law in doubt" if doubtful else "power law ruled out"
     return f"{flag.direction or 'different'} {than_baseline(source)}"
+
+
+def flags_in_words(refit: Refit, source: str | None) -> list[str]:
+    """All findings of a refit in a few words each."""
+    return [flag_words(flag, source, doubtful=refit.doubtful) for flag in refit.flags]
 
 
 def since_when(refits: Iterable[Refit], holds: Callable[[Refit], bool], zone: str, now: int) -> str:
@@ -181,7 +186,8 @@ def _fit_finding(stream: StreamSeen, refit: Refit, zone: str, now: int) -> Findi
         detail.append(f"Better described by: {', '.join(better)}. Sizes read off the power law are in doubt.")
     else:
         detail.append("No rival describes it clearly better. Sizes read off the power law are in doubt.")
-    return Finding(kind="fit", headline=f"a power law does not describe the tail, {since}", detail=tuple(detail))
+    verb = "it is doubtful whether a power law describes" if refit.doubtful else "a power law does not describe"
+    return Finding(kind="fit", headline=f"{verb} the tail, {since}", detail=tuple(detail))
 
 
 def _limit_finding(stream: StreamSeen) -> list[Finding]:

@@ -99,6 +99,32 @@ class Advance(Fact, frozen=True, kw_only=True):
     known_at: int
 
 
+class Forget(Fact, frozen=True, kw_only=True):
+    """Orders the store to delete what has grown too old; None keeps that kind for good.
+
+    Refits whose window ends at or before refits_before go, but for those that a baseline comes from; then
+    panes that end at or before panes_before, but for those that a kept refit reads.
+    """
+
+    stream: str
+    panes_before: int | None
+    refits_before: int | None
+    known_at: int
+
+
+class Forgotten(Fact, frozen=True, kw_only=True):
+    """What was deleted: the range, how much, and a digest over the digests of the panes."""
+
+    stream: str
+    start: int
+    end: int
+    panes: int
+    events: int
+    refits: int
+    digest: str
+    known_at: int
+
+
 RefitState = Literal["done", "failed", "skipped"]
 
 

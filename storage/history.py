@@ -16,7 +16,7 @@ import msgspec
 from sqlite_utils import Database
 
 from storage.errors import StoreCorrupt
-from storage.facts import BaselineSet, ChainState, RefitJob, RefitStored, RejectedSample, StreamState
+from storage.facts import BaselineSet, ChainState, Forgotten, RefitJob, RefitStored, RejectedSample, StreamState
 from storage.pane import Pane, add, decode
 from storage.store import check_file, named_errors
 from storage.window import Window, sum_window
@@ -193,6 +193,13 @@ class Reader:
         distinct = int(self.meta()["distinct"])
         rows = self._rows("select content from pane_part where stream = ? and from_ns = ?", stream, start)
         return add((decode(row["content"]) for row in rows), distinct)
+
+    def forgotten(self) -> list[Forgotten]:
+        """What was deleted because it had grown too old, in order."""
+        return [
+            Forgotten(**{**_without(row, "id", "from_ns", "to_ns"), "start": row["from_ns"], "end": row["to_ns"]})
+            for row in self._rows("select * from forgotten order by id")
+        ]
 
     def refit_jobs(self) -> list[RefitJob]:
         """Windows still waiting to be judged, in window order."""

@@ -63,6 +63,10 @@ def m001_first_tables(db: Database) -> None:
             panes_to integer not null, effective_from integer not null, known_at integer not null,
             by text, note text) strict""",
         "create index baseline_of on baseline (stream, effective_from)",
+        """create table forgotten (
+            id integer primary key, stream text not null, from_ns integer not null, to_ns integer not null,
+            panes integer not null, events integer not null, refits integer not null, digest text not null,
+            known_at integer not null) strict""",
         f"""create view refits_readable as select
             stream, {_time("from_ns")} as window_from_utc, {_time("to_ns")} as window_to_utc, state,
             json_extract(judgement, '$.n') as events, json_extract(judgement, '$.alpha') as alpha,

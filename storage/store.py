@@ -34,6 +34,7 @@ from storage.facts import (
     BaselineSet,
     ChainState,
     Fact,
+    Forget,
     PanePart,
     PaneSealed,
     RefitRetried,
@@ -44,6 +45,7 @@ from storage.facts import (
 )
 from storage.grid import CELLS_PER_DECADE
 from storage.schema import APPLICATION_ID, VERSION, migrations
+from storage.window import digest_of_panes
 
 PARTS_BEFORE_COMPACTION = 64
 SAMPLES_KEPT = 20
@@ -181,6 +183,7 @@ class Store:
             (RefitStored, self._put_refits),
             (RefitRetried, self._put_retries),
             (BaselineSet, self._put_baselines),
+            (Forget, self._forget),
         )
 
     def _put_settings(self, facts: list[SettingsTaken]) -> None:
@@ -293,6 +296,51 @@ class Store:
             if fact.plausible is not None:
                 row["plausible"] = int(fact.plausible)
             self.db["baseline"].insert(row, replace=True)
+
+    def _forget(self, facts: list[Forget]) -> None:
+        for fact in facts:
+            refits, panes_gone = self._forget_refits(fact), self._forget_panes(fact)
+            if refits or panes_gone:
+                gone = {
+                    "stream": fact.stream, "from_ns": min((row[0] for row in panes_gone), default=0),
+                    "to_ns": max((row[1] for row in panes_gone), default=0), "panes": len(panes_gone),
+                    "events": sum(row[2] for row in panes_gone), "refits": refits,
+                    "digest": digest_of_panes(row[3] for row in panes_gone), "known_at": fact.known_at,
+                }  # fmt: skip
+                self.db["forgotten"].insert(gone)
+
+    def _forget_refits(self, fact: Forget) -> int:
+        if fact.refits_before is None:
+            return 0
+        deleted = self.db.execute(
+            "delete from refit where stream = ? and to_ns <= ?"
+            " and id not in (select refit from baseline where refit is not null)",
+            [fact.stream, fact.refits_before],
+        )
+        return int(deleted.rowcount)
+
+    def _forget_panes(self, fact: Forget) -> list[tuple[int, int, int, str]]:
+        """Returns (from, to, events, digest) of each pane deleted."""
+        if fact.panes_before is None:
+            return []
+        unread = (
+            "stream = ?1 and to_ns <= ?2"
+            " and not exists (select 1 from refit where refit.stream = pane.stream"
+            "   and refit.from_ns <= pane.from_ns and refit.to_ns >= pane.to_ns)"
+            " and not exists (select 1 from refit_job where refit_job.stream = pane.stream"
+            "   and refit_job.from_ns <= pane.from_ns and refit_job.to_ns >= pane.to_ns)"
+        )
+        arguments = [fact.stream, fact.panes_before]
+        rows: list[tuple[int, int, int, str]] = self.db.execute(
+            f"select from_ns, to_ns, events, digest from pane where {unread} order by from_ns", arguments
+        ).fetchall()
+        self.db.execute(f"delete from pane where {unread}", arguments)
+        return rows
+
+    def give_back_space(self, pages: int) -> None:
+        """Return up to `pages` free pages to the file system; a little at a time, so that nothing waits for it."""
+        with named_errors(self.path):
+            self.db.executescript(f"pragma incremental_vacuum({int(pages)});")
 
 
 def canonical_json(value: object) -> str:

@@ -26,8 +26,13 @@ class Window:
     digest: str
 
 
+def digest_of_panes(digests: Iterable[str]) -> str:
+    """The name of a window: BLAKE2b (16 bytes, hex) over the digests of its panes in time order."""
+    return blake2b("\n".join(digests).encode(), digest_size=16).hexdigest()
+
+
 def sum_window(start: int, end: int, panes: Iterable[tuple[str, Pane]], window_distinct: int) -> Window:
     """Sum panes given as (digest, content) in time order; see Window."""
     listed = list(panes)
-    name = blake2b("\n".join(digest for digest, _ in listed).encode(), digest_size=16).hexdigest()
+    name = digest_of_panes(digest for digest, _ in listed)
     return Window(start, end, len(listed), add((pane for _, pane in listed), window_distinct), name)

@@ -21,6 +21,7 @@ COMMANDS = {
     "run": "monitor.cli.run:run",
     "screen": "monitor.cli.screen:screen",
     "history": "monitor.cli.history:history",
+    "check": "monitor.cli.check:check_command",
 }
 INTERRUPTED = 130
 INTERNAL = 70

@@ -109,6 +109,8 @@ class State:
     """Stream name -> feed, for feeds that are one stream."""
     wide: FeedSet = frozenset()
     """Feeds whose lines name their stream: they may carry any."""
+    forgotten: dict[str, int] = field(default_factory=dict)
+    """Stream -> the day (ns) up to which old panes and refits were last asked to be deleted."""
     uncommitted: int = 0
     """Events taken in since the last commit."""
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from monitor.engine import intake, refits, sealing
+from monitor.engine import intake, refits, retention, sealing
 from monitor.engine.state import State
 from monitor.engine.stimuli import Arrived, ChainSeen, CommitDue, Ended, Judged, Stimulus
 from storage.facts import Fact, PaneSealed
@@ -32,7 +32,9 @@ def _commit_due(state: State, now: int) -> list[Fact]:
     sealing.rest_idle_chains(state, now)
     facts = sealing.advance(state, now)
     facts += sealing.drain(state, now)
-    for stream in {fact.stream: None for fact in facts if isinstance(fact, PaneSealed)}:
+    sealed = [fact for fact in facts if isinstance(fact, PaneSealed)]
+    facts += retention.forget_old(state, sealed, now)
+    for stream in {fact.stream: None for fact in sealed}:
         baseline = refits.planned_baseline(state, stream, now)
         if baseline is not None:
             state.baselines[stream] = baseline

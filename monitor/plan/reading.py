@@ -70,6 +70,9 @@ class WatchTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_onl
     distinct: int = 4096
     window_distinct: int = 200_000
     seed: int = 1
+    keep_panes: str | None = None
+    keep_refits: str | None = None
+    max_streams: int = 10_000
 
 
 class PlannedTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
@@ -164,6 +167,7 @@ def _plan(name: str, table: SettingsTable, text: str) -> Plan:
     in_range(name, "watch.distinct", watch.distinct, low=16, high=1_000_000)
     in_range(name, "watch.window_distinct", watch.window_distinct, low=watch.distinct, high=10_000_000)
     in_range(name, "watch.seed", watch.seed, low=0, high=2**53 - 1)
+    in_range(name, "watch.max_streams", watch.max_streams, low=1, high=1_000_000)
     everywhere = _everywhere(name, watch, pane)
     overrides = sorted(
         ((pattern, _changes(name, pattern, given, pane)) for pattern, given in table.stream.items()),
@@ -183,11 +187,19 @@ def _plan(name: str, table: SettingsTable, text: str) -> Plan:
         timezone=zone,
         everywhere=everywhere,
         overrides=tuple(overrides),
+        keep_panes=_kept(name, "watch.keep_panes", watch.keep_panes),
+        keep_refits=_kept(name, "watch.keep_refits", watch.keep_refits),
+        max_streams=watch.max_streams,
         known=_known(name, table.known, zone),
         not_yet=_not_yet(table),
         text=text,
         digest=blake2b(text.encode(), digest_size=16).hexdigest(),
     )
+
+
+def _kept(name: str, path: str, text: str | None) -> int | None:
+    """How long something is kept; None: for good."""
+    return None if text is None else span(name, path, text, low=DAY)
 
 
 def _pane_and_slot(name: str, watch: WatchTable) -> tuple[int, int]:

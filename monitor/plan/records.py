@@ -86,6 +86,11 @@ class Plan(msgspec.Struct, frozen=True, kw_only=True):
     everywhere: StreamPlan
     overrides: tuple[tuple[str, dict[str, object]], ...]
     """(pattern, changed fields of StreamPlan), longest pattern last, so that the longest match wins."""
+    keep_panes: int | None
+    keep_refits: int | None
+    """How long panes and refits are kept, by their end; None: for good."""
+    max_streams: int
+    """Lines that would open one more stream are rejected."""
     known: tuple[KnownChange, ...]
     not_yet: tuple[str, ...]
     """Keys that are read and checked, but that this version does not act on."""

@@ -35,6 +35,8 @@ differs_at = 0.01                      # level of the test against the baseline,
 one_in = 10000                         # tell the size passed once in so many events
 # limit = 6000                         # the size that must not be passed more often than
 # limit_at_most = "1 per 30d"
+# keep_panes = "800d"                  # older panes are deleted, once no kept refit reads them; else kept for good
+# keep_refits = "2000d"                # older refits are deleted; else kept for good
 timezone = "UTC"                       # for reading stamps without a zone, and for what people see
 
 # [stream."north-dock".plan]           # what was planned on, if it is known: compared from the first window on

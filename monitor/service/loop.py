@@ -11,13 +11,15 @@ from monitor.service.feeds import OpenFeed
 from monitor.service.log import Log
 from monitor.service.worker import Worker
 from storage.errors import StoreError
-from storage.facts import BaselineSet, Fact, RefitStored
+from storage.facts import BaselineSet, Fact, Forget, RefitStored
 from storage.store import Store
 
 BLOCK = 4 << 20
 """Bytes taken from a feed in one turn."""
 COMMIT_EVENTS = 50_000
 COMMIT_SECONDS = 1.0
+PAGES_GIVEN_BACK = 2000
+"""Free pages returned to the file system after a deletion; what is left is returned after the next."""
 FIRST_RETRY, LAST_RETRY = 1.0, 60.0
 """Seconds between tries of a commit that failed, doubling."""
 
@@ -89,6 +91,8 @@ class Loop:
         committed(self.state, facts)
         for fact in facts:
             self._tell(fact)
+        if any(isinstance(fact, Forget) for fact in facts):
+            self.store.give_back_space(PAGES_GIVEN_BACK)
         return True
 
     def _poll_worker(self) -> None:

@@ -11,9 +11,18 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from storage.audit import canonical_lines
+from storage.audit import canonical_lines, check
 from storage.errors import StoreBusy, StoreCorrupt, StoreError, StoreForeign, StoreFull, StoreMissing, StoreNewer
-from storage.facts import ChainState, Fact, PanePart, PaneSealed, RejectedSample, StreamState
+from storage.facts import (
+    ChainState,
+    Fact,
+    Forget,
+    PanePart,
+    PaneSealed,
+    RefitStored,
+    RejectedSample,
+    StreamState,
+)
 from storage.history import open_reader
 from storage.pane import PaneBuilder, digest
 from storage.schema import VERSION
@@ -261,3 +270,43 @@ def test_a_reader_sees_one_state_in_a_snapshot_while_the_writer_goes_on(store: S
 )
 def test_errors_carry_the_exit_codes_of_the_contract(kind: type[StoreError], code: int) -> None:
     assert kind.exit_code == code
+
+
+def test_old_panes_and_refits_go_but_not_what_a_kept_refit_reads(path: Path) -> None:
+    def refit(start: int, end: int) -> RefitStored:
+        return RefitStored(
+            id=f"{start}-{end}", stream="a", start=start, end=end, state="done", panes=1, window_digest="",
+            settings="s", seed=1, judgement="null", comparison=None, flags="[]", reason=None, attempts=1,
+            seconds=0.0, versions="{}", known_at=1,
+        )  # fmt: skip
+
+    with opened(path) as store:
+        for minute in range(6):
+            start = 60 * minute
+            builder = PaneBuilder()
+            builder.add(np.array([1.0, 2.0]), np.array([start, start]), 0, lambda i: ("00" * 8, "here"))
+            store.commit(
+                [
+                    PanePart(stream="a", start=start, end=start + 60, content=builder.build(DISTINCT)),
+                    PaneSealed(stream="a", start=start, end=start + 60, window_start=start, settings="s", known_at=1),
+                    StreamState(stream="a", feed="f", unit="u", first=0, newest=start, events=2 * minute + 2, late=0),
+                    refit(start, start + 60),
+                ]
+            )
+        store.commit([refit(60, 180)])
+        store.commit([Forget(stream="a", panes_before=240, refits_before=120, known_at=1)])
+        store.give_back_space(100)
+    with open_reader(path) as reader:
+        assert sorted((kept.start, kept.end) for kept in reader.refits()) == [
+            (60, 180),
+            (120, 180),
+            (180, 240),
+            (240, 300),
+            (300, 360),
+        ]
+        assert [pane.start for pane in reader.panes()] == [60, 120, 180, 240, 300]
+        (gone,) = reader.forgotten()
+        assert (gone.start, gone.end, gone.panes, gone.events, gone.refits) == (0, 60, 1, 2, 2)
+        assert [f.faults for f in check(reader) if f.what == "events of streams"] == [
+            ("0 events read, 12 counted in streams",)
+        ]

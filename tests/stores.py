@@ -51,7 +51,7 @@ def gof(p: float, low: float, high: float, *, replicates: int = 2500, doubtful: 
 def judged(
     alpha: float, half: float, fit: GoodnessOfFit, *, xmin: float = 120.0, n: int = 81_050, n_tail: int = 2_310,
     rivals: tuple[Rival, ...] = (), limit: Limit | None = None,
-    beyond: float | None = 2.1,
+    beyond: float | None = 2.1, by_rival: dict[str, object] | None = None,
 ) -> Judgement:  # fmt: skip
     """A judgement with a usable tail; its level follows from alpha, its interval from that of alpha."""
 
@@ -63,7 +63,7 @@ def judged(
         alpha_interval=(alpha - half, alpha + half), xmin=xmin, n_tail=n_tail, ks_distance=0.0123, gof=fit,
         near_minimum=NearMinimum(xmin=(96.0, 140.0), alpha=(alpha - 0.02, alpha + 0.03)), rivals=rivals,
         levels=(Level(one_in=10_000, size=passed(alpha), interval=(passed(alpha + half), passed(alpha - half)),
-                      beyond_data=beyond),),
+                      beyond_data=beyond, by_rival=by_rival),),
         mean_finite=True, variance_finite=False, smallest_size=1.0, largest_size=4_400.0, limit=limit,
     )  # fmt: skip
 
@@ -154,7 +154,13 @@ def east_dock() -> list[Fact]:
         Rival(tail="lognormal", log_likelihood_ratio=-0.4, z=-0.5, p=0.62, favours="neither"),
         Rival(tail="power law with cut-off", log_likelihood_ratio=-9.1, z=None, p=0.00002, favours="rival"),
     )
-    cut = judged(2.7, 0.08, gof(0.002, 0.0004, 0.006), rivals=rivals)
+    cut = judged(
+        2.7,
+        0.08,
+        gof(0.002, 0.0004, 0.006),
+        rivals=rivals,
+        by_rival={"tail": "power law with cut-off", "size": 1_432.0},
+    )
     calm = judged(2.46, 0.06, gof(0.5, 0.46, 0.54))
     ends = [LAST_PANE - k * HOUR for k in range(11, -1, -1)]
     return [

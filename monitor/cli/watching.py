@@ -11,6 +11,7 @@ import time
 from collections import Counter
 from pathlib import Path
 from types import TracebackType
+from typing import Any
 
 import numpy as np
 
@@ -25,6 +26,7 @@ from monitor.render.stream_rows import STRIP
 from storage.errors import StoreError
 from storage.facts import BaselineSet, StreamState
 from storage.history import Reader
+from storage.store import named_errors
 
 REST = 40.0
 """Rest after each read, in times what it took: reading takes at most 1/40 of a core, however large the store."""
@@ -46,7 +48,7 @@ class StoreWatch:
         self._version: int | None = None
         self._next_read = 0.0
         self._next_drawing = 0.0
-        self._refits_at: tuple[int | None, int] | None = None
+        self._refits_at: tuple[Any, ...] | None = None
         self._refits: dict[str, tuple[Refit, ...]] = {}
         self._known: dict[tuple[str, int], Refit] = {}
         self._plan: Plan | None = None
@@ -84,7 +86,7 @@ class StoreWatch:
         """
         try:
             reader = self._open()
-            version = reader.db.execute("pragma data_version").fetchone()[0]
+            version = _row(reader, "pragma data_version")[0]
             started = time.monotonic()
             if self._seen is None or (version != self._version and started >= self._next_read):
                 with reader.snapshot():
@@ -129,7 +131,7 @@ class StoreWatch:
         return self._plan
 
     def _last_refits(self, reader: Reader) -> dict[str, tuple[Refit, ...]]:
-        at = reader.db.execute("select max(rowid), count(*) from refit").fetchone()
+        at = _row(reader, "select max(rowid), count(*) from refit")
         if at != self._refits_at:
             found: dict[str, list[Refit]] = {}
             known = {}
@@ -181,6 +183,13 @@ class StoreWatch:
             now = time.monotonic()
             self._next_drawing = now + REST * (now - started)
         return self._drawings[stream.name][1]
+
+
+def _row(reader: Reader, sql: str) -> tuple[Any, ...]:
+    """One row, SQLite's errors named."""
+    with named_errors(reader.path):
+        row: tuple[Any, ...] = reader.db.execute(sql).fetchone()
+    return row
 
 
 def _in_force(baselines: list[BaselineSet]) -> dict[str, BaselineSet]:

@@ -120,7 +120,7 @@ def history_table(rows: Sequence[RefitRow], zone: str, width: int, *, one_stream
         Column(title=_level_title(found), cells=tuple(_level(row) for row in rows), right=True, need=2),
         Column(title="baseline", cells=tuple(_baseline(row) for row in rows), need=8),
         Column(title="id", cells=tuple(plain(row.refit.id) for row in rows), need=9),
-        Column(title="result", cells=tuple(result_words(row) for row in rows), shrinks_to=22),
+        Column(title="result", cells=tuple(result_words(row) for row in rows), shrinks_to=48),
     ]  # fmt: skip
     if one_stream:
         columns = [column for column in columns if column.title not in ("stream", "id")]

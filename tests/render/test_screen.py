@@ -29,7 +29,8 @@ north-dock: tail heavier than planned since 12:00 WET, 3 refits in a row; one
 north-dock: limit 6 000 units expected to be passed 2.1 times in 30 days
   (tolerable: 1).
 east-dock: a power law does not describe the tail, since 13:00 WET, 2 refits
-  in a row.
+  in a row; by the power law with cut-off one event in 10 000 passes 1 400
+  units, not 3 300.
 
   stream          state    alpha  95 %       base      p   level  newest  last 6
   north-dock      heavier   2.21  2.15-2.27  2.50   0.31  13 000    12 s  ===HHH
@@ -38,7 +39,6 @@ east-dock: a power law does not describe the tail, since 13:00 WET, 2 refits
 > south-dock      steady    2.48  2.42-2.54  2.45   0.62   5 500     4 s  ======
   west-dock       new      not judged yet: 312 events so far
   倉庫-十番       steady    2.51  2.45-2.57  2.50   0.62   5 000     7 s  =====
-
 
 
 

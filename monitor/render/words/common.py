@@ -5,7 +5,17 @@ from __future__ import annotations
 from math import ceil, floor, log1p, log10
 
 from monitor.plan.spans import parse_span
-from monitor.render.numbers import at_place, bounds_text, count_text, estimate, grouped, percent, size_text, with_bounds
+from monitor.render.numbers import (
+    at_place,
+    bounds_text,
+    count_text,
+    estimate,
+    grouped,
+    percent,
+    place_of,
+    size_text,
+    with_bounds,
+)
 from monitor.render.safe import plain
 from monitor.render.times import span_words
 from monitor.tail.judgement import GoodnessOfFit, Level, Limit
@@ -98,6 +108,21 @@ def level_words(level: Level, unit: str) -> str:
     if level.interval == (None, None):
         return text
     return f"{text} ({bounds_text(level.size, level.interval)})"
+
+
+def second_opinion(level: Level, unit: str) -> tuple[str, str] | None:
+    """The rival that describes the tail better and the size it gives: ('lognormal', '85 units'); None without one."""
+    size = level.by_rival.get("size") if level.by_rival else None
+    if level.by_rival is None or level.size is None or not isinstance(size, int | float) or size <= 0:
+        return None
+    place = min(place_of(level.size, level.interval), place_of(float(size), None) + 1)
+    return plain(str(level.by_rival.get("tail", "rival"))), f"{at_place(float(size), place)} {plain(unit)}".rstrip()
+
+
+def by_rival_words(level: Level, unit: str) -> str:
+    """'by the lognormal 85 units'; empty without a second opinion."""
+    other = second_opinion(level, unit)
+    return f"by the {other[0]} {other[1]}" if other is not None else ""
 
 
 def beyond_words(level: Level) -> str | None:

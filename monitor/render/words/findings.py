@@ -7,19 +7,21 @@ from typing import Literal
 
 import msgspec
 
-from monitor.render.numbers import at_place, count_text, exact_at, percent, place_of, size_text
+from monitor.render.numbers import at_place, count_text, estimate, exact_at, percent, place_of, size_text
 from monitor.render.planned import baseline_level
 from monitor.render.safe import plain
 from monitor.render.seen import FeedAccount, Refit, Seen, StreamSeen
 from monitor.render.times import plural, short_moment
 from monitor.render.words.common import (
     beyond_words,
+    by_rival_words,
     chance_by_luck,
     chance_words,
     level_words,
     one_in_words,
     p_words,
     passages_words,
+    second_opinion,
     size_with_unit,
 )
 from monitor.tail.judgement import Level
@@ -59,7 +61,7 @@ def flag_words(flag: Flag, source: str | None, *, doubtful: bool = False) -> str
     """A finding in a few words, for tables. doubtful: p's interval holds the mark, so that it is not settled."""
     if flag.rule == "fit":
         return "power law in doubt" if doubtful else "power law ruled out"
-    return f"{flag.direction or 'different'} {than_baseline(source)}"
+    return f"{flag.direction or 'different'} than {'planned' if source == 'plan' else 'baseline'}"
 
 
 def flags_in_words(refit: Refit, source: str | None) -> list[str]:
@@ -187,7 +189,19 @@ def _fit_finding(stream: StreamSeen, refit: Refit, zone: str, now: int) -> Findi
     else:
         detail.append("No rival describes it clearly better. Sizes read off the power law are in doubt.")
     verb = "it is doubtful whether a power law describes" if refit.doubtful else "a power law does not describe"
-    return Finding(kind="fit", headline=f"{verb} the tail, {since}", detail=tuple(detail))
+    return Finding(
+        kind="fit", headline=f"{verb} the tail, {since}", consequence=_by_rival(stream), detail=tuple(detail)
+    )
+
+
+def _by_rival(stream: StreamSeen) -> str:
+    """'by the lognormal one event in 10 000 passes 85 units, not 2 400'; empty without a second opinion."""
+    level = stream.level
+    other = None if level is None else second_opinion(level, stream.plan.unit)
+    if level is None or level.size is None or other is None:
+        return ""
+    power_law = estimate(level.size, level.interval)
+    return f"by the {other[0]} {one_in_words(level.one_in)} passes {other[1]}, not {power_law}"
 
 
 def _limit_finding(stream: StreamSeen) -> list[Finding]:
@@ -247,4 +261,5 @@ def level_line(stream: StreamSeen) -> str:
         text += f", {planned_or_before(stream)} {at_place(before, place_of(before, _scaled(level, before)))}"
     if stream.plan.limit is not None:
         text += f", limit {size_text(stream.plan.limit)}"
-    return text + "."
+    rival = by_rival_words(level, stream.plan.unit)
+    return f"{text}; {rival}." if rival else f"{text}."

@@ -17,6 +17,7 @@ from monitor.render.times import plural
 from monitor.render.words.common import (
     CAUTION,
     beyond_words,
+    by_rival_words,
     chance_text,
     doubling_words,
     level_words,
@@ -182,12 +183,8 @@ def _level_sentence(level: Level, unit: str) -> str:
     if level.size is None:
         return f"No size can be given that {one_in_words(level.one_in)} passes."
     text = f"{one_in_words(level.one_in)} passes {level_words(level, unit)}"
-    if level.by_rival:
-        other = level.by_rival.get("size")
-        if isinstance(other, int | float):
-            place = min(place_of(level.size or 0.0, level.interval), place_of(float(other), None) + 1)
-            size = at_place(float(other), place)
-            text += f"; by the {level.by_rival.get('tail', 'rival')} {size} {plain(unit)}".rstrip()
+    rival = by_rival_words(level, unit)
+    text += f"; {rival}" if rival else ""
     return _sentence(text)
 
 

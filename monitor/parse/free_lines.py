@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from monitor import rejects as why
 from monitor.parse.blocks import Cut
+from monitor.parse.combined_places import log_places
 from monitor.parse.lines import FormatError, LineFormat
 from monitor.parse.pattern_guard import LONGEST_LINE, Unsafe, check_pattern
 from monitor.parse.text_lines import Places, TextReader, keyed_fields
@@ -35,6 +36,7 @@ class CombinedReader(TextReader):
             if field not in COMBINED_PARTS + REQUEST_PARTS:
                 there = ", ".join(COMBINED_PARTS + REQUEST_PARTS)
                 raise FormatError(f"{key}: {field!r} is no part of a combined log line; there are: {there}")
+        self._simple = not {"referer", "agent"} & {f for _, f in keyed_fields(format_)}
 
     def pick(self, line: str) -> Sequence[str | None] | str:
         match = _COMBINED.fullmatch(line)
@@ -45,6 +47,25 @@ class CombinedReader(TextReader):
         parts.update(zip(REQUEST_PARTS, words if len(words) == 3 else [None] * 3, strict=True))
         found = [parts[str(f)] for f in self.fields]
         return [None if text == "-" else text for text in found]
+
+    def places(self, cut: Cut, rows: NDArray[np.int64]) -> Places | None:
+        if not self._simple:
+            return None
+        found = log_places(cut)
+        rows = rows[found.good[rows]]
+        starts = [found.starts[str(f)][rows] for f in self.fields]
+        ends = [found.ends[str(f)][rows] for f in self.fields]
+        return Places(rows, starts, ends).only(_not_dashes(cut.bytes_, starts, ends))
+
+
+def _not_dashes(
+    array: NDArray[np.uint8], starts: list[NDArray[np.int64]], ends: list[NDArray[np.int64]]
+) -> NDArray[np.bool_]:
+    """Rows in which no field is a lone dash."""
+    good = np.ones(starts[0].size, bool)
+    for start, end in zip(starts, ends, strict=True):
+        good &= (end - start != 1) | (array[start] != ord("-"))
+    return good
 
 
 class PairsReader(TextReader):

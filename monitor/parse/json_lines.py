@@ -28,7 +28,7 @@ from monitor.parse.lines import Field, FormatError, LineFormat
 from monitor.parse.stamps import StampReader
 
 DEEPEST = 100  # brackets inside one another; a fixed limit, so that no decoder's own limit decides
-_FEWEST = 64  # a run this short is read line by line
+_FEWEST = 6  # a run this short is read line by line
 _NUMBER = re.compile(rb"-?\d")
 _STRING = re.compile(rb'"(?:[^"\\]|\\.)*(?:"|\Z)', re.DOTALL)
 _UNSET = msgspec.UNSET
@@ -146,33 +146,38 @@ class _Block:
         last = np.where(tail == 13, before, tail)
         self._records: list[Any] = []
         self._rows: list[NDArray[np.int64]] = []
-        self._framed = (cut.bytes_[cut.starts] == ord("{")) & (last == ord("}"))
+        self._framed = (cut.bytes_[cut.starts] == ord("{")) & (last == ord("}")) & (found.verdict == OK)
 
     def read(self) -> None:
         n = self._cut.ends.size
-        if n:
-            self._run(0, n)
+        odd = np.flatnonzero(~self._framed)  # no object in plain sight: such a line would spoil a whole run
+        first = 0
+        for i in [*odd.tolist(), n]:
+            if i > first:
+                self._run(first, i)
+            if i < n:
+                self._one_by_one(i, i + 1)
+            first = i + 1
         if self._records:
             self._take(self._records, np.concatenate(self._rows))
 
     def _run(self, first: int, last: int) -> None:
-        """Lines first..last-1 at once if they can be, else in eight smaller runs."""
-        if self._framed[first:last].all():
-            cut = self._cut
-            whole = first == 0 and last == cut.ends.size
-            text = cut.block if whole else cut.block[cut.starts[first] : cut.ends[last - 1] + 1]
-            try:
-                records = self._reader._decode_run(text)
-            except (msgspec.DecodeError, UnicodeDecodeError, RecursionError):
-                records = []
-            # Two objects on one line would make the count differ; one object on two lines cannot
-            # be, since each line starts and ends as an object does.
-            if len(records) == last - first:
-                self._records += records
-                self._rows.append(np.arange(first, last))
-                return
+        """Framed lines first..last-1 at once if they can be, else in eight smaller runs."""
         if last - first <= _FEWEST:
             self._one_by_one(first, last)
+            return
+        cut = self._cut
+        whole = first == 0 and last == cut.ends.size
+        text = cut.block if whole else cut.block[cut.starts[first] : cut.ends[last - 1] + 1]
+        try:
+            records = self._reader._decode_run(text)
+        except (msgspec.DecodeError, UnicodeDecodeError, RecursionError):
+            records = []
+        # Two objects on one line would make the count differ; one object on two lines cannot be,
+        # since each line starts and ends as an object does.
+        if len(records) == last - first:
+            self._records += records
+            self._rows.append(np.arange(first, last))
             return
         for a, b in pairwise(np.linspace(first, last, 9, dtype=np.int64).tolist()):
             if b > a:
@@ -188,7 +193,8 @@ class _Block:
                 rows.append(i)
             except (msgspec.DecodeError, UnicodeDecodeError, RecursionError):
                 self._hard(i)
-        self._rows.append(np.array(rows, np.int64))
+        if rows:
+            self._rows.append(np.array(rows, np.int64))
 
     def _hard(self, i: int) -> None:
         found = self._found
@@ -241,14 +247,16 @@ class _Block:
 
     def _codes(self, columns: list[list[object]]) -> list[int]:
         names = self._found.names
-        if len(columns) == 1 and set(map(type, columns[0])) == {str}:
+        distinct: dict[object, None] = dict.fromkeys(columns[0]) if len(columns) == 1 else {}
+        if distinct and all(type(value) is str for value in distinct):
             texts: list[str] = columns[0]  # type: ignore[assignment]
         else:
             texts = ["/".join(map(_text, parts)) for parts in zip(*columns, strict=True)]
             empty = [any(part == "" for part in parts) for parts in zip(*columns, strict=True)]
             if any(empty):  # an empty part makes the whole name unusable, though the rest is not empty
                 texts = ["" if e else t for e, t in zip(empty, texts, strict=True)]
-        codes = {text: names.code(text) for text in dict.fromkeys(texts)}
+            distinct = dict.fromkeys(texts)
+        codes = {text: names.code(str(text)) for text in distinct}
         return list(map(codes.__getitem__, texts))
 
 

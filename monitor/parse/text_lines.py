@@ -20,7 +20,7 @@ from monitor import rejects as why
 from monitor.parse.blocks import CODE, OK, Cut, Findings
 from monitor.parse.lines import Field, FormatError, LineFormat
 from monitor.parse.stamps import StampReader
-from monitor.parse.tokens import sizes_of, stamps_of
+from monitor.parse.tokens import groups_of, sizes_of, stamps_of
 
 _FEWEST_FOR_ARRAYS = 16
 _NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
@@ -118,15 +118,22 @@ class TextReader(ABC):
             read &= known
             found.stamps[places.rows] = stamps
         found.sizes[places.rows[read]] = sizes[read]
-        if self._format.stream:
+        if self._format.stream and places.rows.size:
             found.codes[places.rows] = self._codes(cut.block, places, found)
 
-    def _codes(self, block: bytes, places: Places, found: Findings) -> list[int]:
+    def _codes(self, block: bytes, places: Places, found: Findings) -> NDArray[np.int64]:
         first = 1 + self._has_time
-        columns = [places.texts(block, k) for k in range(first, first + len(self._format.stream))]
-        names = columns[0] if len(columns) == 1 else list(map(b"/".join, zip(*columns, strict=True)))
-        codes = {name: found.names.code(name.decode("utf-8")) for name in dict.fromkeys(names)}
-        return list(map(codes.__getitem__, names))
+        distinct: list[bytes] = []
+        where = np.zeros(places.rows.size, np.int64)
+        for k in range(first, first + len(self._format.stream)):
+            parts, place = groups_of(block, places.starts[k], places.ends[k])
+            if k == first:
+                distinct, where = parts, place
+            else:  # only the combinations that occur
+                pairs, where = np.unique(where * len(parts) + place, return_inverse=True)
+                distinct = [distinct[p // len(parts)] + b"/" + parts[p % len(parts)] for p in pairs.tolist()]
+        codes = [found.names.code(name.decode("utf-8")) for name in distinct]
+        return np.array(codes, np.int64)[where]
 
     def _settle(self, i: int, line: str, found: Findings) -> None:
         picked = self.pick(line)

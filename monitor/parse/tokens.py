@@ -18,6 +18,8 @@ _LONGEST_NUMBER = 19
 _EXACT_DIGITS = 15  # a whole number of 15 digits and a power of ten up to 22 are exact floats,
 _POWERS = 10.0 ** np.arange(23)  # so their quotient is the float nearest to the decimal number
 _LONGEST_STAMP = 40
+_MASKS = np.array([(1 << 8 * n) - 1 for n in range(9)], np.uint64)
+_MIX = np.array([0x9E3779B97F4A7C15, 0xC2B2AE3D27D4EB4F, 0x165667B19E3779F9], np.uint64)  # odd, well mixed
 
 Places = NDArray[np.int64]
 Mask = NDArray[np.bool_]
@@ -104,3 +106,27 @@ def _epochs(reader: StampReader, d: Digits) -> tuple[NDArray[np.int64], Mask]:
     read &= integer < LAST // factor  # the very last moments are left to the one-by-one reader
     integer, rest = np.where(read, integer, 0), np.where(read, rest, 0)
     return integer * factor + rest * (NS // scale) * factor // NS, read
+
+
+def groups_of(block: bytes, starts: Places, ends: Places) -> tuple[list[bytes], NDArray[np.int64]]:
+    """Distinct pieces, and for each row the place of its piece among them. Exact."""
+    lengths = ends - starts
+    if starts.size and lengths.max() <= 16:
+        # Sixteen bytes are two words; rows that fall into one slot are compared word by word.
+        padded = np.frombuffer(block + bytes(16), np.uint8)
+        words = np.ndarray((padded.size - 7,), np.dtype("<u8"), padded.data, strides=(1,))
+        low = words[starts] & _MASKS[np.minimum(lengths, 8)]
+        high = words[np.minimum(starts + 8, words.size - 1)] & _MASKS[np.maximum(lengths - 8, 0)]
+        mixed = (low * _MIX[0]) ^ (high * _MIX[1]) ^ (lengths.astype(np.uint64) * _MIX[2])
+        slot = (mixed >> np.uint64(52)).astype(np.int64)
+        one = np.full(1 << 12, -1)
+        one[slot] = np.arange(slot.size)
+        same = one[slot]
+        if ((low == low[same]) & (high == high[same]) & (lengths == lengths[same])).all():
+            rows = one[one >= 0]
+            place = np.zeros(1 << 12, np.int64)
+            place[one >= 0] = np.arange(rows.size)
+            return [block[starts[r] : ends[r]] for r in rows.tolist()], place[slot]
+    texts = [block[s:e] for s, e in zip(starts.tolist(), ends.tolist(), strict=True)]
+    places = {text: i for i, text in enumerate(dict.fromkeys(texts))}
+    return list(places), np.fromiter(map(places.__getitem__, texts), np.int64, len(texts))

@@ -48,7 +48,7 @@ def take(raw: bytes, *, skipping: bool, max_line: int, final: bool) -> Taken:
     if start == len(raw):  # nothing behind the NUL bytes yet
         return Taken(len(raw) if final else at, at, b"", None, start - at if final else 0, False)
     holes = start - at
-    hole = raw.find(b"\n\0", start)
+    hole = raw.find(b"\n\0", start) if raw.find(b"\0", start) >= 0 else -1  # the short search is the fast one
     last = raw.rfind(b"\n", start) if hole < 0 else hole
     if last < 0:
         return _unended(raw, start, holes, max_line, final)

@@ -12,7 +12,7 @@ from demo.warehouse import OPENING
 from monitor.cli.output import load_plan
 from monitor.service.clock import ScaledClock
 from monitor.service.log import Log
-from monitor.service.run import run_daemon
+from monitor.service.run import Asked, run_daemon
 
 
 def main(arguments: list[str]) -> None:
@@ -20,7 +20,7 @@ def main(arguments: list[str]) -> None:
     settings, real_start, speed = arguments
     path = Path(settings)
     clock = ScaledClock(OPENING, int(real_start), float(speed))
-    run_daemon(load_plan(path), path.parent, finish=False, clock=clock, log=Log(clock))
+    run_daemon(load_plan(path), Asked(base=path.parent), clock, Log(clock))
 
 
 if __name__ == "__main__":

@@ -6,13 +6,14 @@ import sys
 from pathlib import Path
 
 import click
+import msgspec
 from rich.console import Console
 from rich.progress import BarColumn, Progress, TextColumn
 
 from monitor.cli.output import load_plan
 from monitor.service.clock import SystemClock
 from monitor.service.log import LEVELS, Log
-from monitor.service.run import run_daemon
+from monitor.service.run import Asked, run_daemon
 
 
 @click.command()
@@ -24,8 +25,9 @@ def run(settings: Path, finish: bool, log_level: str) -> None:
     plan = load_plan(settings)
     clock = SystemClock()
     log = Log(clock, log_level)
+    asked = Asked(base=settings.parent, finish=finish, reread=lambda: load_plan(settings))
     if not (finish and sys.stderr.isatty()):
-        run_daemon(plan, settings.parent, finish=finish, clock=clock, log=log)
+        run_daemon(plan, asked, clock, log)
         return
     with Progress(
         TextColumn("judging windows"), BarColumn(), TextColumn("{task.completed} of {task.total}"),
@@ -39,4 +41,4 @@ def run(settings: Path, finish: bool, log_level: str) -> None:
             most = max(most, left)
             progress.update(task, total=most, completed=most - left)
 
-        run_daemon(plan, settings.parent, finish=True, clock=clock, log=log, on_progress=show)
+        run_daemon(plan, msgspec.structs.replace(asked, on_progress=show), clock, log)

@@ -11,6 +11,8 @@ from monitor.engine.stimuli import Arrived, ChainSeen, Lines
 from storage.facts import RejectedSample
 from storage.pane import PaneBuilder
 
+TOO_MANY = "one stream too many"
+"""Reason under which a line is counted that would open a stream beyond the settings' max_streams."""
 AHEAD = "stamp far ahead"
 """Reason under which a line is counted whose stamp no later line bore out."""
 
@@ -118,8 +120,8 @@ def _waiting(lines: Lines, stamps: NDArray[np.int64], i: int) -> WaitingEvent:
 
 def _with_waiting(waiting: WaitingEvent, lines: Lines, stamps: NDArray[np.int64]) -> tuple[Lines, NDArray[np.int64]]:
     """The waiting event put in front of the new ones."""
-    names = [*lines.names, waiting.stream]
-    codes = np.concatenate((np.array([len(names) - 1], np.int32), lines.codes))
+    names = [waiting.stream, *lines.names]
+    codes = np.concatenate((np.zeros(1, np.int32), lines.codes + np.int32(1)))
     later = lines.describe
 
     def describe(i: int) -> tuple[str, str]:
@@ -150,13 +152,18 @@ def _chosen(lines: Lines, accepted: NDArray[np.int64]) -> Lines:
 
 def _count(state: State, chain: Chain, lines: Lines, times: NDArray[np.int64], late: NDArray[np.bool_]) -> None:
     """Each event to the pane of its effective time."""
+    refused = _beyond_cap(state, chain, lines)
+    if refused:
+        allowed = np.flatnonzero(~np.isin(lines.codes, refused))
+        chain.rejected[TOO_MANY] += times.size - allowed.size
+        lines, times, late = _chosen(lines, allowed), times[allowed], late[allowed]
+    if not times.size:
+        return
     chain.events += times.size
     chain.late += int(late.sum())
     state.uncommitted += times.size
     pane = state.plan.pane
     starts = times // pane
-    if not times.size:
-        return
     order = None
     if lines.codes[0] != lines.codes[-1] or starts[0] != starts[-1] or _varies(lines.codes) or _varies(starts):
         order = np.lexsort((starts, lines.codes))
@@ -166,6 +173,20 @@ def _count(state: State, chain: Chain, lines: Lines, times: NDArray[np.int64], l
         chosen = slice(low, high) if order is None else order[low:high]
         name = lines.names[codes[low]] or chain.feed
         _put(state, chain, name, int(panes[low]) * pane, _Some(lines, times, late, chosen))
+
+
+def _beyond_cap(state: State, chain: Chain, lines: Lines) -> list[int]:
+    """Codes of the streams that the settings leave no room for, in the order in which they first appear."""
+    unknown = [code for code, name in enumerate(lines.names) if (name or chain.feed) not in state.streams]
+    room = state.plan.max_streams - len(state.streams)
+    if len(unknown) <= room:
+        return []
+    present = set(np.unique(lines.codes).tolist())
+    new: dict[str, list[int]] = {}
+    for code in unknown:
+        if code in present:
+            new.setdefault(lines.names[code], []).append(code)
+    return [code for name in list(new)[max(0, room) :] for code in new[name]]
 
 
 def _varies(values: NDArray[np.int32] | NDArray[np.int64]) -> bool:

@@ -6,18 +6,22 @@ import os
 import signal
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from dataclasses import dataclass
 from pathlib import Path
 from types import FrameType
 
+import msgspec
+
 from monitor.engine.restore import Remembered, restore
 from monitor.engine.state import State
-from monitor.errors import SettingsError
+from monitor.errors import MonitorError, SettingsError
 from monitor.plan import Plan, read_plan
 from monitor.plan.spans import span_text
 from monitor.service.clock import Clock
 from monitor.service.feeds import OpenFeed, must_exist
 from monitor.service.log import Log
 from monitor.service.loop import Loop
+from monitor.service.notify import ServiceManager
 from monitor.service.worker import Worker
 from storage.errors import StoreFull
 from storage.facts import SettingsTaken
@@ -28,20 +32,24 @@ IDLE_SLEEP = 0.1
 
 
 class Stop:
-    """Set by SIGTERM or SIGINT; asked between two turns."""
+    """Set by signals; asked between two turns: SIGTERM and SIGINT end the daemon, SIGHUP rereads the settings."""
 
     def __init__(self) -> None:
         self.wanted = False
+        self.reread = False
 
-    def __call__(self, _signal: int, _frame: FrameType | None) -> None:
-        self.wanted = True
+    def __call__(self, number: int, _frame: FrameType | None) -> None:
+        if number == signal.SIGHUP:
+            self.reread = True
+        else:
+            self.wanted = True
 
 
 @contextmanager
 def stop_on_signals() -> Iterator[Stop]:
-    """SIGTERM and SIGINT ask the loop to end instead of ending the process."""
+    """The signals of a daemon ask its loop, instead of ending the process."""
     stop = Stop()
-    before = {number: signal.signal(number, stop) for number in (signal.SIGTERM, signal.SIGINT)}
+    before = {number: signal.signal(number, stop) for number in (signal.SIGTERM, signal.SIGINT, signal.SIGHUP)}
     try:
         yield stop
     finally:
@@ -49,41 +57,76 @@ def stop_on_signals() -> Iterator[Stop]:
             signal.signal(number, handler)
 
 
-def run_daemon(
-    plan: Plan,
-    base: Path,
-    *,
-    finish: bool,
-    clock: Clock,
-    log: Log,
-    on_progress: Callable[[int], None] | None = None,
-) -> None:
-    """Follow the plan's feeds until a signal, or with `finish` read what is there, seal, judge and stop.
+class Asked(msgspec.Struct, frozen=True, kw_only=True):
+    """How the daemon is to run.
 
-    Parameters: base, the folder that relative paths start from; on_progress, told the refits left (finish only).
+    base         the folder that relative paths start from
+    finish       read what is there, seal, judge and stop
+    reread       gives the plan anew on SIGHUP; raises SettingsError or SourceError; None: SIGHUP does nothing
+    on_progress  told the refits left (finish only)
+    """
+
+    base: Path
+    finish: bool = False
+    reread: Callable[[], Plan] | None = None
+    on_progress: Callable[[int], None] | None = None
+
+
+def run_daemon(plan: Plan, asked: Asked, clock: Clock, log: Log) -> None:
+    """Follow the plan's feeds until a signal, or with `finish` until everything there is judged.
+
     Raises StoreError, SourceError or SettingsError; on a clean end everything read is committed.
     """
-    path = base / plan.store
+    path = asked.base / plan.store
+    manager = ServiceManager()
     store = open_store(path, store_id=os.urandom(8).hex(), now=clock.now(), distinct=plan.distinct)
     with store, stop_on_signals() as stop:
-        state = _remember(plan, store, path, clock, log)
-        feeds = _open_feeds(plan, base, state, clock)
         worker = Worker(path)
-        loop = Loop(state, store, feeds, worker, clock=clock, log=log)
-        log.info(f"watching {', '.join(feed.name for feed in plan.feeds)} into {path}")
         try:
-            if finish:
-                must_exist(feeds)
-                _finish(loop, stop, on_progress)
-            else:
-                _follow(loop, stop)
+            current: Plan | None = plan
+            while current is not None:
+                current = _watch(current, asked, _Around(store, worker, clock, log, manager, stop))
+                if current is not None:
+                    worker.restart()  # what it was judging is still queued, now under the new settings
         finally:
+            manager.tell("STOPPING=1")
             worker.stop()
-            for feed in feeds:
-                feed.close()
-        if loop.failing:
-            raise StoreFull(f"{path}: the last commit failed. What was read since the one before will be read again.")
         log.info("stopped; everything read is committed")
+
+
+@dataclass(frozen=True, slots=True)
+class _Around:
+    """What stays when settings are reread."""
+
+    store: Store
+    worker: Worker
+    clock: Clock
+    log: Log
+    manager: ServiceManager
+    stop: Stop
+
+
+def _watch(plan: Plan, asked: Asked, around: _Around) -> Plan | None:
+    """Run on one plan. Returns the plan to go on with after SIGHUP, None at the end."""
+    store, clock, log = around.store, around.clock, around.log
+    state = _remember(plan, store, clock, log)
+    feeds = _open_feeds(plan, asked.base, state, clock)
+    loop = Loop(state, store, feeds, around.worker, clock=clock, log=log)
+    log.info(f"watching {', '.join(feed.name for feed in plan.feeds)} into {store.path}")
+    around.manager.tell(f"READY=1\nSTATUS=watching into {store.path}")
+    following: Plan | None = None
+    try:
+        if asked.finish:
+            must_exist(feeds)
+            _finish(loop, around.stop, asked.on_progress)
+        else:
+            following = _follow(loop, asked, around)
+    finally:
+        for feed in feeds:
+            feed.close()
+    if loop.failing:
+        raise StoreFull(f"{store.path}: the last commit failed. What was read since the one before is read again.")
+    return following
 
 
 def _open_feeds(plan: Plan, base: Path, state: State, clock: Clock) -> list[OpenFeed]:
@@ -93,11 +136,41 @@ def _open_feeds(plan: Plan, base: Path, state: State, clock: Clock) -> list[Open
     return [OpenFeed(feed, base, bookmarks.get(feed.name, {}), clock) for feed in plan.feeds]
 
 
-def _follow(loop: Loop, stop: Stop) -> None:
-    while not stop.wanted:
-        if not loop.turn() and not stop.wanted:
-            loop.clock.sleep(IDLE_SLEEP)
+def _follow(loop: Loop, asked: Asked, around: _Around) -> Plan | None:
+    """Turn until a signal. Returns the new plan after a SIGHUP that brought a good one."""
+    stop, clock = around.stop, around.clock
+    following: Plan | None = None
+    while not stop.wanted and following is None:
+        active = loop.turn()
+        around.manager.alive(clock.monotonic())
+        if stop.reread:
+            stop.reread = False
+            following = _reread(loop, asked, around)
+        elif not active and not stop.wanted:
+            clock.sleep(IDLE_SLEEP)
     loop.commit()
+    return following
+
+
+def _reread(loop: Loop, asked: Asked, around: _Around) -> Plan | None:
+    """The settings anew, if they are good and differ; bad ones are told, and the old ones go on."""
+    if asked.reread is None:
+        return None
+    try:
+        plan = asked.reread()
+        with open_reader(around.store.path) as reader:
+            _fits(plan, around.store, reader)
+        if plan.store != loop.state.plan.store:
+            raise SettingsError(
+                "store: cannot change while the daemon runs. Stop it and start it with the new settings."
+            )
+    except MonitorError as error:
+        around.log.error(f"settings not taken, the old ones stay in force: {error}")
+        return None
+    if plan.digest == loop.state.plan.digest:
+        around.log.info("settings read again: nothing changed")
+        return None
+    return plan
 
 
 def _finish(loop: Loop, stop: Stop, on_progress: Callable[[int], None] | None) -> None:
@@ -110,9 +183,9 @@ def _finish(loop: Loop, stop: Stop, on_progress: Callable[[int], None] | None) -
         loop.clock.sleep(0.002)
 
 
-def _remember(plan: Plan, store: Store, path: Path, clock: Clock, log: Log) -> State:
+def _remember(plan: Plan, store: Store, clock: Clock, log: Log) -> State:
     """State from the store; new settings become a fact."""
-    with open_reader(path) as reader:
+    with open_reader(store.path) as reader:
         _fits(plan, store, reader)
         known = reader.settings_digest()
         state = restore(plan, store.identity.distinct, _remembered(reader), clock.now())

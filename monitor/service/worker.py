@@ -88,13 +88,18 @@ class Worker:
         return self._process.exitcode
 
     def _replace(self, failure: str) -> Outcome | None:
-        request, self._request = self._request, None
-        self.stop()
-        self.ready = False
-        self._process, self._connection = self._start()
+        request = self._request
+        self.restart()
         if request is None:
             return None
         return Outcome(job=request.job, seed=request.options.seed, failure=failure)
+
+    def restart(self) -> None:
+        """A new process; a request that was out is given up."""
+        self.stop()
+        self._request = None
+        self.ready = False
+        self._process, self._connection = self._start()
 
     def stop(self) -> None:
         """End the process at once; what it was judging stays queued in the store."""

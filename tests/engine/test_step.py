@@ -247,3 +247,19 @@ def test_arrival_times_count_every_line_once(start: Start, tmp_path: Path) -> No
     with open_reader(run.path) as reader:
         assert [(pane.start // SECOND, pane.events) for pane in reader.panes()] == [(0, 3), (60, 3)]
         assert [(pane.start // SECOND, pane.events) for pane in reader.open_panes()] == [(120, 3)]
+
+
+def test_streams_beyond_the_cap_are_rejected_and_counted_whatever_the_batches(start: Start, tmp_path: Path) -> None:
+    events = [(1.0, k * SECOND, f"s{k % 7}") for k in range(200)]
+    text = SETTINGS + "max_streams = 4\n"
+    outcomes = []
+    for number, size in enumerate((1, 3, 200)):
+        run = start(tmp_path / str(number), {"one": events}, text)
+        for _ in range(0, 200, size):
+            run.feed("one", size)
+        outcomes.append(run.finish())
+        assert set(run.state.streams) == {"s0", "s1", "s2", "s3"}
+        chain = run.state.chains["orders", "one"]
+        assert chain.lines == 200 == chain.events + sum(chain.rejected.values())
+        assert chain.rejected["one stream too many"] == sum(k % 7 > 3 for k in range(200))
+    assert outcomes[0] == outcomes[1] == outcomes[2]

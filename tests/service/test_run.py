@@ -6,6 +6,7 @@ import json
 import os
 import random
 import signal
+import sqlite3
 from pathlib import Path
 
 import pytest
@@ -197,3 +198,47 @@ def test_the_store_is_readable_by_its_owner_only(tmp_path: Path) -> None:
     fresh(tmp_path).write_text("\n".join(order_lines(10)) + "\n")
     assert command("run", "t.toml", "--finish", folder=tmp_path).returncode == 0
     assert os.stat(tmp_path / "orders.db").st_mode & 0o077 == 0
+
+
+def test_settings_are_reread_on_hangup_and_bad_ones_refused(tmp_path: Path) -> None:
+    log = fresh(tmp_path)
+    log.write_text("\n".join(order_lines(300)) + "\n")
+    said = tmp_path / "daemon.log"
+    with Daemon(tmp_path) as daemon:
+        wait_for(lambda: lines_read(tmp_path / "orders.db") == 300)
+        (tmp_path / "t.toml").write_text(SETTINGS.replace("replicates = 200", "replicates = 0.5"))
+        daemon.process.send_signal(signal.SIGHUP)
+        wait_for(lambda: "watch.replicates" in said.read_text())
+        assert "the old ones stay in force" in said.read_text()
+        (tmp_path / "t.toml").write_text(SETTINGS.replace("replicates = 200", "replicates = 300"))
+        daemon.process.send_signal(signal.SIGHUP)
+        wait_for(lambda: "settings changed" in said.read_text())
+        with log.open("a") as file:
+            file.write("\n".join(order_lines(600)[300:]) + "\n")
+        wait_for(lambda: lines_read(tmp_path / "orders.db") == 600)
+        assert daemon.stop() == 0
+    with open_reader(tmp_path / "orders.db") as reader:
+        assert "replicates = 300" in (reader.settings_text() or "")
+
+
+def test_check_finds_a_changed_bit(tmp_path: Path) -> None:
+    fresh(tmp_path).write_text("\n".join(order_lines(1500)) + "\n")
+    assert command("run", "t.toml", "--finish", folder=tmp_path).returncode == 0
+    good = command("check", "--in", "t.toml", "--backup", "copy.db", folder=tmp_path)
+    assert (good.returncode, good.stderr) == (0, "")
+    assert export(tmp_path / "copy.db") == export(tmp_path / "orders.db")
+    again = command("check", "--in", "t.toml", "--backup", "copy.db", folder=tmp_path)
+    assert again.returncode == 73
+    connection = sqlite3.connect(tmp_path / "copy.db")
+    blob = bytearray(connection.execute("select content from pane limit 1").fetchone()[0])
+    blob[90] ^= 1
+    connection.execute("update pane set content = ? where rowid = (select min(rowid) from pane)", [bytes(blob)])
+    connection.execute("update chain set lines = lines + 1")
+    connection.commit()
+    connection.close()
+    bad = command("check", "--in", "copy.db", "--json", folder=tmp_path)
+    assert bad.returncode == 1
+    faults = {finding["what"]: finding["faults"] for finding in json.loads(bad.stdout)["findings"]}
+    assert len(faults["sealed panes"]) == 1
+    assert "checksum" in faults["sealed panes"][0]
+    assert "1 of 1501 lines are not accounted for" in faults["accounts and positions of chains"][0]

@@ -51,13 +51,5 @@ def fitted_tails(stream: StreamSeen) -> Tails | None:
 
 
 def survival(tails: Tails, sizes: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Share of events at or above each size by the tail, float64 (k,); NaN below its xmin.
-
-    Whole sizes count as at least x when they pass x - 1.
-    """
-    out = np.full(sizes.shape, np.nan)
-    for i, size in enumerate(sizes):
-        if size >= tails.xmin[0]:
-            below = np.ceil(size) - 1 if tails.counting == "whole" else size
-            out[i] = tails.share[0] if below < tails.xmin[0] else tails.chance(float(below))[0]
-    return out
+    """Share of events at or above each size by the (one) tail, float64 (k,); NaN below its xmin."""
+    return np.array([tails.at_or_above(float(size))[0] for size in sizes])

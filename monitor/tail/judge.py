@@ -24,7 +24,7 @@ from monitor.tail.tail_fit import Draws, NoTail, TailFit
 if TYPE_CHECKING:
     from monitor.tail.laws.law import Law
 
-__all__ = ["Interrupted", "compile_everything", "judge"]
+__all__ = ["Interrupted", "Judged", "compile_everything", "judge", "judge_with_draws"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,6 +32,14 @@ class _Evidence:
     """What the bootstrap found: its answer and the refits that intervals rest on."""
 
     gof: GoodnessOfFit | None
+    draws: Draws | None
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """A judgement, and the refits that its intervals rest on: for a drawing, too many to be kept with it."""
+
+    judgement: Judgement
     draws: Draws | None
 
 
@@ -47,16 +55,28 @@ def judge(
     progress is told (replicates done, budget); it may end early. cancelled is asked between chunks of replicates:
     when it says yes, Interrupted is raised. Nothing else is raised for data that can be counted at all.
     """
+    return judge_with_draws(sample, options, progress=progress, cancelled=cancelled).judgement
+
+
+def judge_with_draws(
+    sample: Sample,
+    options: Options,
+    *,
+    progress: Callable[[int, int], None] | None = None,
+    cancelled: Callable[[], bool] | None = None,
+) -> Judged:
+    """The same judgement with the bootstrap's refits beside it; no refits without a tail or without replicates."""
     refusal = why_no_tail(sample, options)
     if refusal is not None:
-        return _without_tail(sample, options, refusal)
+        return Judged(_without_tail(sample, options, refusal), None)
     law = law_of(sample, options)
     fit = law.fit()
     if isinstance(fit, NoTail):
-        return _without_tail(sample, options, fit)
+        return Judged(_without_tail(sample, options, fit), None)
     evidence = _evidence(law, fit, options, progress, cancelled)
     rivals = compare_rivals(sample, xmin=fit.xmin, alpha=fit.alpha, counting=fit.counting) if options.rivals else ()
-    return _with_tail(sample, options, fit, evidence, rivals=rivals, fixed=alpha_at_given_xmin(fit, law))
+    judgement = _with_tail(sample, options, fit, evidence, rivals=rivals, fixed=alpha_at_given_xmin(fit, law))
+    return Judged(judgement, evidence.draws)
 
 
 def _evidence(

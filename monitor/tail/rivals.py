@@ -79,17 +79,32 @@ def rival_size(
     when the rival is not determined, or when the size is beyond what doubles hold.
     """
     share = n_tail / sample.n
-    if rival.log_likelihood_ratio is None or not rival.parameters or one_in * share < 1:
+    log_survival = _survival_of(rival, xmin, counting)
+    if log_survival is None or one_in * share < 1:
+        return None
+    find = _whole_quantile if counting == "whole" else _quantile
+    return find(log_survival, -log(one_in * share))
+
+
+def rival_survival(rival: Rival, sizes: Floats, xmin: float, *, counting: Counting = "measured") -> Floats | None:
+    """Share of the tail above xmin that is at or above each size if it follows `rival`, float64 (k,).
+
+    1 at and below xmin. Whole sizes: the share at or above the next integer. None when the rival is not determined.
+    """
+    log_survival = _survival_of(rival, xmin, counting)
+    if log_survival is None:
+        return None
+    places = np.ceil(sizes) if counting == "whole" else sizes
+    return np.array([exp(min(log_survival(log(x) - log(xmin)), 0.0)) if x > xmin else 1.0 for x in places.tolist()])
+
+
+def _survival_of(rival: Rival, xmin: float, counting: Counting) -> _Survival | None:
+    if rival.log_likelihood_ratio is None or not rival.parameters:
         return None
     law = next(law for law in LAWS if law.name == rival.tail)
     if rival.tail == "power law with cut-off" and "cutoff" not in rival.parameters:
-        slope = rival.parameters["alpha"] - 1
-        theta = np.array([slope, -inf])
-    else:
-        theta = law.theta(rival.parameters, xmin)
-    log_survival = _Survival(law, theta, xmin, counting)
-    find = _whole_quantile if counting == "whole" else _quantile
-    return find(log_survival, -log(one_in * share))
+        return _Survival(law, np.array([rival.parameters["alpha"] - 1, -inf]), xmin, counting)
+    return _Survival(law, law.theta(rival.parameters, xmin), xmin, counting)
 
 
 def _data(sample: Sample, xmin: float, counting: Counting) -> TailData:

@@ -64,6 +64,15 @@ class Tails:
             log_survival = (self.alpha - 1) * np.minimum(np.log(self.xmin) - np.log(size), 0.0)
         return np.where(known, self.share * np.exp(log_survival), np.nan)
 
+    def at_or_above(self, size: float) -> Floats:
+        """Probability that an event is at or above `size`, float64 (r,); NaN where size < xmin.
+
+        For whole sizes that is to pass the integer below `size`; for measured ones it is the same as to pass it.
+        """
+        below = float(np.ceil(size)) - 1 if self.counting == "whole" else size
+        passed = np.where(self.xmin <= below, self.chance(below), self.share)
+        return np.where(self.xmin <= size, passed, np.nan)
+
 
 def size_of(log_size: float | None, counting: Counting) -> float | None:
     """exp of it, for whole sizes the integer it stands for; None when it is unknown or beyond doubles."""

@@ -11,9 +11,10 @@ import os
 import stat
 from collections.abc import Mapping, Sequence
 
-from monitor.sources.chain import Chain, Inode
+from monitor.sources.chain import Chain
 from monitor.sources.content import UNREADABLE_PACKING, Incomplete
 from monitor.sources.family import base_of, family, matches
+from monitor.sources.finder import Inode
 from monitor.sources.marks import Mark, read_bookmark
 from monitor.sources.source import Block, ChainStatus, FollowFiles
 
@@ -150,7 +151,7 @@ class FileSource:
 
     def _is_finished(self, path: str, mark: Mark) -> bool:
         chain = next(c for c in self._chains.values() if mark in c.finished)
-        return chain.is_marked(path, mark)
+        return chain.finder.is_marked(path, mark)
 
     def _inode(self, path: str) -> Inode | None:
         """Device and inode of a file that can be followed, else None with the trouble told."""

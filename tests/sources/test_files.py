@@ -304,6 +304,7 @@ def test_two_names_of_one_file(log: Path) -> None:
     os.link(log, log.parent / "b.log")
     reader = Reader(log.parent, "*.log", "a*").read()
     assert reader.got == lines(0, 50)
+    assert [c.name for c in reader.source.chains()] == [str(log)]
     assert reader.restart().read().got == lines(0, 50)
 
 
@@ -485,3 +486,24 @@ def test_a_bookmark_of_any_block_resumes_exactly(log: Path) -> None:
         again.bookmarks = {block.chain: block.bookmark}
         again.restart().read()
         assert b"".join(again.got) == whole[block.offset + len(block.data) :]
+
+
+def test_writers_that_move_over_one_after_the_other(log: Path) -> None:
+    """Two processes share a log: the first has moved over, the second still writes a line to the old file."""
+    append(log, lines(0, 50))
+    reader = Reader(log.parent).read()
+    log.rename(f"{log}.1")
+    append(log, lines(60, 70))
+    reader.take(reader.source.poll(1 << 20))
+    append(Path(f"{log}.1"), lines(50, 60))
+    assert reader.read().got == lines(0, 70)
+
+
+def test_an_equal_end_is_not_an_equal_file(log: Path) -> None:
+    """Another file with the same 256 bytes before the position: only its first line tells it apart."""
+    same = b"".join(lines(0, 50))
+    append(log, [b"first\n", same])
+    reader = Reader(log.parent).read().stop()
+    log.unlink()
+    append(log, [b"other\n", same, *lines(50, 60)])
+    assert reader.restart().read().got[51:] == [b"other\n", *lines(0, 60)]

@@ -61,7 +61,8 @@ def test_grid_and_exact_standard_errors_agree_for_fine_cells(counting):
     rng = np.random.default_rng(4)
     sizes = np.floor(1000 * draws("measured", 5000, rng))
     fits = [
-        law_of(sample, Options(counting=counting, xmin=1000.0)).fit() for sample in (Sample.of_sizes(sizes), on_grid(sizes))
+        law_of(sample, Options(counting=counting, xmin=1000.0)).fit()
+        for sample in (Sample.of_sizes(sizes), on_grid(sizes))
     ]
     assert fits[0].alpha == pytest.approx(fits[1].alpha, abs=0.006)
     assert fits[0].alpha_se == pytest.approx(fits[1].alpha_se, rel=0.01)

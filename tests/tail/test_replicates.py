@@ -14,7 +14,7 @@ from monitor.tail.laws.law import HAIR
 from monitor.tail.sample import Sample
 from monitor.tail.scan import find_tail, law_of
 from monitor.tail.tail_fit import NoTail
-from storage.grid import cell_of
+from storage.grid import cell_of, edges
 from tests.tail.test_scanning import RANDOM, WHOLE, on_grid
 
 FALSE_FAILURES = 1e-4  # of each comparison below, were it drawn with a fresh key
@@ -124,12 +124,15 @@ def test_replicates_at_a_given_xmin_stay_there():
 
 
 def test_replicates_without_a_candidate_are_infinitely_far():
-    sample = Sample(np.array([1.0, 2.0, 3.0]), np.array([40, 6, 4]))
-    law = law_of(sample, Options(min_tail=50, counting="whole"))
-    fit = law.fit()
-    chunk = law.replicate(fit, "model", key_of(1, 1))(0, 500, False)
-    assert fit.n_tail == 50
-    assert np.isfinite(chunk.distance).all()  # all 50 events lie above the smallest size, always
+    """Ten events, two of them large: about one resample in ten holds a single size, and so no candidate."""
+    sample = Sample(np.array([1.0, 2.0, 3.0]), np.array([8, 1, 1]))
+    options = Options(min_tail=10, counting="whole")
+    law = law_of(sample, options)
+    chunk = law.replicate(law.fit(), "data", key_of(1, 1))(0, 2000, False)
+    none = np.isinf(chunk.distance)
+    assert np.mean(none) == pytest.approx(0.8**10 + 2 * 0.1**10, abs=0.03)
+    assert (chunk.n_tail[none] == 0).all()
+    assert np.isnan(chunk.alpha[none]).all()
 
 
 def test_cells_of_replicates_are_cells_of_the_grid():
@@ -137,6 +140,4 @@ def test_cells_of_replicates_are_cells_of_the_grid():
     sample = on_grid(sizes)
     law = law_of(sample, Options())
     chunk = law.replicate(law.fit(), "model", key_of(1, 1))(0, 100, False)
-    from storage.grid import edges
-
     np.testing.assert_array_equal(edges(cell_of(chunk.xmin)), chunk.xmin)

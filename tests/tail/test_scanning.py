@@ -12,7 +12,7 @@ from monitor.tail.sample import Sample
 from monitor.tail.scan import find_tail, law_of
 from storage.grid import CELL_WIDTH, cell_of
 from tests.references import min_ks
-from tests.references.every_candidate import near_of_all, nearest_of_all
+from tests.references.every_candidate import distances, near_of_all, nearest_of_all
 
 
 def pareto(n, rng, alpha=2.5, xmin=1.0):
@@ -176,8 +176,10 @@ def test_the_exponent_of_whole_sizes_on_the_grid_is_that_of_the_cell_likelihood(
     assert fit.alpha == pytest.approx(best, rel=2e-7)
 
 
-def test_of_two_equal_distances_the_smaller_size_wins():
-    """Sizes 1, 2, 4 and 8 times the same pattern: every candidate sees the same tail, but for its length."""
-    sample = Sample(2.0 ** np.arange(3), np.array([2, 1, 1]))
-    fit = find_tail(sample, Options(min_tail=2))
-    assert fit.xmin == 1.0
+@pytest.mark.parametrize(("counts", "equal"), [((3, 2, 1, 3), 2), ((3, 2, 2, 2), 2), ((4, 2, 1, 1), 3)])
+def test_of_equal_distances_the_smallest_size_wins(counts, equal):
+    sample = Sample(2.0 ** np.arange(4), np.array(counts))
+    ladder = law_of(sample, Options(min_tail=2)).rungs.ladder
+    all_of_them = distances(ladder, 2)
+    assert np.sum(all_of_them == all_of_them.min()) == equal
+    assert find_tail(sample, Options(min_tail=2)).xmin == 1.0

@@ -19,8 +19,8 @@ from __future__ import annotations
 
 from typing import Any
 
-from monitor.tail.kernels.arithmetic import exp_nonpositive, log_one_plus, logarithm
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.arithmetic import exp_apart, exp_nonpositive, log_one_plus, logarithm
+from monitor.tail.kernels.compiling import kernel
 from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
 
 SLACK = 1e-12
@@ -41,12 +41,12 @@ def binned_rate(ladder: Any, row: int) -> Any:
     return _log1p(ladder.events[row] / ladder.spread[row])
 
 
-@helper
+@kernel
 def _look(ladder: Any, row: int, j: int, rate: float, worst: Worst) -> Any:
     """`worst` after comparing data and model at the edges of row j."""
     share = 1.0 / ladder.events[row]
-    at = exp_nonpositive(-rate * (ladder.place[j] - ladder.place[row]))
-    beyond = exp_nonpositive(-rate * (ladder.place[j] + 1.0 - ladder.place[row]))
+    at = exp_apart(-rate * (ladder.place[j] - ladder.place[row]))
+    beyond = exp_apart(-rate * (ladder.place[j] + 1.0 - ladder.place[row]))
     return noted(worst, j, ladder.events[j] * share - at, beyond - ladder.events[j + 1] * share)
 
 
@@ -91,7 +91,9 @@ def _all_looked_at(ladder: Any, row: int, rate: float, worst: Worst, stop: float
         enough = distance_of(worst) - SLACK
         if events[left + 1] * share - at_right > enough or after_left - events[right] * share > enough:
             for j in range(left + 1, right):
-                worst = _look(ladder, row, j, rate, worst)
+                at = exp_nonpositive(-rate * (place[j] - place[row]))
+                beyond = exp_nonpositive(-rate * (place[j] + 1.0 - place[row]))
+                worst = noted(worst, j, events[j] * share - at, beyond - events[j + 1] * share)
             if distance_of(worst) > stop:
                 return worst
         left = right
@@ -116,6 +118,6 @@ def binned_bound(ladder: Any, p: int, q: int, j: int, above: bool) -> Any:
             h = (near + ahead) * _log1p(1.0 / near)
         else:
             h = near * _log1p(1.0 / near) + ahead * _log1p(1.0 / far)
-        return events[j] / events[p] - exp_nonpositive(-h) - SLACK
+        return events[j] / events[p] - exp_apart(-h) - SLACK
     h = (reach + 1.0 + width) * _log1p(events[p] / ladder.spread[q])
-    return exp_nonpositive(-h) - events[j + 1] / few - SLACK
+    return exp_apart(-h) - events[j + 1] / few - SLACK

@@ -241,10 +241,12 @@ def _pick_one_by_one(state: Any, draws: int, owner: Any, total: Any, counts: Any
 
 
 @kernel
-def _pick_by_rows(state: Any, draws: int, weights: Any, total: Any, counts: Any) -> None:
+def _pick_by_rows(state: Any, draws: int, weights: Any, counts: Any) -> None:
     """The same histogram by one binomial a row: the cost is that of the rows, not of the draws."""
     left = int64(draws)
-    weight_left = np.float64(total)
+    weight_left = 0.0
+    for i in range(weights.size):
+        weight_left += weights[i]
     for i in range(counts.size):
         if left == 0:
             return
@@ -269,7 +271,7 @@ def resampled(state: Any, draws: int, weights: Any, owner: Any, counts: Any) -> 
     elif owner.size > 1:
         _pick_one_by_one(state, draws, owner, owner.size, counts)
     else:
-        _pick_by_rows(state, draws, weights, weights.sum(), counts)
+        _pick_by_rows(state, draws, weights, counts)
 
 
 def key_of(seed: int, purpose: int) -> Any:

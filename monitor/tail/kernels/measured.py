@@ -38,34 +38,28 @@ _GRID_DENSITY = 3.0
 
 
 @kernel
-def build(sizes: Any, counts: Any, y: Any, first: Any, events: Any, spread: Any) -> Any:
-    """Fill the rows of distinct sizes with counts, from above; sizes whose logarithms agree become one row.
+def build(sizes: Any, counts: Any, y: Any, events: Any, spread: Any) -> Any:
+    """Fill one row for each distinct size; False, with nothing but y written, when two share a logarithm.
 
-    Parameters: sizes float64 (k,) ascending, counts int64 (k,). Written: y, spread float64 (k,), events float64
-    (k + 1,), and first int64 (k,), the index of each row's smallest size; an empty `first` is left out. Returns
-    where the rows begin: they are the last ones of the arrays.
+    Parameters: sizes float64 (k,) ascending, counts int64 (k,). Written: y, spread float64 (k,), events (k + 1,).
     """
     k = sizes.size
     for i in range(k):
         y[i] = log_in_place(sizes[i])
-    row = k
-    held = 0.0
+    for i in range(1, k):
+        if y[i] <= y[i - 1]:
+            return False
+    held = np.float64(counts[k - 1])
     total = 0.0
-    above = y[k - 1]
     events[k] = 0.0
-    for i in range(k - 1, -1, -1):
-        here = y[i]
-        if row == k or here < above:
-            row -= 1
-            total += held * (above - here)
-            above = here
+    events[k - 1] = held
+    spread[k - 1] = 0.0
+    for i in range(k - 2, -1, -1):
+        total += held * (y[i + 1] - y[i])
         held += counts[i]
-        y[row] = here
-        events[row] = held
-        spread[row] = total
-        if first.size > 0:
-            first[row] = i
-    return row
+        spread[i] = total
+        events[i] = held
+    return True
 
 
 @helper

@@ -24,7 +24,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_ratio, logarithm
-from monitor.tail.kernels.compiling import helper, int64, kernel
+from monitor.tail.kernels.compiling import int64, kernel
 from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
 from monitor.tail.kernels.zeta import (
     NEGLIGIBLE,
@@ -94,7 +94,7 @@ def survival(law: Zeta, v: float, scratch: Any) -> Any:
     return scratch.terms[int64(k)] * law.scale
 
 
-@helper
+@kernel
 def _look(ladder: Any, row: int, j: int, law: Zeta, worst: Worst, scratch: Any) -> Any:
     """(worst after comparing data and model at row j, survival at its lowest size, survival beyond it)."""
     share = 1.0 / ladder.events[row]

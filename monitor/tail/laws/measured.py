@@ -12,8 +12,6 @@ from monitor.tail.kernels.measured import build
 from monitor.tail.laws.law import NOTHING, Floats, Law, Rungs
 from monitor.tail.tail_fit import TailFit
 
-_NO_INDEX = np.zeros(0, np.int64)
-
 
 class Measured(Law):
     """Rows are distinct values of ln(size)."""
@@ -25,13 +23,15 @@ class Measured(Law):
             sizes, counts = np.concatenate(([xmin], sizes)), np.concatenate(([0], counts))
         k = sizes.size
         y, events, spread = np.empty(k), np.empty(k + 1), np.empty(k)
-        begin = build(sizes, counts, y, _NO_INDEX, events, spread)
-        if begin == 0:
+        if build(sizes, counts, y, events, spread):
             return Rungs(Ladder(MEASURED, y, NOTHING, events, spread, NOTHING), None, sizes)
-        first = np.empty(k, np.int64)  # rare: two sizes share a logarithm
-        begin = build(sizes, counts, y, first, events, spread)
-        ladder = Ladder(MEASURED, y[begin:], NOTHING, events[begin:], spread[begin:], NOTHING)
-        return Rungs(ladder, first[begin:], sizes[first[begin:]])
+        # Rare: sizes so close that they share a logarithm. They become one row, told as the smallest of them.
+        y, first = np.unique(y, return_index=True)
+        merged = sizes[first]
+        counts = np.add.reduceat(counts, first)
+        build(merged, counts, y, events[: y.size + 1], spread[: y.size])
+        ladder = Ladder(MEASURED, y, NOTHING, events[: y.size + 1].copy(), spread[: y.size].copy(), NOTHING)
+        return Rungs(ladder, first, merged)
 
     def given(self, xmin: float) -> tuple[int, float]:
         """For a given xmin: the index of the first size in the tail, and xmin itself."""

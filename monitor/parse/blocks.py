@@ -147,7 +147,7 @@ def mark_unreadable(cut_: Cut, findings: Findings) -> None:
             at = int(ends[i]) + 1
 
 
-def assemble(cut_: Cut, found: Findings, *, scale: float, has_time: bool) -> ParsedLines:
+def assemble(cut_: Cut, found: Findings, *, scale: float, has_time: bool, has_stream: bool) -> ParsedLines:
     """Judge sizes, times and streams, and draw up the account."""
     verdict = found.verdict
     with np.errstate(over="ignore", under="ignore", invalid="ignore"):
@@ -164,7 +164,9 @@ def assemble(cut_: Cut, found: Findings, *, scale: float, has_time: bool) -> Par
             verdict[hit] = CODE[reason]
             open_ &= ~hit
     events = slice(None) if open_.all() else np.flatnonzero(open_)
-    names, codes = _renumbered(found.names.names, found.codes[events])
+    names, codes = [""], found.codes[events]
+    if has_stream:
+        names, codes = _renumbered(found.names.names, codes)
     counts = np.bincount(verdict, minlength=len(VERDICTS)).tolist()
     return ParsedLines(
         lines=verdict.size,
@@ -183,7 +185,7 @@ def assemble(cut_: Cut, found: Findings, *, scale: float, has_time: bool) -> Par
 def _renumbered(names: list[str], codes: NDArray[np.int32]) -> tuple[list[str], NDArray[np.int32]]:
     """Only the names of events, in the order of their first event."""
     if not names:
-        return [""], np.zeros(codes.size, np.int32)
+        return [], codes
     used, first = np.unique(codes, return_index=True)
     order = used[np.argsort(first)]
     place = np.zeros(len(names), np.int32)

@@ -71,7 +71,8 @@ def _parse(format_: LineFormat, reader: _Reader, block: bytes, *, first: bool, s
     if skip_first and lines.ends.size:
         found.verdict[0] = CODE[why.HEADER]
     reader.read(lines, found)
-    parsed = assemble(lines, found, scale=format_.scale, has_time=format_.time is not None)
+    has_time, has_stream = format_.time is not None, bool(format_.stream)
+    parsed = assemble(lines, found, scale=format_.scale, has_time=has_time, has_stream=has_stream)
     return _shifted(parsed, marked) if marked else parsed
 
 

@@ -161,3 +161,24 @@ class PatternReader(TextReader):
         if match is None:
             return why.NO_MATCH
         return [match[f] for f in self.fields if f is not None]
+
+    def places(self, cut: Cut, rows: NDArray[np.int64]) -> Places | None:
+        if not cut.block.isascii():  # places of characters are places of bytes only then
+            return None
+        text, search, fields = (
+            cut.block.decode("ascii"),
+            self._pattern.search,
+            [f for f in self.fields if f is not None],
+        )
+        short = rows[(cut.ends - cut.starts)[rows] <= LONGEST_LINE]
+        kept, spans = [], []
+        starts, ends = cut.starts[short].tolist(), cut.bare_ends()[short].tolist()
+        for row, start, end in zip(short.tolist(), starts, ends, strict=True):
+            if match := search(text[start:end]):
+                kept.append(row)
+                spans.append([match.span(f) for f in fields])
+        if not kept:
+            return None
+        lines = np.array(kept)
+        table = np.array(spans) + cut.starts[lines][:, None, None]  # a group without a match has an empty span
+        return Places(lines, list(table[:, :, 0].T), list(table[:, :, 1].T))

@@ -90,6 +90,8 @@ def test_types_and_shapes() -> None:
     assert parsed.starts.tolist() == [0, 33, 65]
     assert parsed.ends.tolist() == [29, 64, 94]
     assert compile_parser(json_of()).parse(b'{"units":2}\n').streams == [""]
+    named = compile_parser(json_of(stream=("dock",)))
+    assert named.parse(b'{"units":2}\n').streams == named.parse(b'{"units":0,"dock":"a"}\n').streams == []
 
 
 @pytest.mark.parametrize(

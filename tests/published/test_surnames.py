@@ -1,8 +1,8 @@
 """The surnames of the 1990 US census: a power law that the literature has judged, fitted from the counts.
 
 Source: Clauset, Shalizi & Newman, SIAM Review 51 (2009) 661, Table 6.1 [printed values from memory]: n 2753, mean
-50.59, standard deviation 113.99, largest 2502, xmin 111.92 +- 40.67, alpha 2.5(2), n_tail 239 +- 215, p 0.20. The longer
-figures were computed with scipy apart from this project's code.
+50.59, standard deviation 113.99, largest 2502, xmin 111.92 +- 40.67, alpha 2.5(2), n_tail 239 +- 215, p 0.20. The
+longer figures were computed with scipy apart from this project's code.
 """
 
 from __future__ import annotations

@@ -59,7 +59,8 @@ def test_exponential_draws_follow_the_exponential_law():
 def test_uniform_draws_are_uniform_and_never_touch_the_ends():
     out = np.empty(400_000)
     _uniforms(generator(), out)
-    assert out.min() > 0 and out.max() < 1
+    assert out.min() > 0
+    assert out.max() < 1
     assert stats.kstest(out, "uniform").pvalue > FALSE_FAILURES
 
 
@@ -70,7 +71,8 @@ def test_uniform_draws_are_uniform_and_never_touch_the_ends():
 def test_binomial_counts_follow_the_binomial_law(n, p):
     out = np.empty(60_000, np.int64)
     _binomials(generator(seed=3), n, p, out)
-    assert out.min() >= 0 and out.max() <= n
+    assert out.min() >= 0
+    assert out.max() <= n
     # Chi-square over bins of about equal probability.
     law = stats.binom(n, p)
     bounds = np.unique(law.ppf(np.linspace(0.02, 0.98, 30)))

@@ -33,7 +33,7 @@ class FileSource:
         self._patterns = [os.path.normpath(os.path.join(base, p)) for p in feed.patterns]
         self._chains: dict[str, Chain] = {}
         self._rotated: dict[str, str] = {}  # rotated name -> chain it belongs to
-        self._standing: dict[str, str] = {}  # path -> its trouble, told already
+        self._standing: dict[tuple[str, str], str] = {}  # file or pattern -> its trouble, told already
         self._news: list[str] = []
         self._turn = self._since_discovery = self._busy = 0
         for name, text in sorted(bookmarks.items()):
@@ -110,11 +110,14 @@ class FileSource:
 
     def tell(self, path: str, trouble: str | None) -> None:
         """State the trouble with a path; None: all is well again."""
+        self._state(("file", path), trouble)
+
+    def _state(self, about: tuple[str, str], trouble: str | None) -> None:
         if trouble is None:
-            self._standing.pop(path, None)
-        elif self._standing.get(path) != trouble:
-            self._standing[path] = trouble
-            self._news.append(f"{path}: {trouble}")
+            self._standing.pop(about, None)
+        elif self._standing.get(about) != trouble:
+            self._standing[about] = trouble
+            self._news.append(f"{about[1]}: {trouble}")
 
     # -- finding files
 
@@ -131,7 +134,7 @@ class FileSource:
 
     def _discover(self) -> None:
         self._since_discovery = 0
-        found = sorted({p for pattern in self._patterns for p in glob.glob(pattern, recursive=True)})
+        found = self._matching()
         new = [p for p in found if p not in self._chains and self._rotated.get(p) not in self._chains]
         if not new:
             return
@@ -148,6 +151,15 @@ class FileSource:
                 continue
             ours.add(inode)
             self._chains[path] = Chain(path, self)
+
+    def _matching(self) -> list[str]:
+        found: set[str] = set()
+        for pattern in self._patterns:
+            paths = glob.glob(pattern, recursive=True)
+            missing = None if paths else "no such file yet; it is followed as soon as there is one"
+            self._state(("pattern", pattern), missing)
+            found.update(paths)
+        return sorted(found)
 
     def _is_finished(self, path: str, mark: Mark) -> bool:
         chain = next(c for c in self._chains.values() if mark in c.finished)

@@ -449,6 +449,19 @@ def test_what_cannot_be_read_is_told_once_and_the_rest_goes_on(tmp_path: Path, m
     assert reader.read().got == [*lines(10, 20), *lines(0, 10)]
 
 
+def test_a_pattern_without_files_is_told_once(log: Path) -> None:
+    reader = Reader(log.parent, "a.log", "b-*.log").read()
+    assert [t.split(": ")[1][:12] for t in reader.troubles] == ["no such file"] * 2
+    append(log, lines(0, 10))
+    assert len(reader.read().troubles) == 2
+    log.unlink()
+    log.mkdir()
+    reader.read().read()
+    assert len(reader.troubles) == 3
+    assert "not a regular file" in reader.troubles[-1]
+    assert reader.got == lines(0, 10)
+
+
 def test_many_files_take_turns(tmp_path: Path) -> None:
     for i in range(5):
         append(tmp_path / f"f{i}.log", lines(i * 20_000, i * 20_000 + 20_000))

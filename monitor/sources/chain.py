@@ -16,11 +16,12 @@ from monitor.sources.content import Content, Incomplete, open_content, same_cont
 from monitor.sources.cutting import Taken
 from monitor.sources.family import family
 from monitor.sources.finder import Finder, World, inode_of, is_packed, status_of, version_of
-from monitor.sources.marks import KEPT_EMPTY, KEPT_FINISHED, Bookmark, Mark, write_bookmark
+from monitor.sources.marks import KEPT_EMPTY, KEPT_FINISHED, VERSION, Bookmark, Mark, write_bookmark
 from monitor.sources.reading import Changed, Reading
 from monitor.sources.source import Block, ChainStatus
 
 SETTLE = 3  # quiet polls before a file whose writer has moved over counts as finished
+_LONGEST_HEADER = 1000  # of a first line that is carried over a cut; longer ones are not
 PATIENCE = 50  # polls to wait for a compressed file that stays incomplete
 
 
@@ -36,6 +37,8 @@ class Chain:
         self.finder = Finder(own, world)
         self._resume = bookmark.current if bookmark else None
         self._quiet = self._waited = 0
+        self._carried = bookmark.carried if bookmark else b""
+        self._coming = bookmark.coming if bookmark else b""
         self._packed: list[tuple[int, ...] | None] = []
         self._resting: tuple[int, ...] | None = None
 
@@ -117,12 +120,14 @@ class Chain:
     def _block(self, reading: Reading, taken: Taken) -> Block:
         offset = reading.position - taken.consumed + taken.start
         refused = taken.refused
+        header = reading.header() if taken.data else None
+        lost = header is not None and self._carried not in (b"", header)
         return Block(
             chain=self.own,
             data=taken.data,
             offset=offset,
-            first=offset == 0,
-            header=reading.header() if taken.data else None,
+            first=offset == 0 and not lost,
+            header=self._carried if lost else header,
             bookmark=self._bookmark(),
             rejected=() if refused is None else (Rejected(OVER_LONG, 0, refused),),
             rejected_counts={} if refused is None else {OVER_LONG: 1},
@@ -131,7 +136,7 @@ class Chain:
 
     def _bookmark(self) -> str:
         current = self.reading.mark() if self.reading is not None and self.reading.position else None
-        return write_bookmark(current, tuple(self.finished))
+        return write_bookmark(Bookmark(VERSION, current, tuple(self.finished), self._carried, self._coming))
 
     def _at_end_of_file(self, reading: Reading, finishing: bool) -> list[Block]:
         """Decide whether more may come here, or the file is finished."""
@@ -184,6 +189,7 @@ class Chain:
     def _truncated(self, reading: Reading) -> list[Block]:
         """The file began anew in place: read the rest from a copy if there is one."""
         mark, unread = reading.mark(), max(0, reading.size - reading.position)
+        self._coming = self._carried or (reading.known_header() or b"")[:_LONGEST_HEADER]
         rotated = family(self.own)[::-1]
         for path in [p for p in rotated if not is_packed(p)] + [p for p in rotated if is_packed(p)]:
             if (copy := self.finder.opened_if_same(path, mark)) is not None:
@@ -234,6 +240,7 @@ class Chain:
             self.finished.pop()  # it was taken as finished, but nothing took its place: go on
             self._go_on(content, last, finite=False)
         else:
+            self._carried, self._coming = self._coming if path == self.own else b"", b""
             self._go_on(content, None, finite=False)
         return True
 
@@ -258,6 +265,8 @@ class Chain:
                 continue
             if content is not None:
                 self._go_on(content, mark, finite=False)
+                if path != self.own and inode_of(self.own) == (mark.device, mark.inode):  # cut off meanwhile
+                    self._coming = self._carried or self._now().header()[:_LONGEST_HEADER]
                 return True
         self.at_end = True
         if waiting and self._waited < PATIENCE:

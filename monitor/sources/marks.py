@@ -19,7 +19,7 @@ HEAD_BYTES = 4096
 ANCHOR_BYTES = 256
 KEPT_FINISHED = 16
 KEPT_EMPTY = 8
-_VERSION = 1
+VERSION = 1
 
 
 class Mark(msgspec.Struct, frozen=True, array_like=True):
@@ -43,11 +43,19 @@ class Mark(msgspec.Struct, frozen=True, array_like=True):
 
 
 class Bookmark(msgspec.Struct, frozen=True, array_like=True):
-    """A chain's place: the file being read (None: the next one is to be found) and those read to the end."""
+    """A chain's place.
+
+    current   the file being read; None: the next one is to be found
+    finished  files read to the end, oldest first
+    carried   first line that still names the columns, though the file being read lost it by being cut off
+    coming    the same for the file that comes next
+    """
 
     version: int
     current: Mark | None
     finished: tuple[Mark, ...]
+    carried: bytes = b""
+    coming: bytes = b""
 
 
 def head_of(start: bytes, position: int) -> str:
@@ -62,9 +70,9 @@ def anchor_of(before: bytes) -> int:
     return zlib.crc32(before[-ANCHOR_BYTES:])
 
 
-def write_bookmark(current: Mark | None, finished: tuple[Mark, ...]) -> str:
+def write_bookmark(bookmark: Bookmark) -> str:
     """A bookmark as text."""
-    return msgspec.json.encode(Bookmark(_VERSION, current, finished)).decode()
+    return msgspec.json.encode(bookmark).decode()
 
 
 def read_bookmark(text: str, chain: str) -> Bookmark:
@@ -73,6 +81,6 @@ def read_bookmark(text: str, chain: str) -> Bookmark:
         bookmark = msgspec.json.decode(text, type=Bookmark)
     except msgspec.DecodeError as error:
         raise SourceError(f"{chain}: the stored position cannot be read ({error})") from None
-    if bookmark.version != _VERSION:
+    if bookmark.version != VERSION:
         raise SourceError(f"{chain}: the stored position was written by a later version of the program")
     return bookmark

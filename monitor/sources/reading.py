@@ -50,6 +50,11 @@ class Reading:
             self._header = (start if newline < 0 else start[:newline]).removesuffix(b"\r")
         return self._header
 
+    def known_header(self) -> bytes | None:
+        """The first line as it was read, even if the file has been cut off since."""
+        newline = self._start.find(b"\n")
+        return self._header if newline < 0 else self._start[:newline].removesuffix(b"\r")
+
     def take(self, limit: int, *, max_line: int, final: bool = False) -> Taken | None:
         """The next whole lines, about `limit` bytes; None when there are none (yet).
 

@@ -47,7 +47,8 @@ class Block:
                      may be empty when only the bookmark, a rejected line or the end is news
     offset           byte position of data[0] in the file's generation (uncompressed)
     first            data starts with the first line of the file's generation
-    header           that first line without its newline, or None when data is empty
+    header           that first line without its newline, or None when data is empty; when the file was cut off
+                     in place and its writer went on without the line, the one from before the cut
     bookmark         where to resume after this block, opaque text; commit it with what the block holds
     rejected         samples of lines that the source itself refused; offsets relative to data[0]
     rejected_counts  reason -> lines refused by the source: they are not in data

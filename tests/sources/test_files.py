@@ -290,6 +290,34 @@ def test_files_that_share_their_first_line(log: Path) -> None:
     assert {b.header for b in reader.blocks if b.data} == {b"dock,units"}
 
 
+@pytest.mark.parametrize("down", [False, True])
+@pytest.mark.parametrize("again", [False, True])
+def test_a_header_outlives_a_cut_in_place(log: Path, down: bool, again: bool) -> None:
+    """A writer that keeps its file open does not write the columns' names again after a copy-and-cut."""
+    header = [b"n,units\n"]
+    append(log, [*header, b"1,5\n"])
+    reader = Reader(log.parent).read()
+    if down:
+        reader.stop()
+    append(log, [b"2,6\n"])
+    shutil.copy(log, f"{log}.1")
+    os.truncate(log, 0)
+    append(log, [*(header if again else []), b"3,7\n"])
+    if down:
+        reader.restart()
+    reader.read()
+    last = [b for b in reader.blocks if b.data][-1]
+    assert (last.header, last.first, last.offset) == (b"n,units", again, 0)
+    append(log, [b"4,8\n"])
+    reader.restart().read()
+    last = [b for b in reader.blocks if b.data][-1]
+    assert (last.header, last.first, last.data) == (b"n,units", False, b"4,8\n")
+    log.rename(f"{log}.2")
+    append(log, [b"units,n\n", b"9,5\n"])
+    last = [b for b in reader.read().blocks if b.data][-1]
+    assert (last.header, last.first) == (b"units,n", True)
+
+
 def test_all_lines_the_same(log: Path) -> None:
     append(log, lines(0, 1) * 500)
     reader = Reader(log.parent, "a.log*").read()

@@ -20,6 +20,7 @@ LAYERS = {
     "monitor.alarms": 1,
     "monitor.parse": 1,
     "monitor.plan": 2,
+    "monitor.propose": 2,
     "monitor.engine": 2,
     "monitor.render": 2,
     "monitor.sources": 3,

@@ -16,6 +16,7 @@ from storage.errors import StoreError
 # A command's module is imported when the command is called: `tailgauge --help` must not load a compiler.
 COMMANDS = {
     "demo": "monitor.cli.demo:demo",
+    "propose": "monitor.cli.propose:propose_command",
     "fit": "monitor.cli.fit:fit",
     "settings": "monitor.cli.settings:settings",
     "run": "monitor.cli.run:run",

@@ -45,6 +45,10 @@ class Chain:
     def status(self) -> ChainStatus:
         """How far the chain is."""
         r = self.reading
+        if r is None and self._resume is not None:  # the file is closed for now, or looked for
+            mark, status = self._resume, status_of(self._resume.path)
+            size, modified = (mark.position, None) if status is None else (status.st_size, status.st_mtime_ns)
+            return ChainStatus(self.own, self.at_end, mark.path, max(size, mark.position), mark.position, modified)
         if r is None:
             return ChainStatus(self.own, self.at_end, None, 0, 0)
         return ChainStatus(self.own, self.at_end, r.content.path, r.size, r.position, r.content.modified())

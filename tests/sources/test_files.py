@@ -508,9 +508,10 @@ def test_many_files_take_turns(tmp_path: Path) -> None:
 def test_more_files_than_may_be_open(tmp_path: Path) -> None:
     for i in range(230):
         append(tmp_path / f"f{i:03}.log", lines(2 * i, 2 * i + 1))
+    before = len(os.listdir("/dev/fd"))
     reader = Reader(tmp_path, "*.log").read()
-    open_now = sum(c.path is not None for c in reader.source.chains())
-    assert open_now <= 200
+    assert len(os.listdir("/dev/fd")) - before <= 200
+    assert {(c.at_end, c.size - c.position) for c in reader.source.chains()} == {(True, 0)}
     for i in range(230):
         append(tmp_path / f"f{i:03}.log", lines(2 * i + 1, 2 * i + 2))
     assert sorted(reader.read().got) == sorted(lines(0, 460))

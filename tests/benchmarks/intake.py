@@ -102,9 +102,8 @@ def parse_all(parser: Parser, parts: list[bytes], header: bytes | None) -> Calla
     return run
 
 
-def follow(data: bytes) -> Callable[[], None]:
+def follow(data: bytes, folder: Path) -> Callable[[], None]:
     """The same lines through a followed file, unparsed."""
-    folder = Path(tempfile.mkdtemp())
     (folder / "a.log").write_bytes(data)
 
     def run() -> None:
@@ -116,12 +115,12 @@ def follow(data: bytes) -> Callable[[], None]:
     return run
 
 
-def main(n: int) -> None:
+def main(n: int, folder: Path) -> None:
     """Measure and print the table."""
     clean = block_of("json", n, 0)
     runs: dict[str, tuple[Callable[[], None], int]] = {"bare json.loads": (bare(clean), n)}
     runs["count newlines"] = (newlines(clean), n)
-    runs["follow a file"] = (follow(clean), n)
+    runs["follow a file"] = (follow(clean, folder), n)
     for name, format_ in FORMATS.items():
         for label, bad in (("clean", 0.0), ("1 % bad", 0.01)):
             data = block_of(name, n, bad)
@@ -139,4 +138,5 @@ def main(n: int) -> None:
 
 
 if __name__ == "__main__":
-    main(int(sys.argv[1]) if len(sys.argv) > 1 else 100_000)
+    with tempfile.TemporaryDirectory() as scratch:
+        main(int(sys.argv[1]) if len(sys.argv) > 1 else 100_000, Path(scratch))

@@ -53,6 +53,14 @@ def test_threads_and_chunks_change_nothing(kind, monkeypatch):
     assert_same(one, bootstrap_of(sample, **common, threads=3).run())
 
 
+@pytest.mark.parametrize("rule_out", [0.02, 0.1, 0.5, 0.97])
+def test_where_it_stops_does_not_depend_on_threads_and_chunks(rule_out, monkeypatch, sample):
+    one = bootstrap_of(sample, rule_out=rule_out).run()
+    monkeypatch.setattr(gof, "_ROWS_A_CHUNK", 7 * 400)
+    other = bootstrap_of(sample, rule_out=rule_out, threads=3).run()
+    assert_same(one, other)
+
+
 def test_an_interrupted_bootstrap_goes_on_where_it_was(sample):
     bootstrap = bootstrap_of(sample, replicates=900, stop_early=False)
     seen = []

@@ -183,3 +183,28 @@ def test_of_equal_distances_the_smallest_size_wins(counts, equal):
     all_of_them = distances(ladder, 2)
     assert np.sum(all_of_them == all_of_them.min()) == equal
     assert find_tail(sample, Options(min_tail=2)).xmin == 1.0
+
+
+def test_of_equal_distances_the_smallest_size_wins_even_if_another_was_seen_first():
+    sample = Sample(2.0 ** np.arange(4), np.array([4, 2, 1, 1]))
+    ladder = law_of(sample, Options(min_tail=2)).rungs.ladder
+    for hint in (-1, 0, 1, 2):
+        assert nearest(ladder, 2, np.inf, hint, False, new_scratch(4)).row == 0
+
+
+@pytest.mark.parametrize("kind", ["wide", "body and tail", "zeta 2.5"])
+@pytest.mark.parametrize("where", ["exact", "grid"])
+def test_whole_sizes_when_there_are_many(kind, where):
+    rng = np.random.default_rng(31)
+    for n in (1500, 3000, 3000):
+        sizes = WHOLE[kind](n, rng)
+        sample = Sample.of_sizes(sizes) if where == "exact" else on_grid(sizes)
+        assert_exact(sample, Options(counting="whole"))
+
+
+def test_whole_sizes_whose_tail_is_all_but_perfect():
+    """The smaller the best distance, the more is refused by bounds, and the tighter these must hold."""
+    rng = np.random.default_rng(32)
+    for alpha in (1.8, 2.5, 3.5):
+        quantile = np.floor(40 * quantiles(4000) ** (-1 / (alpha - 1)) * np.exp(rng.normal(0, 1e-3, 4000)) + 0.5)
+        assert_exact(Sample.of_sizes(quantile), Options(counting="whole"))

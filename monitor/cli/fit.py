@@ -5,7 +5,7 @@ from __future__ import annotations
 import sys
 import time
 from pathlib import Path
-from typing import Any, Literal, get_args
+from typing import TYPE_CHECKING, Any, Literal, get_args
 
 import click
 import msgspec
@@ -13,6 +13,7 @@ from rich.console import Console
 from rich.progress import BarColumn, Progress, TaskID, TextColumn, TimeRemainingColumn
 
 from monitor import VERSION
+from monitor.cli.chart import check_chart_place, write_chart
 from monitor.cli.output import json_option, print_json
 from monitor.cli.sizes import Sizes, read_sizes
 from monitor.errors import UsageError
@@ -23,6 +24,9 @@ from monitor.render.times import plural
 from monitor.render.words.fit import fit_sentences
 from monitor.tail.judgement import Judgement, Options, as_document
 from monitor.tail.sample import Sample
+
+if TYPE_CHECKING:
+    from monitor.tail.judge import Judged
 
 Lines = Literal["json", "csv", "combined", "pairs", "number", "pattern"]
 BY_SUFFIX: dict[str, Lines] = {".csv": "csv", ".json": "json", ".jsonl": "json", ".ndjson": "json"}
@@ -71,6 +75,12 @@ SHOW_AFTER = 2.0
 @click.option("--per", default="30d", show_default=True, help="The period that --limit is asked for.")
 @click.option("--time", "time_field", help="Where the event time stands; gives the rate that --limit needs.")
 @click.option("--no-rivals", is_flag=True, help="Leave the comparison with other tails out.")
+@click.option(
+    "--chart",
+    type=click.Path(path_type=Path),
+    metavar="FILE.svg",
+    help="Draw the data, the fit and its rivals into this file; an SVG that is there is replaced, nothing else is.",
+)
 @json_option
 def fit(**asked: Any) -> None:
     """Judge the tail of one sample: FILEs, or - for standard input.
@@ -80,10 +90,32 @@ def fit(**asked: Any) -> None:
     files = asked["files"] or ("-",)
     if files == ("-",) and sys.stdin.isatty():
         raise UsageError("no FILE given, and nothing is piped in. Name a file, or - for standard input.")
+    if asked["chart"] is not None:
+        check_chart_place(asked["chart"], files)
     bar = _LateBar()
     with bar:
         found = read_sizes(files, _line_format(files, asked), bar.bytes_read)
-        judgement = _judged(found, asked, bar)
+        sample = Sample.of_sizes(found.sizes)
+        judged = _judged(sample, found.days, asked, bar)
+    try:
+        # Before the words: their reader may have enough of them (`| head`), which ends the command.
+        if asked["chart"] is not None:
+            _draw(sample, judged, asked)
+    finally:
+        _print(judged.judgement, found, asked)
+
+
+def _draw(sample: Sample, judged: Judged, asked: dict[str, Any]) -> None:
+    # Loads the drawing library: only for those who want a picture.
+    from monitor.render.tail_picture import TailPicture, tail_picture
+
+    picture = TailPicture(
+        sample=sample, judgement=judged.judgement, unit=asked["unit"], draws=judged.draws, limit=asked["limit"]
+    )
+    write_chart(asked["chart"], tail_picture(picture))
+
+
+def _print(judgement: Judgement, found: Sizes, asked: dict[str, Any]) -> None:
     if asked["as_json"]:
         print_json(_document(judgement, found, asked["unit"]))
         return
@@ -91,12 +123,10 @@ def fit(**asked: Any) -> None:
         click.echo(line)
 
 
-def _judged(found: Sizes, asked: dict[str, Any], bar: _LateBar) -> Judgement:
+def _judged(sample: Sample, days: float | None, asked: dict[str, Any], bar: _LateBar) -> Judged:
     # Loads the compiled loops: only now, so that a wrong option is told at once.
-    from monitor.tail.judge import judge
+    from monitor.tail.judge import Judged, judge_with_draws
 
-    sizes = found.sizes
-    days = found.days
     per = parse_span(asked["per"])
     if not per:
         raise UsageError(f'--per: "{asked["per"]}" is not a span of time; expected such as "30d" or "12h".')
@@ -105,13 +135,14 @@ def _judged(found: Sizes, asked: dict[str, Any], bar: _LateBar) -> Judgement:
         stop_early=not asked["all_replicates"], rule_out=asked["rule_out"], seed=asked["seed"],
         one_in=tuple(sorted(set(asked["one_in"]))) or (10_000,), limit=asked["limit"],
         period_days=per / DAY if asked["limit"] is not None else None,
-        events_per_day=sizes.size / days if days else None, rivals=not asked["no_rivals"], threads=2,
+        events_per_day=sample.n / days if days else None, rivals=not asked["no_rivals"], threads=2,
     )  # fmt: skip
-    judgement = judge(Sample.of_sizes(sizes), options, progress=bar.replicates_done)
+    judged = judge_with_draws(sample, options, progress=bar.replicates_done)
+    judgement = judged.judgement
     if asked["limit"] is not None and judgement.limit is None and judgement.alpha is not None:
         missing = "--limit needs the rate of events: name the field of the event time with --time"
         judgement = msgspec.structs.replace(judgement, warnings=(*judgement.warnings, missing))
-    return judgement
+    return Judged(judgement, judged.draws)
 
 
 def _line_format(files: tuple[str, ...], asked: dict[str, Any]) -> LineFormat:

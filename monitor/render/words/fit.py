@@ -146,6 +146,17 @@ def rival_words(rival: Rival) -> str:
     return f"{head}{verdict} ({figures})."
 
 
+def rival_verdict(rival: Rival) -> str:
+    """The same in a few words, beside the rival's name: 'fits worse, p 0.02'."""
+    words = {
+        "power law": "fits worse",
+        "rival": "fits better",
+        "neither": "cannot be told apart",
+        "not determined": "not determined",
+    }[rival.favours]
+    return words if rival.p is None else f"{words}, p {chance_text(rival.p)}"
+
+
 def _moments(judgement: Judgement) -> list[str]:
     # The judgement's own warnings say it with the figures; saying it twice helps nobody.
     if judgement.alpha is None or any("infinite" in warning for warning in judgement.warnings):

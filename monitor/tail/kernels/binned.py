@@ -21,10 +21,13 @@ from typing import Any
 
 from monitor.tail.kernels.arithmetic import exp_apart, exp_nonpositive, log_one_plus, logarithm
 from monitor.tail.kernels.compiling import kernel
-from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
+from monitor.tail.kernels.ladder import PROBES, Ladder, Scratch, Worst, distance_of, noted
 
 SLACK = 1e-12
 """More than any rounding error of a deviation: bounds must pass a distance by this to refuse."""
+
+_STRIDE = 32
+"""Rows looked at together; scratch.grid has room for more."""
 
 
 @kernel
@@ -36,13 +39,13 @@ def _log1p(x: float) -> Any:
 
 
 @kernel
-def binned_rate(ladder: Any, row: int) -> Any:
+def binned_rate(ladder: Ladder, row: int) -> Any:
     """g of candidate `row`: exponent less one, per cell."""
     return _log1p(ladder.events[row] / ladder.spread[row])
 
 
 @kernel
-def _look(ladder: Any, row: int, j: int, rate: float, worst: Worst) -> Any:
+def _look(ladder: Ladder, row: int, j: int, rate: float, worst: Worst) -> Any:
     """`worst` after comparing data and model at the edges of row j."""
     share = 1.0 / ladder.events[row]
     at = exp_apart(-rate * (ladder.place[j] - ladder.place[row]))
@@ -51,7 +54,7 @@ def _look(ladder: Any, row: int, j: int, rate: float, worst: Worst) -> Any:
 
 
 @kernel
-def binned_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
+def binned_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`.
 
     A grid has some thousands of rows at most, so beyond a few probes all are looked at, in a loop that compiles to
@@ -73,27 +76,31 @@ def binned_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
 
 
 @kernel
-def _all_looked_at(ladder: Any, row: int, rate: float, worst: Worst, stop: float, scratch: Any) -> Any:
+def _all_looked_at(ladder: Ladder, row: int, rate: float, worst: Worst, stop: float, scratch: Scratch) -> Any:
     """`worst` after a walk over the rows in strides; a stride is skipped where its ends show that nothing in it
     can be worse, by the same argument as in measured.py."""
     place = ladder.place
     events = ladder.events
     share = 1.0 / events[row]
     rows = place.size
-    stride = 16
+    models = scratch.grid
     left = row
     after_left = exp_nonpositive(-rate)
     while left < rows - 1:
-        right = min(left + stride, rows - 1)
-        at_right = exp_nonpositive(-rate * (place[right] - place[row]))
-        after_right = exp_nonpositive(-rate * (place[right] + 1.0 - place[row]))
+        right = min(left + _STRIDE, rows - 1)
+        at_right = exp_apart(-rate * (place[right] - place[row]))
+        after_right = exp_apart(-rate * (place[right] + 1.0 - place[row]))
         worst = noted(worst, right, events[right] * share - at_right, after_right - events[right + 1] * share)
         enough = distance_of(worst) - SLACK
         if events[left + 1] * share - at_right > enough or after_left - events[right] * share > enough:
+            for j in range(left + 1, right + 1):
+                models[j - left] = exp_nonpositive(-rate * (place[j] - place[row]))
             for j in range(left + 1, right):
-                at = exp_nonpositive(-rate * (place[j] - place[row]))
-                beyond = exp_nonpositive(-rate * (place[j] + 1.0 - place[row]))
-                worst = noted(worst, j, events[j] * share - at, beyond - events[j + 1] * share)
+                # The upper edge of an occupied cell is mostly the lower edge of the next.
+                beyond = models[j + 1 - left]
+                if place[j + 1] > place[j] + 1.0:
+                    beyond = exp_apart(-rate * (place[j] + 1.0 - place[row]))
+                worst = noted(worst, j, events[j] * share - models[j - left], beyond - events[j + 1] * share)
             if distance_of(worst) > stop:
                 return worst
         left = right
@@ -102,7 +109,7 @@ def _all_looked_at(ladder: Any, row: int, rate: float, worst: Worst, stop: float
 
 
 @kernel
-def binned_bound(ladder: Any, p: int, q: int, j: int, above: bool) -> Any:
+def binned_bound(ladder: Ladder, p: int, q: int, j: int, above: bool) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     events = ladder.events
     few = events[q]

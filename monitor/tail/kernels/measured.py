@@ -27,7 +27,7 @@ import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_nonpositive, log_in_place
 from monitor.tail.kernels.compiling import helper, int64, kernel
-from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
+from monitor.tail.kernels.ladder import PROBES, Ladder, Scratch, Worst, distance_of, noted
 
 SLACK = 1e-12
 """More than any rounding error of a deviation: bounds must pass a distance by this to refuse."""
@@ -63,7 +63,7 @@ def build(sizes: Any, counts: Any, y: Any, events: Any, spread: Any) -> Any:
 
 
 @helper
-def _look(ladder: Any, row: int, j: int, worst: Worst) -> Any:
+def _look(ladder: Ladder, row: int, j: int, worst: Worst) -> Any:
     """`worst` after comparing data and model of candidate `row` at row j."""
     events = ladder.events
     share = 1.0 / events[row]
@@ -72,7 +72,7 @@ def _look(ladder: Any, row: int, j: int, worst: Worst) -> Any:
 
 
 @kernel
-def _probed(ladder: Any, row: int, probes: Any) -> Any:
+def _probed(ladder: Ladder, row: int, probes: Any) -> Any:
     """Largest deviations at the remembered witnesses and at 16 rows spread over the tail."""
     rows = ladder.place.size
     worst = Worst(0.0, row, 1.0 - ladder.events[row + 1] * (1.0 / ladder.events[row]), row)
@@ -87,7 +87,7 @@ def _probed(ladder: Any, row: int, probes: Any) -> Any:
 
 
 @kernel
-def _searched(ladder: Any, row: int, worst: Worst, ends: Any, scratch: Any) -> Any:
+def _searched(ladder: Ladder, row: int, worst: Worst, ends: Any, scratch: Scratch) -> Any:
     """`worst` after searching the stretch between two rows; ends = (left, right, model at left, model at right)."""
     events = ladder.events
     share = 1.0 / events[row]
@@ -118,7 +118,7 @@ def _searched(ladder: Any, row: int, worst: Worst, ends: Any, scratch: Any) -> A
 
 
 @kernel
-def measured_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
+def measured_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`; above it, only
     so much is certain that the distance passes `stop`."""
     worst = _probed(ladder, row, scratch.probes)
@@ -152,7 +152,7 @@ def measured_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any
 
 
 @helper
-def measured_bound(ladder: Any, p: int, q: int, j: int, above: bool) -> Any:
+def measured_bound(ladder: Ladder, p: int, q: int, j: int, above: bool) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     y = ladder.place
     events = ladder.events

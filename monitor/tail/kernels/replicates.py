@@ -18,7 +18,7 @@ import numpy as np
 from monitor.tail.kernels.chance import binomial, resampled, start
 from monitor.tail.kernels.compiling import int64, kernel
 from monitor.tail.kernels.drawing import anchor, draw_body, draw_tail, part
-from monitor.tail.kernels.ladder import WHOLE, last_candidate
+from monitor.tail.kernels.ladder import WHOLE, Ladder, Scratch, last_candidate
 from monitor.tail.kernels.scanning import distance_at, nearest, rate_of
 from monitor.tail.kernels.whole import prepared
 
@@ -34,7 +34,7 @@ def _keep_nothing(kept: Any, r: int) -> None:
 
 
 @kernel
-def _keep(kept: Any, r: int, ladder: Any, row: int, distance: float, origin: Any) -> None:
+def _keep(kept: Any, r: int, ladder: Ladder, row: int, distance: float, origin: Any) -> None:
     kept.distance[r] = distance
     kept.rate[r] = rate_of(ladder, row)
     kept.place[r] = ladder.place[row]
@@ -43,7 +43,7 @@ def _keep(kept: Any, r: int, ladder: Any, row: int, distance: float, origin: Any
 
 
 @kernel
-def _judge_given(ladder: Any, recipe: Any, kept: Any, r: int, scratch: Any) -> None:
+def _judge_given(ladder: Ladder, recipe: Any, kept: Any, r: int, scratch: Scratch) -> None:
     """The tail at a given xmin, the ladder's first row; nothing else is a candidate."""
     if ladder.events[0] < max(recipe.least, 2) or ladder.spread[0] <= 0.0:
         _keep_nothing(kept, r)

@@ -22,7 +22,9 @@ from monitor.tail.kernels.ladder import (
     STARTS,
     WORTH_A_GUESS,
     Best,
+    Ladder,
     Near,
+    Scratch,
     Worst,
     better,
     distance_of,
@@ -36,7 +38,7 @@ from monitor.tail.kernels.whole import whole_bound, whole_deviations, whole_rate
 
 
 @kernel
-def rate_of(ladder: Any, row: int) -> Any:
+def rate_of(ladder: Ladder, row: int) -> Any:
     """The fitted exponent less one of candidate `row` (binned: per cell instead of per unit of ln(size))."""
     if ladder.law == MEASURED:
         return ladder.events[row] / ladder.spread[row]
@@ -46,7 +48,7 @@ def rate_of(ladder: Any, row: int) -> Any:
 
 
 @kernel
-def deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
+def deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`; above it, only
     so much is certain that the distance passes `stop`."""
     if ladder.law == MEASURED:
@@ -57,7 +59,7 @@ def deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
 
 
 @helper
-def _bound(ladder: Any, p: int, q: int, j: int, above: bool, scratch: Any) -> Any:
+def _bound(ladder: Ladder, p: int, q: int, j: int, above: bool, scratch: Scratch) -> Any:
     if ladder.law == MEASURED:
         return measured_bound(ladder, p, q, j, above)
     if ladder.law == BINNED:
@@ -66,7 +68,7 @@ def _bound(ladder: Any, p: int, q: int, j: int, above: bool, scratch: Any) -> An
 
 
 @helper
-def refused(ladder: Any, p: int, q: int, worst: Worst, limit: float, scratch: Any) -> Any:
+def refused(ladder: Ladder, p: int, q: int, worst: Worst, limit: float, scratch: Scratch) -> Any:
     """True when one of the two witnesses shows that every candidate in p..q is farther than `limit`."""
     for above in (True, False):
         j = worst.above_row if above else worst.below_row
@@ -76,7 +78,7 @@ def refused(ladder: Any, p: int, q: int, worst: Worst, limit: float, scratch: An
 
 
 @kernel
-def _first_guesses(ladder: Any, last: int, best: Best, hint: int, first_hit: bool, scratch: Any) -> Any:
+def _first_guesses(ladder: Ladder, last: int, best: Best, hint: int, first_hit: bool, scratch: Scratch) -> Any:
     """A good candidate soon: the hint, a few spread over all tails, then a search around the best of them."""
     events = ladder.events
     slot = int64(0)
@@ -113,7 +115,7 @@ def _first_guesses(ladder: Any, last: int, best: Best, hint: int, first_hit: boo
 
 
 @kernel
-def nearest(ladder: Any, last: int, least_far: float, hint: int, first_hit: bool, scratch: Any) -> Any:
+def nearest(ladder: Ladder, last: int, least_far: float, hint: int, first_hit: bool, scratch: Scratch) -> Any:
     """The candidate in rows 0..last with the smallest distance, if that is below `least_far`.
 
     Parameters: hint, a row worth trying first, or -1; first_hit, stop at the first candidate nearer than
@@ -150,7 +152,7 @@ def nearest(ladder: Any, last: int, least_far: float, hint: int, first_hit: bool
 
 
 @kernel
-def _edge(ladder: Any, last: int, limit: float, scratch: Any) -> Any:
+def _edge(ladder: Ladder, last: int, limit: float, scratch: Scratch) -> Any:
     """Last candidate no farther than `limit`, walking down from the top; -1 if there is none."""
     row = last
     length = int64(1)
@@ -172,7 +174,7 @@ def _edge(ladder: Any, last: int, limit: float, scratch: Any) -> Any:
 
 
 @kernel
-def near(ladder: Any, last: int, limit: float, best_row: Any, scratch: Any) -> Any:
+def near(ladder: Ladder, last: int, limit: float, best_row: Any, scratch: Scratch) -> Any:
     """Range of rows and rates (exponent minus one) of all candidates no farther than `limit` (a Near).
 
     Walking up, a candidate is only evaluated where its rate would widen the range found so far.
@@ -205,7 +207,7 @@ def near(ladder: Any, last: int, limit: float, best_row: Any, scratch: Any) -> A
 
 
 @kernel
-def distance_at(ladder: Any, row: int, scratch: Any) -> Any:
+def distance_at(ladder: Ladder, row: int, scratch: Scratch) -> Any:
     """Distance of one candidate."""
     scratch.probes[:] = -1
     return distance_of(deviations(ladder, row, np.inf, scratch))

@@ -25,7 +25,7 @@ import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_ratio, logarithm
 from monitor.tail.kernels.compiling import int64, kernel
-from monitor.tail.kernels.ladder import PROBES, Worst, distance_of, noted
+from monitor.tail.kernels.ladder import PROBES, Ladder, Scratch, Worst, distance_of, noted
 from monitor.tail.kernels.zeta import (
     NEGLIGIBLE,
     by_series,
@@ -56,14 +56,14 @@ class Zeta(NamedTuple):
 
 
 @kernel
-def whole_rate(ladder: Any, row: int) -> Any:
+def whole_rate(ladder: Ladder, row: int) -> Any:
     """Exponent less one of candidate `row`."""
     held = ladder.events[row]
     return exponent(ladder.place[row], ladder.spread[row] / held, ladder.within[row] / held, 0.0) - 1.0
 
 
 @kernel
-def prepared(s: float, start: float, scratch: Any) -> Any:
+def prepared(s: float, start: float, scratch: Scratch) -> Any:
     """The survival function of the zeta law from `start` on: terms[k] = sum over l >= k of (1 + l/start)^-s."""
     terms = scratch.terms
     fill_series(s, scratch.series)
@@ -84,7 +84,7 @@ def prepared(s: float, start: float, scratch: Any) -> Any:
 
 
 @kernel
-def survival(law: Zeta, v: float, scratch: Any) -> Any:
+def survival(law: Zeta, v: float, scratch: Scratch) -> Any:
     """P(X >= v) for a whole v >= law.start."""
     if v >= law.series_from:
         return exp_apart(-law.s * log_ratio(v, law.start)) * by_series(scratch.series, v) * law.scale
@@ -95,7 +95,7 @@ def survival(law: Zeta, v: float, scratch: Any) -> Any:
 
 
 @kernel
-def _look(ladder: Any, row: int, j: int, law: Zeta, worst: Worst, scratch: Any) -> Any:
+def _look(ladder: Ladder, row: int, j: int, law: Zeta, worst: Worst, scratch: Scratch) -> Any:
     """(worst after comparing data and model at row j, survival at its lowest size, survival beyond it)."""
     share = 1.0 / ladder.events[row]
     at = survival(law, ladder.place[j], scratch)
@@ -108,7 +108,7 @@ def _look(ladder: Any, row: int, j: int, law: Zeta, worst: Worst, scratch: Any) 
 
 
 @kernel
-def _searched(ladder: Any, row: int, law: Zeta, worst: Worst, stop: float, scratch: Any, depth: int) -> Any:
+def _searched(ladder: Ladder, row: int, law: Zeta, worst: Worst, stop: float, scratch: Scratch, depth: int) -> Any:
     """`worst` after searching all stretches on the stack: between rows l and r the deviations are at most
     W_{l+1}/W_i - P(X >= u_r) and P(X >= u'_l) - W_r/W_i."""
     events = ladder.events
@@ -138,7 +138,7 @@ def _searched(ladder: Any, row: int, law: Zeta, worst: Worst, stop: float, scrat
 
 
 @kernel
-def whole_deviations(ladder: Any, row: int, stop: float, scratch: Any) -> Any:
+def whole_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`."""
     rows = ladder.place.size
     s = whole_rate(ladder, row) + 1.0
@@ -180,7 +180,7 @@ def _survival_ratio(s: float, v: float, start: float, series: Any) -> Any:
 
 
 @kernel
-def whole_bound(ladder: Any, p: int, q: int, j: int, above: bool, series: Any) -> Any:
+def whole_bound(ladder: Ladder, p: int, q: int, j: int, above: bool, series: Any) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     events = ladder.events
     low = ladder.place[p]
@@ -202,7 +202,7 @@ def whole_bound(ladder: Any, p: int, q: int, j: int, above: bool, series: Any) -
 
 
 @kernel
-def fill_survivals(s: float, start: float, values: Any, out: Any, scratch: Any) -> None:
+def fill_survivals(s: float, start: float, values: Any, out: Any, scratch: Scratch) -> None:
     """P(X >= v) of the zeta law from `start` on, for float64 (n,) whole values, into `out`."""
     law = prepared(s, start, scratch)
     for i in range(values.size):
@@ -210,7 +210,7 @@ def fill_survivals(s: float, start: float, values: Any, out: Any, scratch: Any) 
 
 
 @kernel
-def log_normaliser(s: float, start: float, scratch: Any) -> Any:
+def log_normaliser(s: float, start: float, scratch: Scratch) -> Any:
     """ln(start^s zeta(s, start)): what a log-likelihood in ln(X/start) is normalised by."""
     fill_series(s, scratch.series)
     return logarithm(scaled_zeta(s, start, scratch.series))

@@ -59,6 +59,7 @@ def check(reader: Reader) -> list[Finding]:
             _file(reader),
             _panes(reader),
             _parts(reader),
+            _quarantine(reader),
             _chains(reader),
             _totals(reader),
             _refits(reader),
@@ -100,6 +101,16 @@ def _parts(reader: Reader) -> Finding:
         except StoreCorrupt as error:
             faults.append(f"{name}: {error}")
     return Finding(what="parts of open panes", looked_at=count, faults=tuple(faults))
+
+
+def _quarantine(reader: Reader) -> Finding:
+    """Damaged parts that the daemon set aside: their events are counted, but in no pane."""
+    rows = list(reader.db.query("select * from quarantine order by id"))
+    return Finding(
+        what="damaged parts set aside",
+        looked_at=len(rows),
+        faults=tuple(f"{row['stream']} at {row['from_ns']}: {row['events']} events: {row['reason']}" for row in rows),
+    )
 
 
 def balance(chain: ChainState) -> int:

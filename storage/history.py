@@ -217,15 +217,17 @@ class Reader:
         last: int | None = None,
     ) -> list[RefitStored]:
         """Refits whose window ends inside [start, end], newest last; with `last`, the newest so many a stream."""
-        found = self._rows(
-            "select * from (select *, row_number() over (partition by stream order by to_ns desc) as place from refit"
-            " where (?1 is null or stream = ?1) and (?2 is null or to_ns >= ?2) and (?3 is null or to_ns <= ?3))"
-            " where ?4 is null or place <= ?4 order by to_ns, stream",
-            stream,
-            start,
-            end,
-            last,
-        )
+        wanted = {"stream = ?": stream, "to_ns >= ?": start, "to_ns <= ?": end}
+        given = {clause: value for clause, value in wanted.items() if value is not None}
+        where = " and ".join(given) or "true"
+        if stream is not None and last is not None:  # read from the end of the index, not the whole history
+            sql = f"select *, 1 as place from refit where {where} order by to_ns desc limit ?"
+        else:
+            sql = (
+                "select * from (select *, row_number() over (partition by stream order by to_ns desc) as place"
+                f" from refit where {where}) where place <= ifnull(?, place) order by to_ns, stream"
+            )
+        found = sorted(self._rows(sql, *given.values(), last), key=lambda row: (row["to_ns"], row["stream"]))
         return [
             RefitStored(**{**_without(row, "from_ns", "to_ns", "place"), "start": row["from_ns"], "end": row["to_ns"]})
             for row in found

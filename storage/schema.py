@@ -63,6 +63,9 @@ def m001_first_tables(db: Database) -> None:
             panes_to integer not null, effective_from integer not null, known_at integer not null,
             by text, note text) strict""",
         "create index baseline_of on baseline (stream, effective_from)",
+        """create table quarantine (
+            id integer primary key, stream text not null, from_ns integer not null, events integer not null,
+            reason text not null, content blob not null, known_at integer not null) strict""",
         """create table forgotten (
             id integer primary key, stream text not null, from_ns integer not null, to_ns integer not null,
             panes integer not null, events integer not null, refits integer not null, digest text not null,

@@ -113,6 +113,8 @@ class Store:
     def __init__(self, path: Path, lock: TextIO) -> None:
         self.path = path
         self._lock = lock
+        self.damaged: list[str] = []
+        """Sentences about damaged parts that were set aside; the caller tells them and empties the list."""
         with named_errors(path):
             connection = sqlite3.connect(str(path), isolation_level=None, timeout=10.0)
             self.db = Database(connection, execute_plugins=False)
@@ -218,14 +220,28 @@ class Store:
             key = (fact.stream, fact.start)
             self._parts[key] += 1
             if self._parts[key] > PARTS_BEFORE_COMPACTION:
-                self._compact(fact.stream, fact.start, fact.end)
+                self._compact(fact)
 
-    def _sum_of_parts(self, stream: str, start: int) -> panes.Pane:
-        rows = self.db.execute("select content from pane_part where stream = ? and from_ns = ?", [stream, start])
-        return panes.add((panes.decode(row[0]) for row in rows), self.identity.distinct)
+    def _sum_of_parts(self, stream: str, start: int, now: int) -> panes.Pane:
+        """The pane so far. A damaged part is set aside, so that one bad block does not stop the watch."""
+        found = []
+        for row in self.db.execute(
+            "select id, events, content from pane_part where stream = ? and from_ns = ?", [stream, start]
+        ).fetchall():
+            try:
+                found.append(panes.decode(row[2]))
+            except StoreCorrupt as error:
+                aside = {"stream": stream, "from_ns": start, "events": row[1], "reason": str(error), "content": row[2],
+                         "known_at": now}  # fmt: skip
+                self.db["quarantine"].insert(aside)
+                self.damaged.append(
+                    f"{self.path}: a part of the pane {stream} at {start} with {row[1]} events: {error}"
+                )
+        return panes.add(found, self.identity.distinct)
 
-    def _compact(self, stream: str, start: int, end: int) -> None:
-        total = self._sum_of_parts(stream, start)
+    def _compact(self, part: PanePart) -> None:
+        stream, start, end = part.stream, part.start, part.end
+        total = self._sum_of_parts(stream, start, 0)
         self.db.execute("delete from pane_part where stream = ? and from_ns = ?", [stream, start])
         self._parts[stream, start] = 0
         self._put_parts([PanePart(stream=stream, start=start, end=end, content=total)])
@@ -233,7 +249,7 @@ class Store:
     def _seal(self, facts: list[PaneSealed]) -> None:
         rows, jobs = [], []
         for fact in facts:
-            total = self._sum_of_parts(fact.stream, fact.start)
+            total = self._sum_of_parts(fact.stream, fact.start, fact.known_at)
             rows.append(
                 {
                     "stream": fact.stream, "from_ns": fact.start, "to_ns": fact.end, "events": total.n,

@@ -88,6 +88,9 @@ class Loop:
             return False
         self._pending = []
         self._retry_after = FIRST_RETRY
+        for sentence in self.store.damaged:
+            self.log.error(sentence)
+        self.store.damaged.clear()
         committed(self.state, facts)
         for fact in facts:
             self._tell(fact)

@@ -310,3 +310,38 @@ def test_old_panes_and_refits_go_but_not_what_a_kept_refit_reads(path: Path) -> 
         assert [f.faults for f in check(reader) if f.what == "events of streams"] == [
             ("0 events read, 12 counted in streams",)
         ]
+
+
+def test_a_damaged_part_is_set_aside_and_the_pane_goes_on(path: Path) -> None:
+    with opened(path) as store:
+        store.commit(step(1))
+        store.commit(step(2))
+        blob = bytearray(store.db.execute("select content from pane_part where id = 1").fetchone()[0])
+        blob[60] ^= 8
+        store.db.execute("update pane_part set content = ? where id = 1", [bytes(blob)])
+        store.commit(step(3, seal=True))
+        assert len(store.damaged) == 1
+        assert "20 events" in store.damaged[0]
+    with open_reader(path) as reader:
+        assert [pane.events for pane in reader.panes()] == [40]
+        faults = {finding.what: finding.faults for finding in check(reader)}
+        assert len(faults["damaged parts set aside"]) == 1
+        assert faults["events of streams"] == ("a: 60 events counted, 40 in its panes",)
+
+
+def test_the_last_refits_of_a_stream_are_the_newest_ones(path: Path) -> None:
+    def refit(stream: str, end: int) -> RefitStored:
+        return RefitStored(
+            id=f"{stream}{end}", stream=stream, start=0, end=end, state="done", panes=1, window_digest="", settings="s",
+            seed=1, judgement="null", comparison=None, flags="[]", reason=None, attempts=1, seconds=0.0, versions="{}",
+            known_at=1,
+        )  # fmt: skip
+
+    with opened(path) as store:
+        store.commit([refit(stream, end) for stream in "ab" for end in (3, 1, 2)])
+    with open_reader(path) as reader:
+        assert [r.id for r in reader.refits()] == ["a1", "b1", "a2", "b2", "a3", "b3"]
+        assert [r.id for r in reader.refits("a", last=2)] == ["a2", "a3"]
+        assert [r.id for r in reader.refits(last=1)] == ["a3", "b3"]
+        assert [r.id for r in reader.refits("b", start=2, end=2)] == ["b2"]
+        assert reader.refits("c") == []

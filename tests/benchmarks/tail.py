@@ -151,11 +151,10 @@ def grids(rng) -> list[Line]:
 
 
 def starts() -> list[Line]:
-    """First compilation into an empty cache, and a start from it, in processes of their own."""
-    code = (
-        "import time; t = time.perf_counter(); from monitor.tail.judge import compile_everything; compile_everything()"
-    )
-    code += "; print(time.perf_counter() - t)"
+    """First compilation into an empty cache, and a start from it: processor time of processes of their own, from the
+    start of the interpreter on."""
+    code = "from monitor.tail.judge import compile_everything; compile_everything(); "
+    code += "import time; print(time.process_time())"
     with tempfile.TemporaryDirectory() as cache:
         environment = {**os.environ, "NUMBA_CACHE_DIR": cache, "PYTHONPATH": str(ROOT)}
 

@@ -97,17 +97,21 @@ def _first_guesses(ladder: Ladder, last: int, best: Best, hint: int, first_hit: 
     if best.row < 0 or last < WORTH_A_GUESS:
         return best
     step = 0.5 * logarithm(events[0] / events[last]) / STARTS
-    while step * events[best.row] >= 0.5:
+    adjacent = False
+    while not adjacent:
         moved = False
+        adjacent = True
         for sign in range(2):
             row = neighbour_row(events, last, best.row, step if sign == 1 else -step)
             if row == best.row:
                 continue
+            adjacent = adjacent and abs(row - best.row) == 1
             worst = deviations(ladder, row, best.distance, scratch)
             slot = remember(scratch.probes, slot, witness_of(worst))
             if better(best, row, distance_of(worst)):
                 best = Best(row, distance_of(worst))
                 moved = True
+                adjacent = False
                 break
         if not moved:
             step *= 0.5

@@ -156,7 +156,7 @@ class Law(ABC):
             xmin=float(rungs.sizes[row]),
             start=start,
             n_tail=int(rungs.ladder.events[row]),
-            n=self.sample.n,
+            n=int(self.rungs.ladder.events[0]),
             ks_distance=float(distance),
             counting=self.options.counting,
             start_cell=self.cell(float(rungs.sizes[row])),

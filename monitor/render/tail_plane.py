@@ -15,12 +15,14 @@ from monitor.tail.sample import Sample
 
 Floats = NDArray[np.float64]
 
-LEAST_SPAN = 0.5
-"""Decades across: sizes closer together are drawn as close together as they are."""
+LEAST_SPAN = 0.01
+"""Decades across: sizes closer together than 2.3 % are drawn as close together as they are."""
 _LAST_LOG = 307.0
 _FARTHEST_LIMIT = 3.0
 """Decades beyond the data at which a limit is still drawn; further out it would press the data into a corner."""
-_STEPS = ((1.0,), (1.0, 2.0, 5.0), (1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0))
+_NARROW = 0.6
+"""Decades; on a narrower axis multiples of powers of ten are no help between the ticks."""
+_STEPS = ((1.0,), (1.0, 2.0, 5.0))
 _MOST_TICKS = 9
 _CELL = 0.6
 """Pixels: of data points inside one such square the first alone is drawn."""
@@ -80,13 +82,14 @@ def ends_of(sample: Sample, judgement: Judgement, limit: float | None) -> Ends:
     right = high
     if limit is not None and high < log10(limit) <= high + _FARTHEST_LIMIT:
         right = log10(limit)
-    right = min(max(right, low + LEAST_SPAN / 2) + 0.04 * max(right - low, LEAST_SPAN), _LAST_LOG)
+    right = min(max(right, low + LEAST_SPAN / 2) + 0.04 * max(right - max(low, right - 5), LEAST_SPAN), _LAST_LOG)
     if xmin is not None:
-        low = max(low, log10(xmin) - max(right - log10(xmin), 1.0))
+        low = max(low, log10(xmin) - max(right - log10(xmin), LEAST_SPAN))
     if limit is not None and low - _FARTHEST_LIMIT <= log10(limit) < low:
         low = log10(limit)
     bottom = -log10(max(sample.n, 10)) - 0.3
-    bottom = min(bottom, max(_log_share_at(judgement, right), bottom - _FARTHEST_LIMIT))
+    lowest = bottom - (1.0 if limit is None else _FARTHEST_LIMIT)
+    bottom = min(bottom, max(_log_share_at(judgement, right), lowest))
     return Ends(low - max(0.02 * (right - low), LEAST_SPAN - (right - low)), right, bottom)
 
 
@@ -132,7 +135,7 @@ def _whole(power: int) -> str:
 
 
 def size_ticks(plane: Plane) -> list[Tick]:
-    """Powers of ten; between them round numbers where there are few powers, fewer where there are many."""
+    """Powers of ten, fewer where there are many; where there are few, 2 and 5 times them, or equal steps of size."""
     powers = range(floor(plane.left), ceil(plane.right) + 1)
     found: list[Tick] = []
     for steps in _STEPS:
@@ -140,20 +143,28 @@ def size_ticks(plane: Plane) -> list[Tick]:
         found = [tick for tick in found if plane.holds(tick.place)]
         if len(found) >= 3:
             break
+    else:
+        return _equal_steps(plane)
     every = ceil(len(found) / _MOST_TICKS)
     return found if every == 1 else [tick for tick in found if round(tick.place) % every == 0]
 
 
+def _equal_steps(plane: Plane) -> list[Tick]:
+    """Multiples of 1, 2 or 5 times a power of ten, four to ten of them."""
+    low, high = 10.0**plane.left, 10.0**plane.right
+    power = floor(log10((high - low) / 4))
+    step = max(s for s in (1, 2, 5) if s * 10.0**power <= (high - low) / 4)
+    numbers = range(ceil(low / 10.0**power / step), floor(high / 10.0**power / step) + 1)
+    return [Tick(log10(k * step) + power, at_place(k * step * 10.0**power, power)) for k in numbers]
+
+
 def _size(step: float, power: int) -> str:
-    digits = 0 if step == int(step) else 1
-    if -5 < power < 7:
-        return at_place(step * 10.0**power, min(power - digits, 0))
-    return f"{step:g}e{power}"
+    return at_place(step * 10.0**power, min(power, 0)) if -5 < power < 7 else f"{step:g}e{power}"
 
 
 def minor_ticks(plane: Plane) -> list[float]:
-    """Places of 2 to 9 times each power of ten, while there are few enough powers for them to be told apart."""
-    if plane.right - plane.left > 8:
+    """Places of 2 to 9 times each power of ten, where there are enough and not too many of them to help the eye."""
+    if not _NARROW <= plane.right - plane.left <= 8:
         return []
     powers: Sequence[int] = range(floor(plane.left), ceil(plane.right) + 1)
     places = [k + log10(step) for k in powers for step in range(2, 10)]

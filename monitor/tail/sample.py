@@ -38,12 +38,10 @@ class Sample:
     def of_sizes(cls, sizes: NDArray[np.float64]) -> Sample:
         """Count raw sizes, float64 (n,) in any order, all > 0 and finite."""
         ordered = np.sort(np.asarray(sizes, np.float64))
-        ends = np.flatnonzero(ordered[1:] != ordered[:-1])
-        if ends.size == ordered.size - 1:  # no two alike, as a million measured sizes mostly are: twice as fast
+        same = ordered[1:] == ordered[:-1]
+        if not same.any():  # as with most measured sizes: nothing to count
             return cls(ordered, np.ones(ordered.size, np.int64))
-        if ordered.size == 0:
-            return cls(ordered, np.zeros(0, np.int64))
-        ends = np.append(ends, ordered.size - 1)
+        ends = np.append(np.flatnonzero(~same), ordered.size - 1)
         return cls(ordered[ends], np.diff(ends, prepend=-1))
 
     @classmethod

@@ -150,8 +150,10 @@ def mark_unreadable(cut_: Cut, findings: Findings) -> None:
 def assemble(cut_: Cut, found: Findings, *, scale: float, has_time: bool, has_stream: bool) -> ParsedLines:
     """Judge sizes, times and streams, and draw up the account."""
     verdict = found.verdict
-    with np.errstate(over="ignore", under="ignore", invalid="ignore"):
-        sizes = found.sizes * scale
+    sizes = found.sizes
+    if scale != 1:
+        with np.errstate(over="ignore", under="ignore", invalid="ignore"):
+            sizes = sizes * scale
     open_ = verdict == OK
     for reason, hit in (
         (why.NOT_FINITE, ~np.isfinite(sizes)),
@@ -186,8 +188,12 @@ def _renumbered(names: list[str], codes: NDArray[np.int32]) -> tuple[list[str], 
     """Only the names of events, in the order of their first event."""
     if not names:
         return [], codes
-    used, first = np.unique(codes, return_index=True)
-    order = used[np.argsort(first)]
+    first = np.full(len(names), codes.size)
+    first[codes[::-1]] = np.arange(codes.size - 1, -1, -1)  # what is written last stays
+    used = np.flatnonzero(first < codes.size)
+    order = used[np.argsort(first[used])]
+    if order.size == len(names) and (order[1:] > order[:-1]).all():
+        return names, codes
     place = np.zeros(len(names), np.int32)
     place[order] = np.arange(order.size, dtype=np.int32)
     return [names[c] for c in order.tolist()], place[codes]

@@ -23,16 +23,32 @@ _TEXT: dict[str, type[CombinedReader | PairsReader | PatternReader]] = {
 }
 
 
-def compile_parser(format: LineFormat) -> Parser:  # noqa: A002 - the word that users see
+def compile_parser(format: LineFormat, *, compiled: bool = False) -> Parser:  # noqa: A002 - the word that users see
     """Make a parser of lines.
 
+    Parameters: compiled, use a compiled reader where there is one for the format. It gives the same, several times
+    as fast, but its first use on a machine takes seconds (see warm_parsers).
     Raises FormatError (a SettingsError) for a description that cannot work; the message starts with the key.
     """
     _check(format)
     if format.lines == "csv":
         csv_lines.check(format)
         return _CsvParser(format)
-    return _OneParser(format, _reader(format))
+    reader = _reader(format)
+    plain = _OneParser(format, reader)
+    if compiled and isinstance(reader, JsonReader):
+        from monitor.parse.compiled_json import CompiledJson, can_be_compiled
+
+        if can_be_compiled(format):
+            return CompiledJson(format, plain, reader)
+    return plain
+
+
+def warm_parsers() -> None:
+    """Compile the compiled readers, or load them from the cache on disk, so that no later block waits for that."""
+    format_ = LineFormat(lines="json", size="size", time="time", stream=("stream",))
+    line = b'{"size":1.5,"time":"2026-12-01T00:00:00Z","stream":"\xc3\xa6"}\n'
+    compile_parser(format_, compiled=True).parse(line * 200)
 
 
 class _OneParser:

@@ -86,9 +86,10 @@ class JsonReader:
 
     def _mark_deep(self, cut: Cut, found: Findings) -> None:
         lengths = cut.ends - cut.starts
-        if not lengths.size or lengths.max() <= 2 * DEEPEST:
+        if not lengths.size or lengths.max() <= DEEPEST:
             return
-        if cut.block.count(b"[") + cut.block.count(b"{") - lengths.size <= DEEPEST - 1:
+        own = np.count_nonzero(cut.bytes_[cut.starts] == ord("{"))  # each of these lines has one to itself
+        if cut.block.count(b"[") + cut.block.count(b"{") - own <= DEEPEST - 1:
             return
         opening = (cut.bytes_ == ord("[")) | (cut.bytes_ == ord("{"))
         many = np.add.reduceat(opening.astype(np.int64), cut.starts) > DEEPEST

@@ -1,0 +1,11 @@
+"""How every loop over bytes is compiled."""
+
+from __future__ import annotations
+
+from numba import njit
+
+kernel = njit(nogil=True, cache=True, _nrt=False, error_model="numpy")
+"""A loop called from Python, or large enough to stand alone; compiled once and cached on disk."""
+
+helper = njit(nogil=True, forceinline=True, _nrt=False, error_model="numpy")
+"""A few operations that disappear into the kernel calling them."""

@@ -52,7 +52,8 @@ def judge(
 ) -> Judgement:
     """Judge the tail of `sample`.
 
-    progress is told (replicates done, budget); it may end early. cancelled is asked between chunks of replicates:
+    progress is told (replicates done, budget); it may end early, and starts again if the power law is not plausible
+    and the data themselves are resampled. cancelled is asked between chunks of replicates:
     when it says yes, Interrupted is raised. Nothing else is raised for data that can be counted at all.
     """
     return judge_with_draws(sample, options, progress=progress, cancelled=cancelled).judgement
@@ -176,11 +177,11 @@ def _assumed(sample: Sample, options: Options, fit: TailFit, evidence: _Evidence
             f"{ties / fit.n:.1%} of the events repeat the size of another; replicates are not rounded like that, "
             "so that p leans to the low side"
         )
-    said.append(_interval_source(evidence.draws))
+    said.append(_interval_source(evidence.draws, fit.chosen))
     return tuple(said)
 
 
-def _interval_source(draws: Draws | None) -> str:
+def _interval_source(draws: Draws | None, chosen: bool) -> str:
     if draws is None:
         return "no replicates: the interval of alpha takes the lower end of the tail as known"
     if draws.source == "data":
@@ -188,7 +189,8 @@ def _interval_source(draws: Draws | None) -> str:
             f"intervals come from {draws.alpha.size} samples drawn from the data themselves, since the power law is "
             "not plausible"
         )
-    return f"intervals come from {draws.alpha.size} replicates of the fitted power law, each choosing its own tail"
+    own = ", each choosing its own tail" if chosen else ""
+    return f"intervals come from {draws.alpha.size} replicates of the fitted power law{own}"
 
 
 def _fit_warnings(fit: TailFit, alpha_interval: Interval, gof: GoodnessOfFit | None) -> list[str]:

@@ -17,8 +17,9 @@ class TailFit:
 
     alpha         exponent of the density, p(x) ~ x^-alpha; the survival function falls with alpha - 1
     alpha_se      its standard error at this xmin
-    xmin          lower end of the tail, one of the sample's sizes (on the grid: the lower edge of a cell)
-    start         index of xmin in the sample's ascending sizes
+    xmin          lower end of the tail: one of the sample's sizes, or the given one (on the grid: the lower edge of a
+                  cell; of whole sizes there: the first integer in it)
+    start         index in the sample's ascending sizes of the first one in the tail
     n_tail        events at or above xmin
     n             all events
     ks_distance   largest distance between the tail's empirical and fitted distribution functions

@@ -47,6 +47,15 @@ class PanePart(Fact, frozen=True, kw_only=True):
     content: Pane
 
 
+class StoredPane(msgspec.Struct, frozen=True, kw_only=True):
+    """A sealed pane as it is read back."""
+
+    start: int
+    end: int
+    digest: str
+    content: Pane
+
+
 class PaneSealed(Fact, frozen=True, kw_only=True):
     """Orders the store to sum a pane's parts into its final row and to queue the refit of its window."""
 
@@ -194,3 +203,38 @@ class BaselineSet(Fact, frozen=True, kw_only=True):
     known_at: int
     by: str | None = None
     note: str | None = None
+
+
+class WatchBegun(Fact, frozen=True, kw_only=True):
+    """A watch comes into force: what it compares with, its rules and their budget, and the ground of its promise."""
+
+    id: str
+    stream: str
+    baseline: str
+    effective_from: int
+    watch: str
+    ground: str | None
+    known_at: int
+
+
+class WatchStood(Fact, frozen=True, kw_only=True):
+    """Where a stream's watch stands after a slot, and what each rule read in it (JSON)."""
+
+    stream: str
+    watch: str
+    at: int
+    state: str
+    readings: str
+
+
+class RuleSpoke(Fact, frozen=True, kw_only=True):
+    """A rule spoke: its evidence, and when the change began (JSON, None where it cannot be told)."""
+
+    id: str
+    stream: str
+    rule: str
+    at: int
+    watch: str
+    spoken: str
+    change: str | None
+    known_at: int

@@ -16,7 +16,19 @@ import msgspec
 from sqlite_utils import Database
 
 from storage.errors import StoreCorrupt
-from storage.facts import BaselineSet, ChainState, Forgotten, RefitJob, RefitStored, RejectedSample, StreamState
+from storage.facts import (
+    BaselineSet,
+    ChainState,
+    Forgotten,
+    RefitJob,
+    RefitStored,
+    RejectedSample,
+    RuleSpoke,
+    StoredPane,
+    StreamState,
+    WatchBegun,
+    WatchStood,
+)
 from storage.pane import Pane, add, decode
 from storage.store import check_file, named_errors
 from storage.window import Window, sum_window
@@ -169,24 +181,59 @@ class Reader:
             )
         ]
 
-    def window(self, stream: str, start: int, end: int, window_distinct: int) -> Window:
-        """The sum of the sealed panes of a stream inside [start, end).
+    def pane_contents(self, stream: str, start: int, end: int) -> list[StoredPane]:
+        """The sealed panes of a stream inside [start, end), by time.
 
-        Raises StoreCorrupt naming the pane whose content does not match its checksum or digest.
+        Raises StoreCorrupt naming the pane whose content does not match its checksum.
         """
         found = []
         for row in self._rows(
-            "select from_ns, digest, content from pane where stream = ? and from_ns >= ? and to_ns <= ?"
+            "select from_ns, to_ns, digest, content from pane where stream = ? and from_ns >= ? and to_ns <= ?"
             " order by from_ns",
             stream,
             start,
             end,
         ):
             try:
-                found.append((row["digest"], decode(row["content"])))
+                content = decode(row["content"])
             except StoreCorrupt as error:
                 raise StoreCorrupt(f"{self.path}: pane {stream} at {row['from_ns']}: {error}") from None
-        return sum_window(start, end, found, window_distinct)
+            found.append(StoredPane(start=row["from_ns"], end=row["to_ns"], digest=row["digest"], content=content))
+        return found
+
+    def window(self, stream: str, start: int, end: int, window_distinct: int) -> Window:
+        """The sum of the sealed panes of a stream inside [start, end). Raises StoreCorrupt as pane_contents does."""
+        return sum_window(start, end, self.pane_contents(stream, start, end), window_distinct)
+
+    def watches(self, stream: str | None = None) -> list[WatchBegun]:
+        """All watches, in the order they came into force."""
+        return [
+            WatchBegun(**row)
+            for row in self._rows(
+                "select * from watch where ? is null or stream = ? order by stream, effective_from, rowid",
+                stream,
+                stream,
+            )
+        ]
+
+    def watch_states(self) -> list[WatchStood]:
+        """Where each stream's watch stands."""
+        return [
+            WatchStood(**{**_without(row, "at_ns"), "at": row["at_ns"]})
+            for row in self._rows("select * from watch_state order by stream")
+        ]
+
+    def spoken(self, stream: str | None = None, since: int | None = None) -> list[RuleSpoke]:
+        """When which rule spoke, by time."""
+        return [
+            RuleSpoke(**{**_without(row, "at_ns"), "at": row["at_ns"]})
+            for row in self._rows(
+                "select * from spoken where (?1 is null or stream = ?1) and (?2 is null or at_ns >= ?2)"
+                " order by at_ns, stream, rule",
+                stream,
+                since,
+            )
+        ]
 
     def open_content(self, stream: str, start: int) -> Pane:
         """The content so far of an open pane."""

@@ -63,6 +63,17 @@ def m001_first_tables(db: Database) -> None:
             panes_to integer not null, effective_from integer not null, known_at integer not null,
             by text, note text) strict""",
         "create index baseline_of on baseline (stream, effective_from)",
+        """create table watch (
+            id text primary key, stream text not null, baseline text not null, effective_from integer not null,
+            watch text not null, ground text, known_at integer not null) strict""",
+        "create index watch_of on watch (stream, effective_from)",
+        """create table watch_state (
+            stream text primary key, watch text not null, at_ns integer not null, state text not null,
+            readings text not null) strict""",
+        """create table spoken (
+            id text primary key, stream text not null, rule text not null, at_ns integer not null,
+            watch text not null, spoken text not null, change text, known_at integer not null) strict""",
+        "create index spoken_of on spoken (stream, at_ns)",
         """create table quarantine (
             id integer primary key, stream text not null, from_ns integer not null, events integer not null,
             reason text not null, content blob not null, known_at integer not null) strict""",

@@ -40,8 +40,11 @@ from storage.facts import (
     RefitRetried,
     RefitStored,
     RejectedSample,
+    RuleSpoke,
     SettingsTaken,
     StreamState,
+    WatchBegun,
+    WatchStood,
 )
 from storage.grid import CELLS_PER_DECADE
 from storage.schema import APPLICATION_ID, VERSION, migrations
@@ -185,6 +188,9 @@ class Store:
             (RefitStored, self._put_refits),
             (RefitRetried, self._put_retries),
             (BaselineSet, self._put_baselines),
+            (WatchBegun, self._put_watches),
+            (WatchStood, self._put_watch_states),
+            (RuleSpoke, self._put_spoken),
             (Forget, self._forget),
         )
 
@@ -313,6 +319,15 @@ class Store:
                 row["plausible"] = int(fact.plausible)
             self.db["baseline"].insert(row, replace=True)
 
+    def _put_watches(self, facts: list[WatchBegun]) -> None:
+        self.db["watch"].insert_all((msgspec.structs.asdict(fact) for fact in facts), replace=True)
+
+    def _put_watch_states(self, facts: list[WatchStood]) -> None:
+        self.db["watch_state"].insert_all((_renamed(fact, at="at_ns") for fact in facts), replace=True)
+
+    def _put_spoken(self, facts: list[RuleSpoke]) -> None:
+        self.db["spoken"].insert_all((_renamed(fact, at="at_ns") for fact in facts), replace=True)
+
     def _forget(self, facts: list[Forget]) -> None:
         for fact in facts:
             refits, panes_gone = self._forget_refits(fact), self._forget_panes(fact)
@@ -357,6 +372,12 @@ class Store:
         """Return up to `pages` free pages to the file system; a little at a time, so that nothing waits for it."""
         with named_errors(self.path):
             self.db.executescript(f"pragma incremental_vacuum({int(pages)});")
+
+
+def _renamed(fact: Fact, **columns: str) -> dict[str, Any]:
+    """A fact as a row, some of its fields under the names of their columns."""
+    row = msgspec.structs.asdict(fact)
+    return {columns.get(field, field): value for field, value in row.items()}
 
 
 def canonical_json(value: object) -> str:

@@ -6,6 +6,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from hashlib import blake2b
 
+from storage.facts import StoredPane
 from storage.pane import Pane, add
 
 
@@ -31,8 +32,8 @@ def digest_of_panes(digests: Iterable[str]) -> str:
     return blake2b("\n".join(digests).encode(), digest_size=16).hexdigest()
 
 
-def sum_window(start: int, end: int, panes: Iterable[tuple[str, Pane]], window_distinct: int) -> Window:
-    """Sum panes given as (digest, content) in time order; see Window."""
+def sum_window(start: int, end: int, panes: Iterable[StoredPane], window_distinct: int) -> Window:
+    """Sum panes given in time order; see Window."""
     listed = list(panes)
-    name = digest_of_panes(digest for digest, _ in listed)
-    return Window(start, end, len(listed), add((pane for _, pane in listed), window_distinct), name)
+    name = digest_of_panes(pane.digest for pane in listed)
+    return Window(start, end, len(listed), add((pane.content for pane in listed), window_distinct), name)

@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
-from hashlib import blake2b
+from collections.abc import Sequence
 from typing import Any
 
 import msgspec
 
+from monitor.engine.natural import natural_id, natural_seed
+from monitor.engine.posts import follow, post_measured
 from monitor.engine.state import State
 from monitor.engine.stimuli import Judged, Outcome
+from monitor.engine.watching import Measured, Watched, WatchOrder, allowance_of, measured, watched
 from monitor.plan import PlannedTail, StreamPlan
 from monitor.plan.spans import DAY
 from monitor.tail.compare import Comparison, compare_with_fit, compare_with_plan
@@ -16,8 +19,10 @@ from monitor.tail.judge import judge
 from monitor.tail.judgement import Counting, Judgement, Options
 from monitor.tail.sample import Sample
 from monitor.watch.flags import flags_of
-from storage.facts import BaselineSet, Fact, RefitJob, RefitRetried, RefitStored
-from storage.window import Window
+from monitor.watch.rules import stream_budget
+from storage.facts import BaselineSet, Fact, RefitJob, RefitRetried, RefitStored, StoredPane
+from storage.pane import add
+from storage.window import sum_window
 
 ATTEMPTS = 3
 """Times a window is tried before its refit is stored as failed."""
@@ -32,17 +37,7 @@ class RefitRequest(msgspec.Struct, frozen=True, kw_only=True):
     first: int
     """First event of the stream: a young stream's rate counts only the time it exists."""
     baseline: BaselineSet | None
-
-
-def natural_seed(settings_seed: int, *parts: object) -> int:
-    """A seed below 2^53 that depends on what is drawn for, never on the order of completion."""
-    text = "\n".join(str(part) for part in (settings_seed, *parts))
-    return int.from_bytes(blake2b(text.encode(), digest_size=8).digest(), "big") >> 11
-
-
-def natural_id(*parts: object) -> str:
-    """A short name that equal content always gets: 12 bytes of BLAKE2b in hex."""
-    return blake2b("\n".join(str(part) for part in parts).encode(), digest_size=12).hexdigest()
+    order: WatchOrder
 
 
 def next_request(state: State) -> RefitRequest | None:
@@ -59,6 +54,24 @@ def next_request(state: State) -> RefitRequest | None:
         window_distinct=state.plan.window_distinct,
         first=stream.first,
         baseline=state.baselines.get(job.stream),
+        order=watch_order(state, job.stream),
+    )
+
+
+def watch_order(state: State, stream: str) -> WatchOrder:
+    """What the worker must know about the watch of a stream."""
+    plan = state.plan.stream(stream, state.streams[stream].unit)
+    posted = state.watches.get(stream)
+    return WatchOrder(
+        watch=posted.watch if posted else None,
+        state=posted.state if posted else None,
+        holding=posted.holding if posted else (),
+        pane=state.plan.pane,
+        zone=state.plan.timezone,
+        baseline_tail=None if stream in state.baselines else plan.baseline_tail,
+        budget_days=stream_budget(plan.false_alarm_every / DAY, len(state.streams)),
+        passage=plan.limit,
+        allowance=allowance_of(plan),
     )
 
 
@@ -79,10 +92,12 @@ def options_of(plan: StreamPlan, seed: int) -> Options:
 
 
 class Verdict(msgspec.Struct, frozen=True, kw_only=True):
-    """What a window says: of itself, and against the baseline (None when there is nothing to compare)."""
+    """What a window says: of itself, against the baseline, to the watch, and as the first baseline of one."""
 
     judgement: Judgement
     comparison: Comparison | None
+    watched: Watched | None
+    measured: Measured | None
 
 
 def compared_from(request: RefitRequest) -> int | None:
@@ -93,20 +108,30 @@ def compared_from(request: RefitRequest) -> int | None:
     return start if start < request.job.end else None
 
 
-def judge_window(request: RefitRequest, window: Window, later: Window | None) -> Verdict:
-    """Judge a window and compare its part after the baseline. Pure: the same input gives the same bits.
+def judge_window(request: RefitRequest, panes: Sequence[StoredPane]) -> Verdict:
+    """Judge a window, compare its part after the baseline, and move the watch on. Pure: the same input, the same bits.
 
-    Parameters: window, the panes of request.job; later, those from compared_from on, or None.
+    Parameters: panes, the sealed panes of request.job's window, by time.
     """
-    content = window.content
-    sample = Sample(content.sizes, content.counts, content.cells)
-    days = (request.job.end - max(request.job.start, request.first)) / DAY
+    job, order = request.job, request.order
+    content = sum_window(job.start, job.end, panes, request.window_distinct).content
+    days = (job.end - max(job.start, request.first)) / DAY
     options = msgspec.structs.replace(request.options, events_per_day=content.n / days if days > 0 else None)
-    judgement = judge(sample, options)
-    comparison = None
-    if later is not None and request.baseline is not None and later.content.n:
-        comparison = _compare(Sample(later.content.sizes, later.content.counts, later.content.cells), request.baseline)
-    return Verdict(judgement=judgement, comparison=comparison)
+    judgement = judge(Sample(content.sizes, content.counts, content.cells), options)
+    return Verdict(
+        judgement=judgement,
+        comparison=_compared(request, panes),
+        watched=watched(job.stream, panes, job.end, order),
+        measured=measured(job.stream, panes, judgement, order, options.counting),
+    )
+
+
+def _compared(request: RefitRequest, panes: Sequence[StoredPane]) -> Comparison | None:
+    start = compared_from(request)
+    if start is None or request.baseline is None:
+        return None
+    later = add((pane.content for pane in panes if pane.start >= start), request.window_distinct)
+    return _compare(Sample(later.sizes, later.counts, later.cells), request.baseline) if later.n else None
 
 
 def _compare(later: Sample, baseline: BaselineSet) -> Comparison:
@@ -157,6 +182,10 @@ def judged(state: State, stimulus: Judged) -> list[Fact]:
     if baseline is not None:
         state.baselines[job.stream] = baseline
         facts.append(baseline)
+    if outcome.watched is not None:
+        facts += follow(state, job.stream, outcome.watched, stimulus.now)
+    if baseline is not None and outcome.measured is not None:
+        facts += post_measured(state, baseline, outcome.measured, stimulus.now)
     return facts
 
 

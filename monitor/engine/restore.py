@@ -8,9 +8,10 @@ from collections.abc import Iterable, Mapping
 import msgspec
 
 from monitor.engine.sealing import advance, feeds_of_text
-from monitor.engine.state import Chain, State, Stream, WaitingEvent
+from monitor.engine.state import Chain, Posted, State, Stream, WaitingEvent
 from monitor.plan import Plan
-from storage.facts import BaselineSet, ChainState, RefitJob, StreamState
+from monitor.watch.rules import Watch, WatchState
+from storage.facts import BaselineSet, ChainState, RefitJob, StreamState, WatchBegun, WatchStood
 
 
 class Remembered(msgspec.Struct, frozen=True, kw_only=True):
@@ -28,6 +29,8 @@ class Remembered(msgspec.Struct, frozen=True, kw_only=True):
     watermarks: Mapping[str, int]
     jobs: Iterable[RefitJob]
     baselines: Iterable[BaselineSet]
+    watches: Iterable[WatchBegun] = ()
+    watch_states: Iterable[WatchStood] = ()
 
 
 def restore(plan: Plan, distinct: int, remembered: Remembered, now: int) -> State:
@@ -51,6 +54,13 @@ def restore(plan: Plan, distinct: int, remembered: Remembered, now: int) -> Stat
         state.marks[carriers] = max(mark, state.marks.get(carriers, mark))
     for baseline in remembered.baselines:
         state.baselines[baseline.stream] = baseline
+    begun = {watch.id: watch for watch in remembered.watches}
+    for stood in remembered.watch_states:
+        state.watches[stood.stream] = Posted(
+            id=stood.watch,
+            watch=msgspec.json.decode(begun[stood.watch].watch, type=Watch),
+            state=msgspec.json.decode(stood.state, type=WatchState),
+        )
     state.jobs.extend(sorted(remembered.jobs, key=lambda job: (job.end, job.stream)))
     # Before new chains are found: their edge must lie where the watermark stood.
     advance(state, now)

@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 import msgspec
 
 from monitor.plan import Plan
+from monitor.watch.rules import RuleName, Watch, WatchState
 from storage.facts import BaselineSet, ChainState, RefitJob, RejectedSample, StreamState
 from storage.pane import PaneBuilder
 
@@ -89,6 +90,15 @@ class Stream:
         )  # fmt: skip
 
 
+class Posted(msgspec.Struct, frozen=True, kw_only=True):
+    """A watch in force, where it stands, and the rules whose alarm stands."""
+
+    id: str
+    watch: Watch
+    state: WatchState
+    holding: tuple[RuleName, ...] = ()
+
+
 @dataclass(slots=True)
 class State:
     """Everything the engine knows. `step` changes it in place; only its caller holds it."""
@@ -100,6 +110,7 @@ class State:
     marks: dict[FeedSet, int] = field(default_factory=dict)
     """Watermark of each set of feeds: everything before it is sealed or will be at the next commit."""
     baselines: dict[str, BaselineSet] = field(default_factory=dict)
+    watches: dict[str, Posted] = field(default_factory=dict)
     jobs: deque[RefitJob] = field(default_factory=deque)
     """Committed jobs, in window order; the one being judged is first until its outcome is stored."""
     samples: list[RejectedSample] = field(default_factory=list)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from monitor.engine import intake, refits, retention, sealing
+from monitor.engine import intake, posts, refits, retention, sealing
 from monitor.engine.state import State
 from monitor.engine.stimuli import Arrived, ChainSeen, CommitDue, Ended, Judged, Stimulus
 from storage.facts import Fact, PaneSealed
@@ -39,7 +39,17 @@ def _commit_due(state: State, now: int) -> list[Fact]:
         if baseline is not None:
             state.baselines[stream] = baseline
             facts.append(baseline)
-    return facts
+            facts += posts.post_planned(state, baseline, refits.watch_order(state, stream), now)
+    return facts + _silence(state, {fact.stream for fact in sealed}, now)
+
+
+def _silence(state: State, sealed: set[str], now: int) -> list[Fact]:
+    """Streams whose windows are all judged: their watch goes on over panes that stayed empty."""
+    busy = sealed | {job.stream for job in state.jobs}
+    orders = {stream: refits.watch_order(state, stream) for stream in state.watches if stream not in busy}
+    marks = {stream: state.marks.get(state.carriers(stream), 0) for stream in orders}
+    ended = {stream: mark for stream, mark in marks.items() if mark < sealing.END_OF_TIME}
+    return posts.silent_streams(state, {stream: orders[stream] for stream in ended}, ended, now)
 
 
 def committed(state: State, facts: list[Fact]) -> None:

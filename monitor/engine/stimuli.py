@@ -9,6 +9,7 @@ import msgspec
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.engine.watching import Measured, Watched
 from storage.facts import RefitJob
 
 
@@ -86,6 +87,8 @@ class Outcome(msgspec.Struct, frozen=True, kw_only=True):
     window_digest: str = ""
     judgement: str | None = None
     comparison: str | None = None
+    watched: Watched | None = None
+    measured: Measured | None = None
     seconds: float = 0.0
     versions: str = ""
     failure: str | None = None

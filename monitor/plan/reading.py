@@ -20,6 +20,7 @@ from monitor.plan.checks import (
     time_of,
     timezone_of,
 )
+from monitor.plan.listen import read_listen
 from monitor.plan.records import FeedPlan, KnownChange, Plan, PlannedTail, StreamPlan
 from monitor.plan.spans import DAY, SECOND
 
@@ -33,6 +34,7 @@ class FeedTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only
     follow: str | list[str] | None = None
     read: str | None = None
     listen: str | None = None
+    listen_beyond_loopback: bool = False
     lines: str
     size: str | int | None = None
     time: str | int | None = None
@@ -62,7 +64,7 @@ class WatchTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_onl
     min_tail: int = 10
     baseline_tail: int = 500
     differs_at: float = 0.01
-    false_alarm_every: str | None = None
+    false_alarm_every: str = "90d"
     limit: float | None = None
     limit_at_most: str | None = None
     one_in: int | list[int] = 10_000
@@ -218,7 +220,7 @@ def _everywhere(name: str, watch: WatchTable, pane: int) -> StreamPlan:
     given = {
         field: getattr(watch, field)
         for field in ("counting", "window", "replicates", "rule_out", "min_tail", "baseline_tail", "differs_at",
-                      "one_in", "limit", "limit_at_most")
+                      "false_alarm_every", "one_in", "limit", "limit_at_most")
     }  # fmt: skip
     defaults: dict[str, Any] = {"unit": "units", "planned": None, "limit": None, "limit_at_most": None}
     return StreamPlan(**{**defaults, **_judged_by(name, "watch", given, pane)})
@@ -226,7 +228,7 @@ def _everywhere(name: str, watch: WatchTable, pane: int) -> StreamPlan:
 
 def _changes(name: str, pattern: str, given: StreamTable, pane: int) -> dict[str, object]:
     path = f'stream."{pattern}"'
-    values = {key: getattr(given, key) for key in given.__struct_fields__ if key not in ("plan", "false_alarm_every")}
+    values = {key: getattr(given, key) for key in given.__struct_fields__ if key != "plan"}
     changes = _judged_by(name, path, values, pane)
     if given.plan is not None:
         in_range(name, f"{path}.plan.alpha", given.plan.alpha, low=1.0, high=100.0, open_low=True)
@@ -259,6 +261,8 @@ def _judged_by(name: str, path: str, given: dict[str, Any], pane: int) -> dict[s
             in_range(name, f"{path}.{key}", given[key], low=0.0, high=0.5, open_low=True)
     if "limit" in given:
         in_range(name, f"{path}.limit", given["limit"], low=0.0, open_low=True)
+    if "false_alarm_every" in given:
+        out["false_alarm_every"] = span(name, f"{path}.false_alarm_every", given["false_alarm_every"], low=DAY)
     if "limit_at_most" in given:
         out["limit_at_most"] = passages(name, f"{path}.limit_at_most", given["limit_at_most"])
     if "one_in" in given:
@@ -284,13 +288,14 @@ def _feed(name: str, key: str, given: FeedTable, timezone: str) -> FeedPlan:
     path = f"feed.{key}"
     follow = (given.follow,) if isinstance(given.follow, str) else tuple(given.follow or ())
     ways = [way for way, there in (("follow", follow), ("read", given.read), ("listen", given.listen)) if there]
-    if given.listen is not None:
-        raise SettingsError(f"{name}: {path}.listen: this version follows files and reads standard input only.")
     if len(ways) != 1:
         raise SettingsError(
-            f'{name}: {path}: expected exactly one of follow = ["logs/*.jsonl"] or read = "-", '
-            f"found {' and '.join(ways) or 'none'}."
+            f'{name}: {path}: expected exactly one of follow = ["logs/*.jsonl"], read = "-" or '
+            f'listen = "http://127.0.0.1:7070", found {" and ".join(ways) or "none"}.'
         )
+    listen = None
+    if given.listen is not None:
+        listen = read_listen(name, f"{path}.listen", given.listen, beyond_loopback=given.listen_beyond_loopback)
     if given.read not in (None, "-"):
         raise SettingsError(f'{name}: {path}.read: only "-" (standard input) can be read; files are followed.')
     zone = timezone_of(name, f"{path}.timezone", given.timezone or timezone)
@@ -312,7 +317,13 @@ def _feed(name: str, key: str, given: FeedTable, timezone: str) -> FeedPlan:
     except FormatError as error:
         raise SettingsError(f"{name}: {path}.{error}") from None
     return FeedPlan(
-        name=key, follow=follow, read=given.read, format=line_format, unit=given.unit, by_field=bool(fields)
+        name=key,
+        follow=follow,
+        read=given.read,
+        format=line_format,
+        unit=given.unit,
+        by_field=bool(fields),
+        listen=listen,
     )
 
 
@@ -341,9 +352,6 @@ def _known(name: str, tables: list[KnownTable], zone: str) -> tuple[KnownChange,
 def _not_yet(table: SettingsTable) -> tuple[str, ...]:
     """Keys that are understood and checked but have no effect in this version."""
     keys = []
-    if table.watch.false_alarm_every is not None:
-        keys.append("watch.false_alarm_every")
-    keys += [f'stream."{name}".false_alarm_every' for name, t in table.stream.items() if t.false_alarm_every]
     if table.known:
         keys.append("known")
     keys += [f"notify.{name}" for name in table.notify]

@@ -8,6 +8,7 @@ from typing import Literal
 import msgspec
 
 from monitor.parse.lines import LineFormat
+from monitor.plan.listen import Listen
 
 Counting = Literal["measured", "whole"]
 
@@ -29,8 +30,9 @@ class Passages(msgspec.Struct, frozen=True, kw_only=True):
 class FeedPlan(msgspec.Struct, frozen=True, kw_only=True):
     """One place that lines come from.
 
-    follow   patterns of files to follow, relative to the settings file; empty when `read` is set
+    follow   patterns of files to follow, relative to the settings file; empty when `read` or `listen` is set
     read     '-' for standard input, or None
+    listen   address to listen on, or None
     by_field True when a field of the line names the stream; otherwise every line belongs to `name`
     """
 
@@ -40,6 +42,7 @@ class FeedPlan(msgspec.Struct, frozen=True, kw_only=True):
     format: LineFormat
     unit: str
     by_field: bool
+    listen: Listen | None = None
 
 
 class StreamPlan(msgspec.Struct, frozen=True, kw_only=True):
@@ -52,6 +55,7 @@ class StreamPlan(msgspec.Struct, frozen=True, kw_only=True):
     min_tail: int
     baseline_tail: int
     differs_at: float
+    false_alarm_every: int
     one_in: tuple[int, ...]
     limit: float | None
     limit_at_most: Passages | None

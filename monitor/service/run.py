@@ -230,4 +230,6 @@ def _remembered(reader: Reader) -> Remembered:
         watermarks=reader.watermarks(),
         jobs=reader.refit_jobs(),
         baselines=reader.baselines(),
+        watches=reader.watches(),
+        watch_states=reader.watch_states(),
     )

@@ -22,10 +22,11 @@ import numpy as np
 import scipy
 
 from monitor import VERSION
-from monitor.engine.refits import RefitRequest, compared_from, judge_window
+from monitor.engine.refits import RefitRequest, judge_window
 from monitor.engine.stimuli import Outcome
 from storage.errors import StoreError
 from storage.history import open_reader
+from storage.window import digest_of_panes
 
 NICENESS = 10
 READY = b"ready"
@@ -128,23 +129,19 @@ def answer(request: RefitRequest, store: Path) -> Outcome:
     job = request.job
     try:
         with open_reader(store) as reader:
-            window = reader.window(job.stream, job.start, job.end, request.window_distinct)
-            start = compared_from(request)
-            later = None
-            if start is not None:
-                later = (
-                    window if start == job.start else reader.window(job.stream, start, job.end, request.window_distinct)
-                )
+            panes = reader.pane_contents(job.stream, job.start, job.end)
     except StoreError as error:
         return Outcome(job=job, seed=request.options.seed, failure=str(error))
-    verdict = judge_window(request, window, later)
+    verdict = judge_window(request, panes)
     return Outcome(
         job=job,
         seed=request.options.seed,
-        panes=window.panes,
-        window_digest=window.digest,
+        panes=len(panes),
+        window_digest=digest_of_panes(pane.digest for pane in panes),
         judgement=msgspec.json.encode(verdict.judgement).decode(),
         comparison=msgspec.json.encode(verdict.comparison).decode() if verdict.comparison else None,
+        watched=verdict.watched,
+        measured=verdict.measured,
         seconds=time.perf_counter() - started,
         versions=versions(),
     )

@@ -53,7 +53,8 @@ def test_everything_of_a_full_file_is_understood() -> None:
     assert plan.everywhere.limit_at_most is not None
     assert plan.everywhere.limit_at_most.period == 30 * DAY
     assert plan.known[0].start == 1_795_737_600 * SECOND  # 2026-11-27 00:00 in Lisbon, which is UTC in winter
-    assert plan.not_yet == ("watch.false_alarm_every", "known", "notify.desk")
+    assert plan.not_yet == ("known", "notify.desk")
+    assert plan.everywhere.false_alarm_every == 90 * DAY
 
 
 def test_the_longest_match_wins() -> None:
@@ -85,7 +86,11 @@ def test_the_digest_names_the_text() -> None:
         ("one_in = [1000, 10000]", "one_in = []", "watch.one_in: expected a number of events"),
         ('timezone = "Europe/Lisbon"', 'timezone = "Lisboa"', 'watch.timezone: "Lisboa" is no known time zone'),
         ('follow = ["logs/orders-*.jsonl"]', "", "feed.orders: expected exactly one of follow"),
-        ('follow = ["logs/orders-*.jsonl"]', 'listen = "tcp://127.0.0.1:7071"', "feed.orders.listen: this version"),
+        ('follow = ["logs/orders-*.jsonl"]', 'listen = "udp://127.0.0.1:7071"', "is no address to listen on"),
+        ('follow = ["logs/orders-*.jsonl"]', 'listen = "tcp://0.0.0.0:7071"', "0.0.0.0 can be reached from other mach"),
+        ('follow = ["logs/orders-*.jsonl"]', 'listen = "http://me:7071"', "'me' is no numeric address"),
+        ('follow = ["logs/orders-*.jsonl"]', 'listen = "http://[::1]:70710"', "is no address to listen on"),
+        ('unit = "units"', 'listen = "unix:///a.sock"', "found follow and listen"),
         ("to = 2026-11-30", "to = 2026-11-27", "known[0].to: is not after from"),
         ('store = "orders.db"', "", "settings: object missing required field `store`"),
         ('lines = "json"', 'lines = 3', "feed.orders.lines: expected `str`, got `int`"),
@@ -113,3 +118,27 @@ def test_spans(text: str, ns: int) -> None:
 @pytest.mark.parametrize("text", ["", "h", "1.5h", "-1h", "1y", "1h30m", "٣h"])
 def test_what_is_no_span(text: str) -> None:
     assert parse_span(text) is None
+
+
+@pytest.mark.parametrize(
+    ("text", "scheme", "host", "port", "path"),
+    [
+        ("http://127.0.0.1:7070", "http", "127.0.0.1", 7070, ""),
+        ("tcp://[::1]:7071", "tcp", "::1", 7071, ""),
+        ("http://localhost:80/", "http", "127.0.0.1", 80, ""),
+        ("unix://run/a.sock", "unix", "", 0, "run/a.sock"),
+        ("unix:///run/a.sock", "unix", "", 0, "/run/a.sock"),
+    ],
+)
+def test_addresses_to_listen_on(text: str, scheme: str, host: str, port: int, path: str) -> None:
+    plan = read_plan(FULL.replace('follow = ["logs/orders-*.jsonl"]', f'listen = "{text}"'), "t")
+    listen = plan.feeds[0].listen
+    assert listen is not None
+    assert (listen.address, listen.scheme, listen.host, listen.port, listen.path) == (text, scheme, host, port, path)
+
+
+def test_listening_beyond_the_machine_must_be_said() -> None:
+    both = 'listen = "tcp://0.0.0.0:7071"\nlisten_beyond_loopback = true'
+    plan = read_plan(FULL.replace('follow = ["logs/orders-*.jsonl"]', both), "t")
+    assert plan.feeds[0].listen is not None
+    assert plan.feeds[0].listen.host == "0.0.0.0"

@@ -57,6 +57,10 @@ class OpenFeed:
         told, self._troubles = self._troubles, []
         return [f"feed {self.plan.name}: {trouble}" for trouble in (*told, *self._source.troubles())]
 
+    def use_compiled_parser(self) -> None:
+        """From now on lines are read several times as fast; the worker has compiled what that takes."""
+        self._parser = compile_parser(self.plan.format, compiled=True)
+
     def close(self) -> None:
         """Give back files."""
         self._source.close()

@@ -42,6 +42,7 @@ class Loop:
         self._retry_after = FIRST_RETRY
         self._started = clock.monotonic()
         self._told_compiling = False
+        self._compiled = False
 
     def turn(self) -> bool:
         """One round. Returns True when lines came in, False when there was nothing to read."""
@@ -103,6 +104,10 @@ class Loop:
         if self._pending:
             return
         outcome = self.worker.poll()
+        if self.worker.ready and not self._compiled:
+            self._compiled = True
+            for feed in self.feeds:
+                feed.use_compiled_parser()
         if outcome is not None:
             if outcome.failure:
                 self.log.warning(f"refit of {outcome.job.stream}: {outcome.failure}")

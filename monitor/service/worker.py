@@ -24,6 +24,7 @@ import scipy
 from monitor import VERSION
 from monitor.engine.refits import RefitRequest, judge_window
 from monitor.engine.stimuli import Outcome
+from monitor.parse import warm_parsers
 from storage.errors import StoreError
 from storage.history import open_reader
 from storage.window import digest_of_panes
@@ -115,6 +116,7 @@ def serve(connection: Connection, store: str) -> None:
     os.nice(NICENESS)
     from monitor.tail.judge import compile_everything
 
+    warm_parsers()  # for the parent, which loads them from the cache once this process is ready
     compile_everything()
     with contextlib.suppress(EOFError, BrokenPipeError, ConnectionResetError):
         connection.send_bytes(READY)

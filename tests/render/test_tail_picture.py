@@ -14,6 +14,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from monitor.render.numbers import count_text, with_bounds
+from monitor.render.safe import plain, shorten
 from monitor.render.svg import INKS, PALE, PAPER
 from monitor.render.tail_curves import curves_of, is_drawn
 from monitor.render.tail_picture import TailPicture, tail_picture
@@ -123,9 +124,25 @@ def test_the_band_holds_the_fit(picture):
     assert (fit <= curves.band.log_high + 1e-9).all()
 
 
-def test_nothing_is_told_by_colour_alone(picture):
+@pytest.fixture(scope="module")
+def bent():
+    """A lognormal sample: all four rivals are determined."""
+    found = picture_of(Sample.of_sizes(np.exp(np.random.default_rng(8).normal(3, 1.2, 4000))), xmin=20.0)
+    assert sum(map(is_drawn, found.judgement.rivals)) == 4
+    return found
+
+
+def test_rivals_start_where_the_fit_starts(bent):
+    svg = tail_picture(bent)
+    begins = [found for found in part(svg, "rival") for found in re.findall(r"M (\S+) (\S+)", found[0].get("d"))]
+    assert len(begins) == 4
+    for begin in begins:
+        assert [float(end) for end in begin] == pytest.approx(points(svg, "fit")[0], abs=0.02)
+
+
+def test_nothing_is_told_by_colour_alone(bent):
     """Every line that is drawn has dashes of its own, and a sample of them beside its name."""
-    svg = tail_picture(picture)
+    svg = tail_picture(bent)
     dashes = [
         re.search(r"stroke-dasharray: ([^;]+)", path.get("style"))
         for name in ("fit", "rival")
@@ -133,7 +150,7 @@ def test_nothing_is_told_by_colour_alone(picture):
         for path in group.iter(f"{SVG}path")
     ]
     kinds = [found[1] if found else "solid" for found in dashes]
-    assert len(set(kinds)) == len(kinds) >= 2
+    assert len(set(kinds)) == len(kinds) == 5
     samples = ET.tostring(ET.fromstring(svg), encoding="unicode")
     assert all(kind == "solid" or samples.count(kind) >= 2 for kind in kinds)
 
@@ -198,6 +215,7 @@ def test_text_stays_text_in_generic_fonts(picture):
         "</text><script>alert(1)</script>",
         '"><svg onload="x">&amp;',
         "$\\frac{1}{2}$ $x_",
+        "$x^2$",
         "]]>\x00\x1b[31m\u202e\ud800\ufffe",
         "箱 📦 Stück",
         "x" * 500,
@@ -210,6 +228,7 @@ def test_a_hostile_unit_stays_text(unit):
     assert not [element for element in root.iter() if element.tag.endswith("script")]
     assert [element.tag for element in root.iter()].count(f"{SVG}svg") == 1
     assert all(len(text) < 200 for text in words(svg))
+    assert f"size in {plain(shorten(unit, 24))}" in words(svg)  # as it is written, no markup of any kind
     svg.encode()
 
 

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from monitor.tail.judgement import NearMinimum, Options
 from monitor.tail.kernels.ladder import Ladder, last_candidate, new_scratch
 from monitor.tail.kernels.replicates import replicates
-from monitor.tail.kernels.replicating import Body, Kept, Recipe, Sources, Steps, new_kept, new_space
+from monitor.tail.kernels.replicating import Body, Kept, Recipe, Sources, Space, Steps, new_kept, new_space
 from monitor.tail.kernels.scanning import distance_at, near, nearest, rate_of
 from monitor.tail.sample import Sample
 from monitor.tail.tail_fit import NoTail, TailFit
@@ -183,9 +183,17 @@ class Law(ABC):
         sources = Sources(body, self.steps(fit) if source == "model" else NO_STEPS)
         recipe = self._recipe(fit, source, float(rungs.ladder.place[row]))
 
+        # Spaces go from chunk to chunk: fresh memory for each would cost more than the replicates of large samples.
+        spaces: list[Space] = []
+
         def made(begin: int, count: int, decide: bool) -> Chunk:
             kept = new_kept(count)
-            replicates(recipe._replace(decide=decide), sources, key, begin, new_space(recipe, body), kept)
+            try:
+                space = spaces.pop()
+            except IndexError:
+                space = new_space(recipe, body)
+            replicates(recipe._replace(decide=decide), sources, key, begin, space, kept)
+            spaces.append(space)
             return Chunk(
                 distance=kept.distance,
                 alpha=1.0 + self.rate_unit * kept.rate,

@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import tomllib
+from collections.abc import Iterator
 from hashlib import blake2b
 from typing import Any, TypeVar
 
 import msgspec
 
+from monitor.alarms.known import EFFECTS, Effect, KnownChange
 from monitor.errors import SettingsError
 from monitor.parse.compile import compile_parser
 from monitor.parse.lines import FormatError, LineFormat
@@ -21,7 +23,8 @@ from monitor.plan.checks import (
     timezone_of,
 )
 from monitor.plan.listen import read_listen
-from monitor.plan.records import FeedPlan, KnownChange, Plan, PlannedTail, StreamPlan
+from monitor.plan.notifying import NotifyTable, receivers
+from monitor.plan.records import FeedPlan, KnownCalendar, Plan, PlannedTail, StreamPlan
 from monitor.plan.spans import DAY, SECOND
 
 Table = TypeVar("Table", bound=msgspec.Struct)
@@ -105,19 +108,14 @@ class StreamTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_on
 class KnownTable(
     msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True, rename={"start": "from", "end": "to"}
 ):
-    """[[known]] as written."""
+    """[[known]] as written: one change, or a calendar file of many."""
 
-    start: Any  # a TOML date, date-time or text
-    end: Any
+    start: Any = None  # a TOML date, date-time or text
+    end: Any = None
+    reason: str | None = None
+    calendar: str | None = None
     streams: str = "*"
-    reason: str
     effect: str = "hold notices"
-
-
-class NotifyTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
-    """[notify.NAME] as written."""
-
-    command: list[str] | None = None
 
 
 class SettingsTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_only=True):
@@ -193,6 +191,8 @@ def _plan(name: str, table: SettingsTable, text: str) -> Plan:
         keep_refits=_kept(name, "watch.keep_refits", watch.keep_refits),
         max_streams=watch.max_streams,
         known=_known(name, table.known, zone),
+        calendars=_calendars(name, table.known),
+        receivers=receivers(name, table.notify, zone),
         not_yet=_not_yet(table),
         text=text,
         digest=blake2b(text.encode(), digest_size=16).hexdigest(),
@@ -335,18 +335,42 @@ def _as_text(value: str | float | bool) -> str:
 
 
 def _known(name: str, tables: list[KnownTable], zone: str) -> tuple[KnownChange, ...]:
-    effects = ("hold notices", "not in baseline", "new baseline after")
     known = []
-    for index, given in enumerate(tables):
-        path = f"known[{index}]"
-        if given.effect not in effects:
-            raise SettingsError(f'{name}: {path}.effect: "{given.effect}" is none of {", ".join(effects)}.')
+    for path, given, effect in _with_effects(name, tables):
+        if given.calendar is not None:
+            continue
+        for key, value in (("from", given.start), ("to", given.end), ("reason", given.reason)):
+            if value is None:
+                raise SettingsError(f"{name}: {path}.{key}: is missing; or name a calendar file instead.")
         start = time_of(name, f"{path}.from", given.start, zone)
         end = time_of(name, f"{path}.to", given.end, zone)
         if end <= start:
             raise SettingsError(f"{name}: {path}.to: is not after from.")
-        known.append(KnownChange(start=start, end=end, streams=given.streams, reason=given.reason, effect=given.effect))
+        known.append(KnownChange(start=start, end=end, streams=given.streams, reason=given.reason or "", effect=effect))
     return tuple(known)
+
+
+def _calendars(name: str, tables: list[KnownTable]) -> tuple[KnownCalendar, ...]:
+    """The calendar files to read known changes from; their events bring times and reasons of their own."""
+    calendars = []
+    for path, given, effect in _with_effects(name, tables):
+        if given.calendar is None:
+            continue
+        for key, value in (("from", given.start), ("to", given.end), ("reason", given.reason)):
+            if value is not None:
+                raise SettingsError(f"{name}: {path}.{key}: comes from the calendar's events; leave it out.")
+        if not given.calendar.strip():
+            raise SettingsError(f'{name}: {path}.calendar: expected the path of a file such as "closures.ics".')
+        calendars.append(KnownCalendar(path=given.calendar, streams=given.streams, effect=effect))
+    return tuple(calendars)
+
+
+def _with_effects(name: str, tables: list[KnownTable]) -> Iterator[tuple[str, KnownTable, Effect]]:
+    for index, given in enumerate(tables):
+        effect = next((effect for effect in EFFECTS if effect == given.effect), None)
+        if effect is None:
+            raise SettingsError(f'{name}: known[{index}].effect: "{given.effect}" is none of {", ".join(EFFECTS)}.')
+        yield f"known[{index}]", given, effect
 
 
 def _not_yet(table: SettingsTable) -> tuple[str, ...]:

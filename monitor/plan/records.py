@@ -7,8 +7,10 @@ from typing import Literal
 
 import msgspec
 
+from monitor.alarms.known import Effect, KnownChange
 from monitor.parse.lines import LineFormat
 from monitor.plan.listen import Listen
+from monitor.plan.receivers import Receiver
 
 Counting = Literal["measured", "whole"]
 
@@ -63,14 +65,12 @@ class StreamPlan(msgspec.Struct, frozen=True, kw_only=True):
     planned: PlannedTail | None
 
 
-class KnownChange(msgspec.Struct, frozen=True, kw_only=True):
-    """A planned change: ns, or None where the side is open."""
+class KnownCalendar(msgspec.Struct, frozen=True, kw_only=True):
+    """An iCalendar file that announces changes: its path, relative to the settings file, and whom they concern."""
 
-    start: int
-    end: int
+    path: str
     streams: str
-    reason: str
-    effect: str
+    effect: Effect
 
 
 class Plan(msgspec.Struct, frozen=True, kw_only=True):
@@ -96,6 +96,8 @@ class Plan(msgspec.Struct, frozen=True, kw_only=True):
     max_streams: int
     """Lines that would open one more stream are rejected."""
     known: tuple[KnownChange, ...]
+    calendars: tuple[KnownCalendar, ...]
+    receivers: tuple[Receiver, ...]
     not_yet: tuple[str, ...]
     """Keys that are read and checked, but that this version does not act on."""
     text: str

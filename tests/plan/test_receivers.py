@@ -51,9 +51,8 @@ def test_streams_rules_and_spans() -> None:
 
 
 def test_an_address_to_post_to() -> None:
-    found = receiver(
-        'post = "https://desk.example.com:8443/alarms?to=ops"\nmode = "binary"\nsecret_file = "desk.secret"'
-    )
+    address = "https://desk.example.com:8443/alarms?to=ops"
+    found = receiver(f'post = "{address}"\nmode = "binary"\nsecret_file = "desk.secret"')
     assert found.way == PostWay(
         address=address, mode="binary", secret_header="Authorization",
         secret_file="desk.secret", certificates=None,

@@ -23,6 +23,7 @@ COMMANDS = {
     "screen": "monitor.cli.screen:screen",
     "history": "monitor.cli.history:history",
     "check": "monitor.cli.check:check_command",
+    "promise": "monitor.cli.promise:promise_command",
 }
 INTERRUPTED = 130
 INTERNAL = 70

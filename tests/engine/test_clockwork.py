@@ -5,9 +5,11 @@ from __future__ import annotations
 import itertools
 
 import numpy as np
+import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from monitor.engine import clockwork
 from monitor.engine.clockwork import Rules, effective_times
 
 RULES = Rules(lateness=10, ahead=100)
@@ -74,6 +76,13 @@ def in_batches(
 @settings(max_examples=500)
 def test_batches_do_not_matter(stamps: list[int], cuts: list[int], edge: int | None) -> None:
     assert in_batches(stamps, cuts, edge) == plain(stamps, edge)
+
+
+@given(stamps_lists, st.lists(st.integers(1, 30), max_size=5), st.integers(0, 3))
+def test_looking_ahead_for_the_next_jump_changes_nothing(stamps: list[int], cuts: list[int], looks: int) -> None:
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(clockwork, "_MOST_LOOKS", looks)
+        assert in_batches(stamps, cuts, None) == plain(stamps, None)
 
 
 @given(stamps_lists)

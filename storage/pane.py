@@ -11,9 +11,11 @@ from __future__ import annotations
 
 import struct
 import zlib
+from bisect import insort
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from hashlib import blake2b
+from itertools import pairwise
 from typing import TypeVar
 
 import msgspec
@@ -132,12 +134,21 @@ def add(panes: Iterable[Pane], distinct: int) -> Pane:
 
 @dataclass(slots=True)
 class PaneBuilder:
-    """Gathers the events of one pane between two commits; `build` makes the additive part to be stored."""
+    """Gathers the events of one pane; `build` makes the additive part of what came since the last `build`.
+
+    The ranks of the largest events are remembered over all parts: an event that is not among the largest of the
+    pane so far cannot be in the end, and need not be described.
+    """
 
     chunks: list[NDArray[np.float64]] = field(default_factory=list)
     late: int = 0
     events: list[LargeEvent] = field(default_factory=list)
-    _bar: float = 0.0  # sizes below this cannot be among the largest any more
+    _top: list[tuple[float, int]] = field(default_factory=list)  # (-size, time) of the largest, in this order
+
+    @property
+    def bar(self) -> float:
+        """Sizes below this cannot be among the largest any more."""
+        return -self._top[-1][0] if len(self._top) == LARGEST_KEPT else 0.0
 
     def add(
         self,
@@ -151,39 +162,94 @@ class PaneBuilder:
         Parameters: sizes float64 (m,); times int64 (m,), effective, ns; late, how many of them were late;
         describe(i) gives (digest, place) of event i, asked only for those that may be among the largest.
         """
+        self.count(sizes, late)
+        self.consider(sizes, times, describe)
+
+    def count(self, sizes: NDArray[np.float64], late: int) -> None:
+        """Take events in; those among them that may be the largest are to be brought to `consider`."""
         self.chunks.append(sizes)
         self.late += late
-        for i in _largest_candidates(sizes, times, self._bar):
-            digest, place = describe(int(i))
-            self.events.append(LargeEvent(float(sizes[i]), int(times[i]), digest, place))
-        if len(self.events) > LARGEST_KEPT:
-            self.events.sort(key=lambda event: event.rank)
-            del self.events[LARGEST_KEPT:]
-            self._bar = self.events[-1].size
+
+    def consider(
+        self, sizes: NDArray[np.float64], times: NDArray[np.int64], describe: Callable[[int], tuple[str, str]]
+    ) -> None:
+        """Keep by name what is among the largest. Parameters as of `add`."""
+        for i in _largest_candidates(sizes, times, self.bar):
+            rank = (-float(sizes[i]), int(times[i]))
+            if len(self._top) == LARGEST_KEPT:
+                if rank > self._top[-1]:
+                    continue
+                self._top.pop()
+            insort(self._top, rank)
+            digest, place = describe(i)
+            self.events.append(LargeEvent(-rank[0], rank[1], digest, place))
 
     def build(self, distinct: int) -> Pane:
-        """The pane of all events taken in so far."""
-        if not self.chunks:
-            return EMPTY
-        sizes, counts = np.unique(np.concatenate(self.chunks), return_counts=True)
-        self.events.sort(key=lambda event: event.rank)
-        exact = Pane(
-            sizes,
-            counts.astype(np.int64),
-            None,
-            self.late,
-            float(sizes[0]),
-            float(sizes[-1]),
-            tuple(self.events),
-        )
-        if sizes.size <= distinct:
-            return exact
-        cells, cell_counts = _counted(cell_of(sizes), exact.counts)
-        return Pane(edges(cells), cell_counts, cells, exact.late, exact.smallest, exact.largest, exact.largest_events)
+        """The pane of all events taken in since the last time."""
+        return build_panes([self], distinct)[0]
+
+    def _named(self) -> tuple[LargeEvent, ...]:
+        """The events to be kept by name, and none of them a second time."""
+        able = [event for event in self.events if (-event.size, event.time) <= self._top[-1]]
+        self.events = []
+        return tuple(sorted(able, key=lambda event: event.rank)[:LARGEST_KEPT])
 
 
-def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], bar: float) -> Sequence[int]:
-    """Indices of the events that can be among the largest kept: the top by (size, time), with all ties."""
+def build_panes(builders: Sequence[PaneBuilder], distinct: int) -> list[Pane]:
+    """What `build` of each gives, many at once."""
+    sizes = [np.concatenate(builder.chunks) if builder.chunks else np.empty(0) for builder in builders]
+    few = [i for i, held in enumerate(sizes) if held.size < _FEWEST_ALONE]
+    counted: list[tuple[NDArray[np.float64], NDArray[np.int64]]] = [_NOTHING] * len(sizes)
+    for i, held in zip(few, _counted_together([sizes[i] for i in few]), strict=True):
+        counted[i] = held
+    for i, held_sizes in enumerate(sizes):
+        if held_sizes.size >= _FEWEST_ALONE:
+            held_sizes.sort()
+            counted[i] = _runs(held_sizes)
+    return [_built(builder, *held, distinct) for builder, held in zip(builders, counted, strict=True)]
+
+
+_FEWEST_ALONE = 2048  # events that are worth a call of their own
+_NOTHING = (np.empty(0), np.empty(0, np.int64))
+
+
+def _counted_together(
+    parts: Sequence[NDArray[np.float64]],
+) -> list[tuple[NDArray[np.float64], NDArray[np.int64]]]:
+    """Distinct sizes, ascending, and their counts in each part; by two sorts for all of them."""
+    lengths = np.array([part.size for part in parts], np.int64)
+    if not lengths.sum():
+        return [_NOTHING] * len(parts)
+    sizes, owner = np.concatenate(parts), np.repeat(np.arange(lengths.size), lengths)
+    order = np.argsort(sizes)
+    order = order[np.argsort(owner[order], kind="stable")]
+    sizes, owner = sizes[order], owner[order]
+    first = np.flatnonzero(np.concatenate(([True], (sizes[1:] != sizes[:-1]) | (owner[1:] != owner[:-1]))))
+    counts = np.diff(first, append=sizes.size)
+    sizes = sizes[first]
+    cuts = np.searchsorted(owner[first], np.arange(lengths.size + 1)).tolist()
+    return [(sizes[low:high], counts[low:high]) for low, high in pairwise(cuts)]
+
+
+def _runs(ordered: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
+    """Distinct values of ascending ones, and their counts."""
+    first = np.flatnonzero(np.concatenate(([True], ordered[1:] != ordered[:-1])))
+    return ordered[first], np.diff(first, append=ordered.size)
+
+
+def _built(builder: PaneBuilder, sizes: NDArray[np.float64], counts: NDArray[np.int64], distinct: int) -> Pane:
+    if not sizes.size:
+        return EMPTY
+    late, builder.late, builder.chunks = builder.late, 0, []
+    smallest, largest, named = float(sizes[0]), float(sizes[-1]), builder._named()
+    if sizes.size <= distinct:
+        return Pane(sizes, counts, None, late, smallest, largest, named)
+    cells, counts = _counted(cell_of(sizes), counts)
+    return Pane(edges(cells), counts, cells, late, smallest, largest, named)
+
+
+def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], bar: float) -> list[int]:
+    """Indices of the events that can be among the largest kept, largest first: the top by (size, time), with ties."""
     able = np.flatnonzero(sizes >= bar)
     if able.size > LARGEST_KEPT:
         cut = np.partition(sizes[able], able.size - LARGEST_KEPT)[able.size - LARGEST_KEPT]
@@ -192,7 +258,8 @@ def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], ba
         order = np.lexsort((times[able], -sizes[able]))
         last = able[order[LARGEST_KEPT - 1]]
         able = able[(sizes[able] > sizes[last]) | (times[able] <= times[last])]
-    return [int(i) for i in able]
+    found: list[int] = able[np.argsort(-sizes[able], kind="stable")].tolist()
+    return found
 
 
 def line_digest(line: bytes) -> str:

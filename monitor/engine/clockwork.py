@@ -16,6 +16,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+_MOST_LOOKS = 100  # for the next jump of one block: each look reads all the rest
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Rules:
@@ -53,7 +55,7 @@ def effective_times(
     Parameters: running_max and edge of the chain before them; waits, the first stamp given is one that waited.
     """
     accepted, refused, waiting = _choose(stamps, running_max, rules.ahead, waits)
-    chosen = stamps[accepted]
+    chosen = stamps if accepted.size == stamps.size else stamps[accepted]
     if not chosen.size:
         empty = np.empty(0, np.int64)
         return Timed(accepted=accepted, effective=empty, late=empty.astype(bool), refused=refused, waiting=waiting,
@@ -78,36 +80,50 @@ def _choose(
 ) -> tuple[NDArray[np.int64], tuple[int, ...], int | None]:
     """Which lines are accepted, which refused, which one waits."""
     everything = np.arange(stamps.size, dtype=np.int64)
-    if running_max is not None and not waits:
-        before = np.maximum.accumulate(np.concatenate(([np.int64(running_max)], stamps)))[:-1]
-        if not (stamps - before > ahead).any():
-            return everything, (), None
-    return _choose_slowly(stamps.tolist(), running_max, ahead, waits)
+    if running_max is not None and not waits and _calm(stamps, running_max, ahead) == stamps.size:
+        return everything, (), None
+    return _choose_slowly(stamps, running_max, ahead, waits)
+
+
+def _calm(stamps: NDArray[np.int64], top: int, ahead: int) -> int:
+    """How many stamps there are before the first one that lies too far ahead of those before it."""
+    before = np.maximum.accumulate(np.concatenate(([np.int64(top)], stamps)))[:-1]
+    jumps = stamps - before > ahead
+    return int(jumps.argmax()) if jumps.any() else stamps.size
 
 
 def _choose_slowly(
-    stamps: list[int], top: int | None, ahead: int, waits: bool
+    stamps: NDArray[np.int64], top: int | None, ahead: int, waits: bool
 ) -> tuple[NDArray[np.int64], tuple[int, ...], int | None]:
-    """The rule line by line: the rare case, in which some stamp jumps."""
-    accepted: list[int] = []
+    """The rule line by line, where some stamp jumps; the calm between jumps is passed over at once."""
+    accepted = np.zeros(stamps.size, bool)
     refused: list[int] = []
-    pending: int | None = 0 if waits and stamps else None
-    for i, stamp in enumerate(stamps):
-        if pending == i:
-            continue
+    pending: int | None = 0 if waits and stamps.size else None
+    i, looks = 0 if pending is None else 1, _MOST_LOOKS
+    while i < stamps.size:
+        if pending is None and top is not None and looks:
+            looks -= 1
+            calm = stamps[i : i + _calm(stamps[i:], top, ahead)]
+            if calm.size:
+                accepted[i : i + calm.size] = True
+                top = max(top, int(calm.max()))
+                i += calm.size
+                continue
+        stamp = int(stamps[i])
         if pending is not None:
-            if _confirms(stamp, stamps[pending], top, ahead):
-                accepted.append(pending)
-                top = stamps[pending] if top is None else max(top, stamps[pending])
+            if _confirms(stamp, int(stamps[pending]), top, ahead):
+                accepted[pending] = True
+                top = int(stamps[pending]) if top is None else max(top, int(stamps[pending]))
             else:
                 refused.append(pending)
             pending = None
         if top is None or stamp - top > ahead:
             pending = i
         else:
-            accepted.append(i)
+            accepted[i] = True
             top = max(top, stamp)
-    return np.array(accepted, np.int64), tuple(refused), pending
+        i += 1
+    return np.flatnonzero(accepted), tuple(refused), pending
 
 
 def _confirms(stamp: int, pending: int, top: int | None, ahead: int) -> bool:

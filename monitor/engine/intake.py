@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import numpy as np
 from numpy.typing import NDArray
 
 from monitor.engine.clockwork import Rules, effective_times
+from monitor.engine.grouping import Groups, groups_of
 from monitor.engine.state import Chain, State, Stream, WaitingEvent
 from monitor.engine.stimuli import Arrived, ChainSeen, Lines
 from storage.facts import RejectedSample
@@ -163,16 +166,60 @@ def _count(state: State, chain: Chain, lines: Lines, times: NDArray[np.int64], l
     chain.late += int(late.sum())
     state.uncommitted += times.size
     pane = state.plan.pane
-    starts = times // pane
-    order = None
-    if lines.codes[0] != lines.codes[-1] or starts[0] != starts[-1] or _varies(lines.codes) or _varies(starts):
-        order = np.lexsort((starts, lines.codes))
-    codes, panes = (lines.codes, starts) if order is None else (lines.codes[order], starts[order])
-    cuts = np.flatnonzero((codes[1:] != codes[:-1]) | (panes[1:] != panes[:-1])) + 1
-    for low, high in zip([0, *cuts.tolist()], [*cuts.tolist(), times.size], strict=True):
-        chosen = slice(low, high) if order is None else order[low:high]
-        name = lines.names[codes[low]] or chain.feed
-        _put(state, chain, name, int(panes[low]) * pane, _Some(lines, times, late, chosen))
+    groups = groups_of(lines.codes, times // pane)
+    sizes = lines.sizes
+    if groups.order is not None:
+        sizes, times, late = sizes[groups.order], times[groups.order], late[groups.order]
+    lates = np.add.reduceat(late, groups.firsts, dtype=np.int64).tolist()
+    firsts, newest = np.minimum.reduceat(times, groups.firsts), np.maximum.reduceat(times, groups.firsts)
+    streams = _streams(state, chain, lines, groups, firsts)
+    builders = []
+    spans = zip(streams, groups.panes.tolist(), lates, newest.tolist(), firsts.tolist(), strict=True)
+    for (stream, number, group_late, last, first), low, size in zip(
+        spans, groups.firsts.tolist(), groups.sizes.tolist(), strict=True
+    ):
+        stream.first, stream.newest = min(stream.first, first), max(stream.newest, last)
+        stream.events += size
+        stream.late += group_late
+        builder = stream.builder(number * pane)
+        builder.count(sizes[low : low + size], group_late)
+        builders.append(builder)
+    _consider(builders, groups, sizes, times, lines.describe)
+
+
+def _consider(
+    builders: list[PaneBuilder],
+    groups: Groups,
+    sizes: NDArray[np.float64],
+    times: NDArray[np.int64],
+    describe: Callable[[int], tuple[str, str]],
+) -> None:
+    """Bring each builder the events that may be among its pane's largest: few, once the pane has many."""
+    bars = np.array([builder.bar for builder in builders])
+    able = np.flatnonzero(sizes >= np.repeat(bars, groups.sizes))
+    cuts = np.searchsorted(able, groups.firsts)
+    counts = np.diff(cuts, append=able.size)
+    for i in np.flatnonzero(counts).tolist():
+        chosen = able[cuts[i] : cuts[i] + counts[i]]
+        builders[i].consider(
+            sizes[chosen],
+            times[chosen],
+            lambda k, chosen=chosen: describe(groups.place(int(chosen[k]))),  # type: ignore[misc]
+        )
+
+
+def _streams(state: State, chain: Chain, lines: Lines, groups: Groups, firsts: NDArray[np.int64]) -> list[Stream]:
+    """The stream of each group; new ones are made."""
+    found: list[Stream] = []
+    for code, first in zip(groups.codes.tolist(), firsts.tolist(), strict=True):
+        name = lines.names[code] or chain.feed
+        stream = state.streams.get(name)
+        if stream is None:
+            unit = next(feed.unit for feed in state.plan.feeds if feed.name == chain.feed)
+            unit = state.plan.stream(name, unit).unit
+            stream = state.streams[name] = Stream(name, chain.feed, unit, first, first)
+        found.append(stream)
+    return found
 
 
 def _beyond_cap(state: State, chain: Chain, lines: Lines) -> list[int]:
@@ -181,50 +228,9 @@ def _beyond_cap(state: State, chain: Chain, lines: Lines) -> list[int]:
     room = state.plan.max_streams - len(state.streams)
     if len(unknown) <= room:
         return []
-    present = set(np.unique(lines.codes).tolist())
+    present = set(np.flatnonzero(np.bincount(lines.codes)).tolist())
     new: dict[str, list[int]] = {}
     for code in unknown:
         if code in present:
             new.setdefault(lines.names[code], []).append(code)
     return [code for name in list(new)[max(0, room) :] for code in new[name]]
-
-
-def _varies(values: NDArray[np.int32] | NDArray[np.int64]) -> bool:
-    return bool((values != values[0]).any())
-
-
-class _Some:
-    """The part of a block that belongs to one pane."""
-
-    def __init__(
-        self, lines: Lines, times: NDArray[np.int64], late: NDArray[np.bool_], chosen: slice | NDArray[np.int64]
-    ) -> None:
-        self.sizes = lines.sizes[chosen]
-        self.times = times[chosen]
-        self.late = int(late[chosen].sum())
-        self._chosen = chosen
-        self._describe = lines.describe
-
-    def describe(self, i: int) -> tuple[str, str]:
-        """Digest and place of its event i."""
-        chosen = self._chosen
-        return self._describe(i + (chosen.start or 0) if isinstance(chosen, slice) else int(chosen[i]))
-
-
-def _put(state: State, chain: Chain, name: str, start: int, some: _Some) -> None:
-    first, newest = int(some.times.min()), int(some.times.max())
-    stream = state.streams.get(name)
-    if stream is None:
-        unit = next(feed.unit for feed in state.plan.feeds if feed.name == chain.feed)
-        unit = state.plan.stream(name, unit).unit
-        stream = state.streams[name] = Stream(name, chain.feed, unit, first, newest)
-    stream.first = min(stream.first, first)
-    stream.newest = max(stream.newest, newest)
-    stream.events += some.sizes.size
-    stream.late += some.late
-    stream.changed = True
-    stream.open.add(start)
-    builder = stream.builders.get(start)
-    if builder is None:
-        builder = stream.builders[start] = PaneBuilder()
-    builder.add(some.sizes, some.times, some.late, some.describe)

@@ -10,6 +10,7 @@ from __future__ import annotations
 from monitor.engine.intake import AHEAD
 from monitor.engine.state import Chain, FeedSet, State
 from storage.facts import Advance, Fact, PanePart, PaneSealed, RefitJob
+from storage.pane import build_panes
 
 END_OF_TIME = 2**62
 """The floor of chains that have ended for good; later than any stamp that can be parsed."""
@@ -92,13 +93,8 @@ def _seals_something(state: State, feeds: FeedSet, mark: int) -> bool:
 
 def drain(state: State, now: int) -> list[Fact]:
     """Everything learnt since the last commit: parts of panes, panes to seal, streams, chains, samples."""
-    facts: list[Fact] = []
-    pane = state.plan.pane
+    facts = _parts(state)
     for stream in state.streams.values():
-        for start, builder in stream.builders.items():
-            content = builder.build(state.distinct)
-            facts.append(PanePart(stream=stream.name, start=start, end=start + pane, content=content))
-        stream.builders = {}
         if stream.changed:
             facts.append(stream.fact())
             stream.changed = False
@@ -114,14 +110,35 @@ def drain(state: State, now: int) -> list[Fact]:
     return facts
 
 
+def _parts(state: State) -> list[Fact]:
+    """The parts of all panes that have new events."""
+    pane = state.plan.pane
+    touched = [
+        (stream.name, start, builder)
+        for stream in state.streams.values()
+        if stream.changed
+        for start, builder in stream.builders.items()
+        if builder.chunks
+    ]
+    contents = build_panes([builder for _, _, builder in touched], state.distinct)
+    return [
+        PanePart(stream=name, start=start, end=start + pane, content=content)
+        for (name, start, _), content in zip(touched, contents, strict=True)
+    ]
+
+
 def _seal(state: State, name: str, open_panes: set[int], now: int) -> list[Fact]:
     mark = state.marks.get(state.carriers(name))
     if mark is None:
         return []
     pane, settings = state.plan.pane, state.plan.digest
+    if min(open_panes) + pane > mark:
+        return []
     window = state.plan.stream(name, state.streams[name].unit).window
     done = sorted(start for start in open_panes if start + pane <= mark)
     open_panes.difference_update(done)
+    for start in done:
+        state.streams[name].builders.pop(start, None)
     return [
         PaneSealed(stream=name, start=start, end=start + pane, window_start=start + pane - window, settings=settings,
                    known_at=now)

@@ -77,10 +77,19 @@ class Stream:
     events: int = 0
     late: int = 0
     builders: dict[int, PaneBuilder] = field(default_factory=dict)
-    """Pane start -> what came since the last commit."""
+    """Pane start -> what gathers its events; kept while the pane is open."""
     open: set[int] = field(default_factory=set)
     """Starts of panes that are not sealed, committed or not."""
     changed: bool = True
+
+    def builder(self, start: int) -> PaneBuilder:
+        """What gathers the events of the pane that starts then; the stream has changed."""
+        self.changed = True
+        found = self.builders.get(start)
+        if found is None:
+            found = self.builders[start] = PaneBuilder()
+            self.open.add(start)
+        return found
 
     def fact(self) -> StreamState:
         """The stream as it goes into the store."""

@@ -9,8 +9,20 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from storage import pane as pane_module
 from storage.errors import StoreCorrupt
-from storage.pane import EMPTY, LARGEST_KEPT, Pane, PaneBuilder, add, decode, digest, encode, line_digest
+from storage.pane import (
+    EMPTY,
+    LARGEST_KEPT,
+    Pane,
+    PaneBuilder,
+    add,
+    build_panes,
+    decode,
+    digest,
+    encode,
+    line_digest,
+)
 
 DISTINCT = 40  # small, so that panes get crowded within a test
 
@@ -32,14 +44,16 @@ def built(batches: list[list[Event]], distinct: int = DISTINCT) -> Pane:
     builder = PaneBuilder()
     for batch in batches:
         if batch:
-            sizes = np.array([event[0] for event in batch])
-            times = np.array([event[1] for event in batch], np.int64)
-
-            def describe(i: int, batch: list[Event] = batch) -> tuple[str, str]:
-                return line_digest(repr(batch[i]).encode()), f"line {i}"
-
-            builder.add(sizes, times, sum(event[2] for event in batch), describe)
+            feed(builder, batch)
     return builder.build(distinct)
+
+
+def feed(builder: PaneBuilder, batch: list[Event]) -> None:
+    def describe(i: int) -> tuple[str, str]:
+        return line_digest(repr(batch[i]).encode()), f"line {i}"
+
+    sizes, times = np.array([event[0] for event in batch]), np.array([event[1] for event in batch], np.int64)
+    builder.add(sizes, times, sum(event[2] for event in batch), describe)
 
 
 def cut(listed: list[Any], cuts: list[int]) -> list[list[Any]]:
@@ -118,3 +132,54 @@ def test_an_empty_pane_adds_nothing() -> None:
     pane = built([[(2.0, 1, True, 0)]])
     assert digest(add([EMPTY, pane, EMPTY], DISTINCT)) == digest(pane)
     assert add([], DISTINCT).n == 0
+
+
+@given(events, st.lists(st.integers(0, 120), max_size=6), st.sampled_from([1, 3, 1000]))
+@settings(max_examples=200)
+def test_a_builder_that_goes_on_after_each_part_makes_parts_of_the_same_sum(
+    listed: list[Event], cuts: list[int], repeats: int
+) -> None:
+    listed = listed * 3 if repeats == 3 else listed  # many ties in size and time
+    builder, parts = PaneBuilder(), []
+    for batch in cut(listed, cuts):
+        if batch:
+            feed(builder, batch)
+        parts.append(builder.build(DISTINCT if repeats != 1000 else 10**6))
+    distinct = DISTINCT if repeats != 1000 else 10**6
+    assert digest(add(parts, distinct)) == digest(built([listed], distinct))
+
+
+@given(st.lists(events, max_size=8), st.sampled_from([1, 5, 2048]))
+@settings(max_examples=100)
+def test_building_many_at_once_gives_what_each_alone_gives(several: list[list[Event]], alone: int) -> None:
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(pane_module, "_FEWEST_ALONE", alone)
+        builders = [PaneBuilder() for _ in several]
+        for builder, listed in zip(builders, several, strict=True):
+            if listed:
+                feed(builder, listed)
+        together = [digest(pane) for pane in build_panes(builders, DISTINCT)]
+    for listed, found in zip(several, together, strict=True):
+        sizes = sorted({event[0] for event in listed})
+        plain = built([listed])
+        assert found == digest(plain)
+        if plain.cells is None:
+            assert plain.sizes.tolist() == sizes
+            assert plain.counts.tolist() == [sum(event[0] == size for event in listed) for size in sizes]
+
+
+def test_only_what_can_be_among_the_largest_is_ever_described() -> None:
+    chance, asked = np.random.default_rng(5), []
+    builder = PaneBuilder()
+    for part in range(50):
+        sizes = chance.pareto(1.5, 2000) + 1
+
+        def describe(i: int, part: int = part) -> tuple[str, str]:
+            asked.append((part, i))
+            return line_digest(b"%d %d" % (part, i)), ""
+
+        builder.add(sizes, np.arange(2000) + 2000 * part, 0, describe)
+        builder.build(10**6)
+    # The k-th event is among the 32 largest so far with probability 32/k: 32 (1 + ln(100000/32)) = 290 in all.
+    # Its standard deviation is below sqrt(290) = 17; eight of them are never exceeded.
+    assert len(asked) < 290 + 8 * 17

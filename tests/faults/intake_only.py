@@ -23,9 +23,10 @@ from storage.store import Store, open_store
 
 
 class NoWorker:
-    """A worker that is never free: what is sealed stays queued."""
+    """A worker that is never free: what is sealed stays queued. Never ready: loading compiled parsers takes time,
+    and faults are to strike while lines are read."""
 
-    ready = True
+    ready = False
     busy = True
 
     def poll(self) -> Outcome | None:

@@ -8,6 +8,7 @@ from monitor.sources.marks import ANCHOR_BYTES, HEAD_BYTES, Mark, anchor_of, hea
 
 _HEADER_BYTES = 1 << 16
 _FEWEST_BYTES = 1 << 12
+_LAST_BYTES = 1 << 14
 
 
 class Changed(Exception):  # noqa: N818 - a state of the file, not a fault of ours
@@ -61,7 +62,7 @@ class Reading:
         Raises Changed, content.Incomplete, OSError; the position has not moved then.
         """
         self._jump_hole()
-        count = max(limit, _FEWEST_BYTES)
+        count = self._to_a_newline(max(limit, _FEWEST_BYTES))
         raw = self._read(count)
         taken = self._cut(raw, count, max_line, final)
         if not taken.consumed and len(raw) == count:
@@ -77,6 +78,14 @@ class Reading:
         self.position += taken.consumed
         self.skipping = taken.skipping
         return taken
+
+    def _to_a_newline(self, count: int) -> int:
+        """Where a large read should end: behind a newline, so that its lines need not be copied out of it."""
+        if count <= 2 * _LAST_BYTES or not isinstance(self.content, PlainContent):
+            return count
+        first = count - _LAST_BYTES
+        newline = self.content.read_at(self.position + first, _LAST_BYTES).rfind(b"\n")
+        return count if newline < 0 else first + newline + 1
 
     def _read(self, count: int) -> bytes:
         raw = self.content.read_at(self.position, count)

@@ -13,6 +13,17 @@ from monitor.alarms.states import Choice, State
 
 Direction = Literal["heavier", "lighter"]
 
+Measure = Literal["level", "share", "rate", "size", "silence", "none"]
+"""What `before` and `after` of an alarm are.
+
+level    the size passed once in so many events, in the stream's unit
+share    a share of events or lines, 0 to 1
+rate     something a day
+size     one size, in the stream's unit: `after` is the event's, `before` the limit or the largest seen before
+silence  seconds between events: `after` how long there has been none, `before` the usual gap
+none     the rule has no figure
+"""
+
 
 class Spoke(msgspec.Struct, frozen=True, kw_only=True):
     """What a rule said, in the terms that people are told. Times are ns of event time.
@@ -20,7 +31,6 @@ class Spoke(msgspec.Struct, frozen=True, kw_only=True):
     events           how many events its evidence rests on since the watch began or began again
     changed_at       the likeliest moment of the change, and the set that holds it with the promised chance
     before, after    one measure of the stream, before and after the change, in `unit`; None where it has none
-    measure          what it is: "level" (the size passed once in so many events), "share", "size", "rate" ...
     cause            what stands behind it where a rule has several possibilities
     """
 
@@ -32,7 +42,7 @@ class Spoke(msgspec.Struct, frozen=True, kw_only=True):
     changed_at: int | None = None
     changed_between: tuple[int, int] | None = None
     unit: str = ""
-    measure: str = ""
+    measure: Measure = "none"
     before: float | None = None
     after: float | None = None
     cause: str | None = None
@@ -73,7 +83,7 @@ class Alarm(msgspec.Struct, frozen=True, kw_only=True):
     changed_at: int | None
     changed_between: tuple[int, int] | None
     unit: str
-    measure: str
+    measure: Measure
     before: float | None
     after: float | None
     cause: str | None

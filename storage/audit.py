@@ -42,7 +42,10 @@ def canonical_lines(reader: Reader) -> Iterator[str]:
             held = msgspec.structs.asdict(baseline)
             del held["known_at"]
             yield canonical_json({"baseline": held})
-        for fact in (*reader.watches(), *reader.watch_states(), *reader.spoken()):
+        for fact in (
+            *reader.watches(), *reader.watch_states(), *reader.spoken(), *reader.alarms(), *reader.alarm_moves(),
+            *reader.notices(),
+        ):  # fmt: skip
             told = msgspec.structs.asdict(fact)
             told.pop("known_at", None)
             yield canonical_json({type(fact).__name__: told})

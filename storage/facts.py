@@ -238,3 +238,93 @@ class RuleSpoke(Fact, frozen=True, kw_only=True):
     spoken: str
     change: str | None
     known_at: int
+
+
+class AlarmStood(Fact, frozen=True, kw_only=True):
+    """An alarm as it stands (JSON), with what it is looked up by."""
+
+    id: str
+    stream: str
+    rule: str
+    state: str
+    raised_at: int
+    open: bool
+    alarm: str
+    known_at: int
+
+
+class AlarmMoved(Fact, frozen=True, kw_only=True):
+    """One row of an alarm's history; `by` is None when the program acted by itself."""
+
+    id: str
+    alarm: str
+    at: int
+    from_state: str
+    to_state: str
+    cause: str
+    by: str | None
+    note: str | None
+    known_at: int
+
+
+class NoticeQueued(Fact, frozen=True, kw_only=True):
+    """Something that is to be told about an alarm."""
+
+    id: str
+    alarm: str
+    kind: str
+    at: int
+    known_at: int
+
+
+class NoteWritten(Fact, frozen=True, kw_only=True):
+    """A person's note about a moment."""
+
+    id: str
+    at: int
+    by: str
+    text: str
+    known_at: int
+
+
+class KnownAdded(Fact, frozen=True, kw_only=True):
+    """A known change that a person declared, or that a decision declares."""
+
+    id: str
+    start: int
+    end: int
+    streams: str
+    reason: str
+    effect: str
+    by: str
+    known_at: int
+
+
+class ChangeAccepted(Fact, frozen=True, kw_only=True):
+    """A person accepts a change as the new normal: what came before `since` no longer counts for the baseline."""
+
+    id: str
+    stream: str
+    since: int
+    by: str
+    note: str
+    known_at: int
+
+
+class Request(msgspec.Struct, frozen=True, kw_only=True):
+    """What a person asked for through the store, and the daemon's answer. `act` is JSON."""
+
+    id: str
+    act: str
+    made_at: int
+    done: bool | None
+    answer: str | None
+
+
+class RequestAnswered(Fact, frozen=True, kw_only=True):
+    """The answer to a request: done, or why not."""
+
+    id: str
+    done: bool
+    answer: str
+    known_at: int

@@ -17,12 +17,19 @@ from sqlite_utils import Database
 
 from storage.errors import StoreCorrupt
 from storage.facts import (
+    AlarmMoved,
+    AlarmStood,
     BaselineSet,
     ChainState,
+    ChangeAccepted,
     Forgotten,
+    KnownAdded,
+    NoteWritten,
+    NoticeQueued,
     RefitJob,
     RefitStored,
     RejectedSample,
+    Request,
     RuleSpoke,
     StoredPane,
     StreamState,
@@ -232,6 +239,56 @@ class Reader:
                 " order by at_ns, stream, rule",
                 stream,
                 since,
+            )
+        ]
+
+    def alarms(self, *, only_open: bool = False) -> list[AlarmStood]:
+        """Alarms, newest last."""
+        return [
+            AlarmStood(**{**row, "open": bool(row["open"])})
+            for row in self._rows("select * from alarm where open >= ? order by raised_at, id", int(only_open))
+        ]
+
+    def alarm_moves(self, alarm: str | None = None) -> list[AlarmMoved]:
+        """The histories of alarms, or of one, by time."""
+        return [
+            AlarmMoved(**{**_without(row, "at_ns"), "at": row["at_ns"]})
+            for row in self._rows(
+                "select * from alarm_change where ? is null or alarm = ? order by at_ns, known_at, rowid", alarm, alarm
+            )
+        ]
+
+    def notices(self) -> list[NoticeQueued]:
+        """Everything that was to be told, by time."""
+        return [
+            NoticeQueued(**{**_without(row, "at_ns"), "at": row["at_ns"]})
+            for row in self._rows("select * from notice order by at_ns, id")
+        ]
+
+    def notes(self) -> list[NoteWritten]:
+        """Notes about moments, by time."""
+        return [
+            NoteWritten(**{**_without(row, "at_ns"), "at": row["at_ns"]})
+            for row in self._rows("select * from note order by at_ns, id")
+        ]
+
+    def known_changes(self) -> list[KnownAdded]:
+        """Known changes that people declared beside the settings, by time."""
+        return [
+            KnownAdded(**{**_without(row, "from_ns", "to_ns"), "start": row["from_ns"], "end": row["to_ns"]})
+            for row in self._rows("select * from known_change order by from_ns, id")
+        ]
+
+    def accepted_changes(self) -> list[ChangeAccepted]:
+        """Changes that people accepted as the new normal, in order."""
+        return [ChangeAccepted(**row) for row in self._rows("select * from accepted_change order by known_at, rowid")]
+
+    def requests(self, *, only_open: bool = False) -> list[Request]:
+        """What people asked for, oldest first."""
+        return [
+            Request(**{**_without(row, "known_at"), "done": None if row["done"] is None else bool(row["done"])})
+            for row in self._rows(
+                "select * from request where ? = 0 or done is null order by made_at, rowid", int(only_open)
             )
         ]
 

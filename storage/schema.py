@@ -74,6 +74,30 @@ def m001_first_tables(db: Database) -> None:
             id text primary key, stream text not null, rule text not null, at_ns integer not null,
             watch text not null, spoken text not null, change text, known_at integer not null) strict""",
         "create index spoken_of on spoken (stream, at_ns)",
+        """create table alarm (
+            id text primary key, stream text not null, rule text not null, state text not null,
+            raised_at integer not null, open integer not null, alarm text not null,
+            known_at integer not null) strict""",
+        "create index alarm_open on alarm (open, raised_at)",
+        """create table alarm_change (
+            id text primary key, alarm text not null, at_ns integer not null, from_state text not null,
+            to_state text not null, cause text not null, by text, note text, known_at integer not null) strict""",
+        "create index alarm_change_of on alarm_change (alarm, at_ns)",
+        """create table notice (
+            id text primary key, alarm text not null, kind text not null, at_ns integer not null,
+            known_at integer not null) strict""",
+        """create table note (
+            id text primary key, at_ns integer not null, by text not null, text text not null,
+            known_at integer not null) strict""",
+        """create table known_change (
+            id text primary key, from_ns integer not null, to_ns integer not null, streams text not null,
+            reason text not null, effect text not null, by text not null, known_at integer not null) strict""",
+        """create table accepted_change (
+            id text primary key, stream text not null, since integer not null, by text not null, note text not null,
+            known_at integer not null) strict""",
+        """create table request (
+            id text primary key, act text not null, made_at integer not null, done integer, answer text,
+            known_at integer) strict""",
         """create table quarantine (
             id integer primary key, stream text not null, from_ns integer not null, events integer not null,
             reason text not null, content blob not null, known_at integer not null) strict""",

@@ -31,15 +31,22 @@ from storage.errors import (
 )
 from storage.facts import (
     Advance,
+    AlarmMoved,
+    AlarmStood,
     BaselineSet,
     ChainState,
+    ChangeAccepted,
     Fact,
     Forget,
+    KnownAdded,
+    NoteWritten,
+    NoticeQueued,
     PanePart,
     PaneSealed,
     RefitRetried,
     RefitStored,
     RejectedSample,
+    RequestAnswered,
     RuleSpoke,
     SettingsTaken,
     StreamState,
@@ -191,6 +198,13 @@ class Store:
             (WatchBegun, self._put_watches),
             (WatchStood, self._put_watch_states),
             (RuleSpoke, self._put_spoken),
+            (AlarmStood, self._put_alarms),
+            (AlarmMoved, self._put_moves),
+            (NoticeQueued, self._put_notices),
+            (NoteWritten, self._put_notes),
+            (KnownAdded, self._put_known),
+            (ChangeAccepted, self._put_accepted),
+            (RequestAnswered, self._put_answers),
             (Forget, self._forget),
         )
 
@@ -327,6 +341,41 @@ class Store:
 
     def _put_spoken(self, facts: list[RuleSpoke]) -> None:
         self.db["spoken"].insert_all((_renamed(fact, at="at_ns") for fact in facts), replace=True)
+
+    def _put_alarms(self, facts: list[AlarmStood]) -> None:
+        for fact in facts:  # one after the other: the last state of an alarm counts
+            self.db["alarm"].insert({**msgspec.structs.asdict(fact), "open": int(fact.open)}, replace=True)
+
+    def _put_moves(self, facts: list[AlarmMoved]) -> None:
+        self.db["alarm_change"].insert_all((_renamed(fact, at="at_ns") for fact in facts), replace=True)
+
+    def _put_notices(self, facts: list[NoticeQueued]) -> None:
+        self.db["notice"].insert_all((_renamed(fact, at="at_ns") for fact in facts), ignore=True)
+
+    def _put_notes(self, facts: list[NoteWritten]) -> None:
+        self.db["note"].insert_all((_renamed(fact, at="at_ns") for fact in facts), replace=True)
+
+    def _put_known(self, facts: list[KnownAdded]) -> None:
+        self.db["known_change"].insert_all(
+            (_renamed(fact, start="from_ns", end="to_ns") for fact in facts), replace=True
+        )
+
+    def _put_accepted(self, facts: list[ChangeAccepted]) -> None:
+        self.db["accepted_change"].insert_all((msgspec.structs.asdict(fact) for fact in facts), replace=True)
+
+    def open_requests(self) -> list[tuple[str, str]]:
+        """(id, act) of what people asked for and nobody answered yet, oldest first."""
+        with named_errors(self.path):
+            return list(
+                self.db.execute("select id, act from request where done is null order by made_at, rowid").fetchall()
+            )
+
+    def _put_answers(self, facts: list[RequestAnswered]) -> None:
+        for fact in facts:
+            self.db.execute(
+                "update request set done = ?, answer = ?, known_at = ? where id = ?",
+                [int(fact.done), fact.answer, fact.known_at, fact.id],
+            )
 
     def _forget(self, facts: list[Forget]) -> None:
         for fact in facts:

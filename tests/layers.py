@@ -13,6 +13,7 @@ LAYERS = {
     "storage.store": 3,
     "storage.history": 3,
     "storage.audit": 3,
+    "storage.requests": 3,
     "monitor": 0,
     "monitor.errors": 0,
     "monitor.tail": 1,

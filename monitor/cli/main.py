@@ -23,6 +23,15 @@ COMMANDS = {
     "screen": "monitor.cli.screen:screen",
     "history": "monitor.cli.history:history",
     "check": "monitor.cli.check:check_command",
+    "alarms": "monitor.cli.alarms:alarms",
+    "acknowledge": "monitor.cli.acts:acknowledge",
+    "shelve": "monitor.cli.acts:shelve",
+    "unshelve": "monitor.cli.acts:unshelve",
+    "out-of-service": "monitor.cli.acts:out_of_service",
+    "in-service": "monitor.cli.acts:in_service",
+    "note": "monitor.cli.acts:note",
+    "decide": "monitor.cli.acts:decide",
+    "baseline": "monitor.cli.alarms:baseline",
     "promise": "monitor.cli.promise:promise_command",
 }
 INTERRUPTED = 130

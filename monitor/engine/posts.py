@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import msgspec
 
+from monitor.engine.alarming import heed
 from monitor.engine.natural import natural_id
 from monitor.engine.state import Posted, State
 from monitor.engine.watching import Measured, Told, Watched, WatchOrder, planned_watch, watched
@@ -59,7 +60,7 @@ def follow(state: State, stream: str, found: Watched, now: int) -> list[Fact]:
         state=text_of(found.state),
         readings=text_of(found.readings),
     )
-    return [stood, *(_spoke(posted, told, now) for told in found.told)]
+    return [stood, *(_spoke(posted, told, now) for told in found.told), *heed(state, stream, found, now)]
 
 
 def _spoke(posted: Posted, told: Told, now: int) -> RuleSpoke:

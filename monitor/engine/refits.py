@@ -7,6 +7,8 @@ from typing import Any
 
 import msgspec
 
+from monitor.alarms.known import kept_out
+from monitor.engine.alarming import known_of
 from monitor.engine.natural import natural_id, natural_seed
 from monitor.engine.posts import follow, post_measured
 from monitor.engine.state import State
@@ -46,6 +48,11 @@ def next_request(state: State) -> RefitRequest | None:
         return None
     job = state.jobs[0]
     stream = state.streams[job.stream]
+    since = state.since.get(job.stream)
+    if since is not None and job.start < since < job.end:
+        # What came before an accepted change belongs to another baseline: the window begins with it.
+        pane = state.plan.pane
+        job = msgspec.structs.replace(job, start=min(job.end - pane, -(-since // pane) * pane))
     plan = state.plan.stream(job.stream, stream.unit)
     seed = natural_seed(state.plan.seed, job.stream, job.start, job.end, "refit")
     return RefitRequest(
@@ -167,8 +174,9 @@ def _is_this_plan(held: BaselineSet, planned: PlannedTail) -> bool:
 def judged(state: State, stimulus: Judged) -> list[Fact]:
     """Store what the worker found, flag what differs, take the first good window as the baseline."""
     outcome = stimulus.outcome
-    job = state.jobs.popleft()
-    assert (job.stream, job.end) == (outcome.job.stream, outcome.job.end), "outcomes come in the order of requests"
+    first = state.jobs.popleft()
+    job = msgspec.structs.replace(outcome.job, attempts=first.attempts)
+    assert (job.stream, job.end) == (first.stream, first.end), "outcomes come in the order of requests"
     if outcome.failure is not None and job.attempts + 1 < ATTEMPTS:
         again = msgspec.structs.replace(job, attempts=job.attempts + 1)
         state.jobs.appendleft(again)
@@ -219,11 +227,15 @@ def _first_baseline(state: State, refit: RefitStored, judgement: Judgement) -> B
     plan = state.plan.stream(refit.stream, state.streams[refit.stream].unit)
     assert judgement.n_tail is not None
     assert judgement.xmin is not None
-    if judgement.n_tail < plan.baseline_tail:
+    if judgement.n_tail < plan.baseline_tail or kept_out(known_of(state), refit.stream, refit.start, refit.end):
         return None
+    since = state.since.get(refit.stream)
+    if since is not None and refit.start < since:
+        return None  # too short yet: the window must lie after the accepted change
     return BaselineSet(
         id=natural_id("first window", refit.id),
-        stream=refit.stream, source="first window", refit=refit.id, alpha=judgement.alpha, xmin=judgement.xmin,
+        stream=refit.stream, source="first window" if since is None else "accepted",
+        refit=refit.id, alpha=judgement.alpha, xmin=judgement.xmin,
         n_tail=judgement.n_tail, n=judgement.n, p=judgement.gof.p if judgement.gof else None,
         plausible=judgement.gof.plausible if judgement.gof else None, counting=judgement.counting,
         panes_to=refit.end, effective_from=refit.end, known_at=refit.known_at,

@@ -7,11 +7,23 @@ from collections.abc import Iterable, Mapping
 
 import msgspec
 
+from monitor.alarms.alarm import Alarm
+from monitor.alarms.known import KnownChange
 from monitor.engine.sealing import advance, feeds_of_text
 from monitor.engine.state import Chain, Posted, State, Stream, WaitingEvent
 from monitor.plan import Plan
 from monitor.watch.rules import Watch, WatchState
-from storage.facts import BaselineSet, ChainState, RefitJob, StreamState, WatchBegun, WatchStood
+from storage.facts import (
+    AlarmStood,
+    BaselineSet,
+    ChainState,
+    ChangeAccepted,
+    KnownAdded,
+    RefitJob,
+    StreamState,
+    WatchBegun,
+    WatchStood,
+)
 
 
 class Remembered(msgspec.Struct, frozen=True, kw_only=True):
@@ -31,6 +43,9 @@ class Remembered(msgspec.Struct, frozen=True, kw_only=True):
     baselines: Iterable[BaselineSet]
     watches: Iterable[WatchBegun] = ()
     watch_states: Iterable[WatchStood] = ()
+    open_alarms: Iterable[AlarmStood] = ()
+    known_changes: Iterable[KnownAdded] = ()
+    accepted: Iterable[ChangeAccepted] = ()
 
 
 def restore(plan: Plan, distinct: int, remembered: Remembered, now: int) -> State:
@@ -54,12 +69,31 @@ def restore(plan: Plan, distinct: int, remembered: Remembered, now: int) -> Stat
         state.marks[carriers] = max(mark, state.marks.get(carriers, mark))
     for baseline in remembered.baselines:
         state.baselines[baseline.stream] = baseline
+    for known_change in remembered.known_changes:
+        state.declared.append(
+            KnownChange(
+                start=known_change.start, end=known_change.end, streams=known_change.streams,
+                reason=known_change.reason, effect=known_change.effect,  # type: ignore[arg-type]
+            )
+        )  # fmt: skip
+    for accepted in remembered.accepted:
+        state.since[accepted.stream] = accepted.since
+        held = state.baselines.get(accepted.stream)
+        if held is not None and held.known_at < accepted.known_at:
+            del state.baselines[accepted.stream]
+    for stored in remembered.open_alarms:
+        state.alarms[stored.stream, stored.rule] = msgspec.json.decode(stored.alarm, type=Alarm)
     begun = {watch.id: watch for watch in remembered.watches}
     for stood in remembered.watch_states:
+        if stood.stream not in state.baselines:
+            continue  # a change was accepted, and the new baseline is still to come
         state.watches[stood.stream] = Posted(
             id=stood.watch,
             watch=msgspec.json.decode(begun[stood.watch].watch, type=Watch),
             state=msgspec.json.decode(stood.state, type=WatchState),
+            holding=tuple(
+                alarm.rule for alarm in state.alarms.values() if alarm.stream == stood.stream and alarm.standing
+            ),
         )
     state.jobs.extend(sorted(remembered.jobs, key=lambda job: (job.end, job.stream)))
     # Before new chains are found: their edge must lie where the watermark stood.

@@ -7,6 +7,8 @@ from dataclasses import dataclass, field
 
 import msgspec
 
+from monitor.alarms.alarm import Alarm
+from monitor.alarms.known import KnownChange
 from monitor.plan import Plan
 from monitor.watch.rules import RuleName, Watch, WatchState
 from storage.facts import BaselineSet, ChainState, RefitJob, RejectedSample, StreamState
@@ -120,6 +122,12 @@ class State:
     """Watermark of each set of feeds: everything before it is sealed or will be at the next commit."""
     baselines: dict[str, BaselineSet] = field(default_factory=dict)
     watches: dict[str, Posted] = field(default_factory=dict)
+    alarms: dict[tuple[str, str], Alarm] = field(default_factory=dict)
+    """(stream, rule) -> its open alarm."""
+    declared: list[KnownChange] = field(default_factory=list)
+    """Known changes that people declared beside the settings."""
+    since: dict[str, int] = field(default_factory=dict)
+    """Stream -> the moment before which nothing counts for its baseline: a change was accepted then."""
     jobs: deque[RefitJob] = field(default_factory=deque)
     """Committed jobs, in window order; the one being judged is first until its outcome is stored."""
     samples: list[RejectedSample] = field(default_factory=list)

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from monitor.engine import intake, posts, refits, retention, sealing
+import msgspec
+
+from monitor.engine import alarming, intake, posts, refits, retention, sealing
 from monitor.engine.state import State
-from monitor.engine.stimuli import Arrived, ChainSeen, CommitDue, Ended, Judged, Stimulus
-from storage.facts import Fact, PaneSealed
+from monitor.engine.stimuli import Arrived, Asked, ChainSeen, CommitDue, Ended, Judged, Stimulus
+from storage.facts import Fact, PaneSealed, RequestAnswered
 
 
 def step(state: State, stimulus: Stimulus) -> list[Fact]:
@@ -25,6 +27,8 @@ def step(state: State, stimulus: Stimulus) -> list[Fact]:
             return _commit_due(state, stimulus.now)
         case Judged():
             return refits.judged(state, stimulus)
+        case Asked():
+            return _asked(state, stimulus)
     return []
 
 
@@ -40,7 +44,17 @@ def _commit_due(state: State, now: int) -> list[Fact]:
             state.baselines[stream] = baseline
             facts.append(baseline)
             facts += posts.post_planned(state, baseline, refits.watch_order(state, stream), now)
-    return facts + _silence(state, {fact.stream for fact in sealed}, now)
+    facts += _silence(state, {fact.stream for fact in sealed}, now)
+    return facts + alarming.pass_time(state, now)
+
+
+def _asked(state: State, stimulus: Asked) -> list[Fact]:
+    try:
+        act = msgspec.json.decode(stimulus.act, type=alarming.Act)
+    except msgspec.DecodeError as error:
+        answer = f"not understood: {error}"
+        return [RequestAnswered(id=stimulus.request, done=False, answer=answer, known_at=stimulus.now)]
+    return alarming.asked(state, stimulus.request, act, stimulus.now)
 
 
 def _silence(state: State, sealed: set[str], now: int) -> list[Fact]:

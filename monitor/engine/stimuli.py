@@ -102,4 +102,13 @@ class Judged:
     now: int
 
 
-Stimulus = Arrived | ChainSeen | Ended | CommitDue | Judged
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Asked:
+    """A person asks for something: `act` is JSON of monitor.engine.alarming.Act."""
+
+    request: str
+    act: str
+    now: int
+
+
+Stimulus = Asked | Arrived | ChainSeen | Ended | CommitDue | Judged

@@ -5,19 +5,21 @@ from __future__ import annotations
 from monitor.engine import refits
 from monitor.engine.state import State
 from monitor.engine.step import committed, step
-from monitor.engine.stimuli import CommitDue, Ended, Judged
+from monitor.engine.stimuli import Asked, CommitDue, Ended, Judged
 from monitor.service.clock import Clock
 from monitor.service.feeds import OpenFeed
 from monitor.service.log import Log
 from monitor.service.worker import Worker
 from storage.errors import StoreError
-from storage.facts import BaselineSet, Fact, Forget, RefitStored
+from storage.facts import BaselineSet, ChainState, Fact, Forget, RefitStored
 from storage.store import Store
 
 BLOCK = 4 << 20
 """Bytes taken from a feed in one turn."""
 COMMIT_EVENTS = 50_000
 COMMIT_SECONDS = 1.0
+AWAITED_SECONDS = 0.05
+"""Between commits while a sender waits for one."""
 PAGES_GIVEN_BACK = 2000
 """Free pages returned to the file system after a deletion; what is left is returned after the next."""
 FIRST_RETRY, LAST_RETRY = 1.0, 60.0
@@ -48,10 +50,21 @@ class Loop:
         """One round. Returns True when lines came in, False when there was nothing to read."""
         active = self._failing_store() or self._poll_feeds()
         real = self.clock.monotonic()
-        if self.state.uncommitted >= COMMIT_EVENTS or real - self._last_commit >= COMMIT_SECONDS:
+        due = AWAITED_SECONDS if any(feed.awaited for feed in self.feeds) else COMMIT_SECONDS
+        if self.state.uncommitted >= COMMIT_EVENTS or real - self._last_commit >= due:
             self.commit()
+            self._heed_requests()
         self._poll_worker()
         return active
+
+    def _heed_requests(self) -> None:
+        """What people asked for through the store, each answered in a commit of its own."""
+        if self._pending:
+            return
+        for request, act in self.store.open_requests():
+            self._pending = step(self.state, Asked(request=request, act=act, now=self.clock.now()))
+            if not self.commit():
+                return
 
     def _failing_store(self) -> bool:
         """While commits fail, nothing more is read: memory stays bounded and the positions stay true."""
@@ -73,6 +86,7 @@ class Loop:
                 active = True
             for trouble in feed.troubles():
                 self.log.warning(trouble)
+            active = active or feed.receiving
         return active
 
     def commit(self) -> bool:
@@ -95,9 +109,17 @@ class Loop:
         committed(self.state, facts)
         for fact in facts:
             self._tell(fact)
+            self._answer(fact)
         if any(isinstance(fact, Forget) for fact in facts):
             self.store.give_back_space(PAGES_GIVEN_BACK)
         return True
+
+    def _answer(self, fact: Fact) -> None:
+        """A committed position: senders who waited for it are told."""
+        if isinstance(fact, ChainState):
+            for feed in self.feeds:
+                if feed.plan.name == fact.feed:
+                    feed.committed(fact.bookmark)
 
     def _poll_worker(self) -> None:
         self._tell_compiling()

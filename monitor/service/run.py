@@ -188,7 +188,7 @@ def _remember(plan: Plan, store: Store, clock: Clock, log: Log) -> State:
     with open_reader(store.path) as reader:
         _fits(plan, store, reader)
         known = reader.settings_digest()
-        state = restore(plan, store.identity.distinct, _remembered(reader), clock.now())
+        state = restore(plan, store.identity.distinct, remembered(reader), clock.now())
     if known != plan.digest:
         store.commit(
             [
@@ -221,7 +221,7 @@ def _fits(plan: Plan, store: Store, reader: Reader) -> None:
             )
 
 
-def _remembered(reader: Reader) -> Remembered:
+def remembered(reader: Reader) -> Remembered:
     return Remembered(
         chains=reader.chains(),
         streams=reader.streams(),
@@ -232,4 +232,7 @@ def _remembered(reader: Reader) -> Remembered:
         baselines=reader.baselines(),
         watches=reader.watches(),
         watch_states=reader.watch_states(),
+        open_alarms=reader.alarms(only_open=True),
+        known_changes=reader.known_changes(),
+        accepted=reader.accepted_changes(),
     )

@@ -1,0 +1,20 @@
+"""The one table that others than the daemon may write: what people ask for."""
+
+from __future__ import annotations
+
+import sqlite3
+from contextlib import closing
+from pathlib import Path
+
+from storage.store import check_file, named_errors
+
+
+def ask(path: Path, request: str, act: str, now: int) -> None:
+    """Queue a request for the daemon that writes this store.
+
+    Parameters: request, its id; act, JSON of what is asked for; now, ns.
+    Raises the errors of check_file, or StoreBusy, StoreRefused.
+    """
+    check_file(path)
+    with named_errors(path), closing(sqlite3.connect(str(path), isolation_level=None, timeout=10.0)) as connection:
+        connection.execute("insert into request (id, act, made_at) values (?, ?, ?)", [request, act, now])

@@ -63,10 +63,13 @@ class Courier:
         self._under_way: dict[str, tuple[str, Sending]] = {}
         self._failing: set[str] = set()
 
+    def knows(self, receiver: str) -> bool:
+        """There is a way to this receiver."""
+        return receiver in self._routes
+
     def free(self, receiver: str) -> bool:
         """A notice for this receiver could be sent now."""
-        known = receiver in self._routes
-        return known and receiver not in self._under_way and len(self._under_way) < self._at_once
+        return self.knows(receiver) and receiver not in self._under_way and len(self._under_way) < self._at_once
 
     @property
     def busy(self) -> bool:

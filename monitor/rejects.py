@@ -13,6 +13,7 @@ SAMPLE_BYTES = 200
 
 # Rejected by a source.
 OVER_LONG = "over-long line"
+UNENDED = "line not ended by its sender"
 
 # Rejected by every format, in the order in which they are judged after the format's own reasons.
 NOT_UTF8 = "not UTF-8"

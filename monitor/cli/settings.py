@@ -54,6 +54,8 @@ def _lines(plan: Plan) -> list[str]:
 
 def _feed_words(feed: FeedPlan) -> str:
     where = ", ".join(feed.follow) or "standard input"
+    if feed.listen is not None:
+        where = f"lines sent to {feed.listen.address}"
     time = f"event time from {feed.format.time}" if feed.format.time is not None else "time of arrival"
     streams = (
         f"one stream a value of {'/'.join(str(field) for field in feed.format.stream)}"

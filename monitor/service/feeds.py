@@ -13,7 +13,15 @@ from monitor.parse import compile_parser
 from monitor.parse.lines import ParsedLines, Parser, ParseSetupError
 from monitor.plan import FeedPlan
 from monitor.service.clock import Clock
-from monitor.sources import FollowFiles, ReadStandardInput, open_source
+from monitor.sources import (
+    Answering,
+    Feed,
+    FollowFiles,
+    ListenForBatches,
+    ListenForLines,
+    ReadStandardInput,
+    open_source,
+)
 from monitor.sources.source import Block, Source
 from storage.pane import line_digest
 
@@ -30,8 +38,8 @@ class OpenFeed:
         self.plan = plan
         self._clock = clock
         self._parser: Parser = compile_parser(plan.format)
-        where = FollowFiles(patterns=plan.follow, base=base) if plan.follow else ReadStandardInput()
-        self._source: Source = open_source(where, bookmarks)
+        self._source: Source = open_source(_place(plan, base), bookmarks, clock)
+        self._answering = self._source if isinstance(self._source, Answering) else None
         self._troubles: list[str] = []
 
     def poll(self, limit: int) -> Iterator[Arrived]:
@@ -57,6 +65,21 @@ class OpenFeed:
         told, self._troubles = self._troubles, []
         return [f"feed {self.plan.name}: {trouble}" for trouble in (*told, *self._source.troubles())]
 
+    def committed(self, bookmark: str) -> None:
+        """A commit holds everything up to this bookmark: those who wait for it are told."""
+        if self._answering is not None:
+            self._answering.committed(bookmark)
+
+    @property
+    def awaited(self) -> bool:
+        """Somebody waits for the next commit."""
+        return self._answering is not None and self._answering.awaited()
+
+    @property
+    def receiving(self) -> bool:
+        """More is just coming in, though no line was whole yet."""
+        return self._answering is not None and self._answering.receiving()
+
     def use_compiled_parser(self) -> None:
         """From now on lines are read several times as fast; the worker has compiled what that takes."""
         self._parser = compile_parser(self.plan.format, compiled=True)
@@ -79,6 +102,16 @@ class OpenFeed:
             # One file with another header must not stop the daemon; its lines are counted, not lost from sight.
             self._troubles.append(f"{block.chain}: {error}")
             return _all_rejected(block.data)
+
+
+def _place(plan: FeedPlan, base: Path) -> Feed:
+    listen = plan.listen
+    if listen is None:
+        return FollowFiles(patterns=plan.follow, base=base) if plan.follow else ReadStandardInput()
+    if listen.scheme == "http":
+        return ListenForBatches(address=listen.address, host=listen.host, port=listen.port)
+    path = str(base / listen.path) if listen.path else ""
+    return ListenForLines(address=listen.address, host=listen.host, port=listen.port, path=path)
 
 
 def _all_rejected(data: bytes) -> ParsedLines:

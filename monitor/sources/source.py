@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Protocol
+from typing import Protocol, runtime_checkable
 
 import msgspec
 
@@ -35,7 +35,43 @@ class ReadStandardInput(msgspec.Struct, frozen=True, kw_only=True):
     max_line: int = MAX_LINE
 
 
-Feed = FollowFiles | ReadStandardInput
+class ListenForBatches(msgspec.Struct, frozen=True, kw_only=True):
+    """Take batches of lines over HTTP; each is acknowledged once it is committed.
+
+    address   what people call it, and the chain's name
+    host      numeric address; port
+    max_line  longest line in bytes
+    """
+
+    address: str
+    host: str
+    port: int
+    max_line: int = MAX_LINE
+
+
+class ListenForLines(msgspec.Struct, frozen=True, kw_only=True):
+    """Take bare lines over TCP (host, port) or a socket file (path); at most once."""
+
+    address: str
+    host: str = ""
+    port: int = 0
+    path: str = ""
+    max_line: int = MAX_LINE
+
+
+Feed = FollowFiles | ReadStandardInput | ListenForBatches | ListenForLines
+
+
+class Moments(Protocol):
+    """What a listening source needs of the clock: ns since 1970 UTC, and seconds that never jump."""
+
+    def now(self) -> int:
+        """The moment, ns since 1970 UTC."""
+        ...
+
+    def monotonic(self) -> float:
+        """Real seconds from some fixed moment."""
+        ...
 
 
 @dataclass(frozen=True, slots=True)
@@ -108,4 +144,21 @@ class Source(Protocol):
 
     def close(self) -> None:
         """Give back files. Positions are in the bookmarks; nothing is lost."""
+        ...
+
+
+@runtime_checkable
+class Answering(Protocol):
+    """A source whose senders wait until their lines are committed."""
+
+    def committed(self, bookmark: str) -> None:
+        """Everything up to this bookmark is on disk: tell the senders."""
+        ...
+
+    def awaited(self) -> bool:
+        """Somebody waits for the commit of lines that `poll` gave."""
+        ...
+
+    def receiving(self) -> bool:
+        """More is just coming in: polling again at once is worth it."""
         ...

@@ -1,0 +1,130 @@
+"""Lines sent to the real daemon: exactly once over HTTP through kill -9 and retries; at most once over a socket."""
+
+from __future__ import annotations
+
+import http.client
+import random
+import socket
+import time
+from pathlib import Path
+
+import pytest
+
+from storage.history import open_reader
+from tests.service.daemon import Daemon, command, export, lines_read, wait_for
+from tests.service.test_run import SETTINGS, fresh, order_lines
+from tests.sources.wire import free_port
+
+
+def listening(folder: Path, address: str) -> Path:
+    fresh(folder, SETTINGS.replace('follow = ["orders.jsonl"]', f'listen = "{address}"'))
+    return folder / "orders.db"
+
+
+def post(port: int, key: str, body: bytes, *, seconds: float = 10.0) -> int | None:
+    """Send one batch; the status, None when no answer came."""
+    client = http.client.HTTPConnection("127.0.0.1", port, timeout=seconds)
+    try:
+        client.request("POST", "/lines", body, {"Idempotency-Key": key})
+        return client.getresponse().status
+    except (OSError, http.client.HTTPException):
+        return None
+    finally:
+        client.close()
+
+
+def must_post(port: int, key: str, body: bytes) -> None:
+    until = time.monotonic() + 60
+    while post(port, key, body) != 200:
+        assert time.monotonic() < until, "the daemon does not answer"
+        time.sleep(0.05)
+
+
+@pytest.mark.slow
+def test_batches_are_counted_once_through_kills_and_retries(tmp_path: Path) -> None:
+    """The daemon is killed while batches are under way; the store equals that of one quiet run of a file."""
+    lines = order_lines(3000)
+    whole = tmp_path / "whole"
+    fresh(whole).write_text("\n".join(lines) + "\n")
+    assert command("run", "t.toml", "--finish", folder=whole).returncode == 0
+
+    port, rng = free_port(), random.Random(5)
+    folder = tmp_path / "live"
+    store = listening(folder, f"http://127.0.0.1:{port}")
+    batches = [("\n".join(lines[i : i + 30]) + "\n").encode() for i in range(0, 3000, 30)]
+    sent = 0
+    while sent < len(batches):
+        with Daemon(folder) as daemon:
+            last = sent + rng.randrange(15, 40)
+            for i in range(sent, min(last, len(batches))):
+                must_post(port, f"batch-{i}", batches[i])
+                sent = i + 1
+            if sent < len(batches):
+                # One more whose answer is not waited for: the kill falls before, in or after its commit.
+                post(port, f"batch-{sent}", batches[sent], seconds=rng.uniform(0.001, 0.15))
+                daemon.kill()
+            else:
+                assert post(port, "batch-0", batches[0]) == 200  # known through all those restarts
+                assert post(port, "batch-0", b"other\n") == 422
+                assert daemon.stop() == 0
+    assert lines_read(store) == 3000
+    assert command("run", "t.toml", "--finish", folder=folder).returncode == 0
+
+    def without_chains(path: Path) -> list[str]:
+        return [line for line in export(path) if not line.startswith('{"chain"') and "largest" not in line]
+
+    assert without_chains(store) == without_chains(whole / "orders.db")
+
+
+def test_without_the_id_a_batch_is_refused(tmp_path: Path) -> None:
+    port = free_port()
+    listening(tmp_path, f"http://127.0.0.1:{port}")
+    with Daemon(tmp_path) as daemon:
+        must_post(port, "a", b'{"units": 1, "placed_at": "2026-03-02T00:00:00Z", "dock": "n"}\n')
+        client = http.client.HTTPConnection("127.0.0.1", port, timeout=10)
+        client.request("POST", "/lines", b"1\n")
+        answer = client.getresponse()
+        assert (answer.status, b"Idempotency-Key" in answer.read()) == (400, True)
+        client.close()
+        assert daemon.stop() == 0
+    assert lines_read(tmp_path / "orders.db") == 1
+
+
+@pytest.mark.parametrize("kind", ["tcp", "unix"])
+def test_lines_over_a_socket_are_counted(tmp_path: Path, kind: str) -> None:
+    port = free_port()
+    store = listening(tmp_path, f"tcp://127.0.0.1:{port}" if kind == "tcp" else "unix://lines.sock")
+    text = ("\n".join(order_lines(500)) + "\n").encode()
+
+    def connect() -> socket.socket:
+        until = time.monotonic() + 60
+        while True:
+            sender = socket.socket(socket.AF_INET if kind == "tcp" else socket.AF_UNIX)
+            try:
+                sender.connect(("127.0.0.1", port) if kind == "tcp" else str(tmp_path / "lines.sock"))
+                return sender
+            except OSError:
+                sender.close()
+                assert time.monotonic() < until
+                time.sleep(0.05)
+
+    with Daemon(tmp_path) as daemon:
+        with connect() as sender:
+            sender.sendall(text)
+        wait_for(lambda: lines_read(store) == 500)
+        assert daemon.stop() == 0
+    with open_reader(store) as reader:
+        (chain,) = reader.chains()
+        assert chain.lines == chain.events + sum(chain.rejected.values()) + sum(chain.skipped.values())
+    assert not (tmp_path / "lines.sock").exists()
+
+
+def test_an_address_in_use_ends_the_daemon_with_a_sentence(tmp_path: Path) -> None:
+    with socket.socket() as other:
+        other.bind(("127.0.0.1", 0))
+        other.listen()
+        listening(tmp_path, f"http://127.0.0.1:{other.getsockname()[1]}")
+        done = command("run", "t.toml", folder=tmp_path)
+    assert done.returncode == 66
+    assert "another process listens there already" in done.stderr
+    assert "Traceback" not in done.stderr

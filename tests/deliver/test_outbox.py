@@ -141,7 +141,8 @@ def test_every_errand_ends_and_none_is_lost(results: list[bool], count: int) -> 
 def test_a_real_program_that_fails_at_first_gets_the_same_event_until_it_takes_it(tmp_path: Path) -> None:
     script = tmp_path / "page"
     script.write_text(
-        f"#!{sys.executable} -IS\nimport sys\nlog = open('log', 'ab')\nlog.write(sys.stdin.buffer.read() + b'\\n')\nlog.close()\n"
+        f"#!{sys.executable} -IS\nimport sys\nlog = open('log', 'ab')\nlog.write(sys.stdin.buffer.read() + b'\\n')\n"
+        "log.close()\n"
         "sys.exit(0 if len(open('log', 'rb').readlines()) > 2 else 75)\n"
     )
     script.chmod(0o700)

@@ -137,6 +137,14 @@ class Store:
                     "select stream, from_ns, count(*) from pane_part group by stream, from_ns")})  # fmt: skip
             self.identity = self._identity()
 
+    def make_durable(self) -> None:
+        """From now on a commit has reached the disk when it returns, not only the operating system.
+
+        Files can be read again after a power cut; what a sender was told is counted cannot.
+        """
+        with named_errors(self.path):
+            self.db.execute("pragma synchronous = full")
+
     def _migrate(self) -> None:
         version = self.db.execute("pragma user_version").fetchone()[0]
         if version < VERSION:

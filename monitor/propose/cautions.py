@@ -73,6 +73,24 @@ def repeated_ids(table: Table, size: Column) -> Iterator[str]:
         yield f"{again} of {len(texts)} sampled lines occur word for word before: are some events written twice?"
 
 
+def no_log(table: Table, size: Column, times: tuple[TimeFound, ...]) -> Iterator[str]:
+    """Sorted numbers, and tables of values with their counts, are no logs of events."""
+    steps = size.steps(size.all_numbers)
+    if steps.size >= 10 and ((steps >= 0).all() or (steps <= 0).all()):
+        yield "the sizes stand sorted: this is no log in the order of events, so changes over time cannot be seen in it"
+    if times:
+        return
+    for column in table.columns:
+        steps = column.steps(column.all_numbers)
+        sorted_once = steps.size >= 10 and ((steps > 0).all() or (steps < 0).all())
+        if column is not size and sorted_once and size.whole and column.numeric == 1 and len(table.columns) <= 3:
+            yield (
+                f"each {called(column.field)} stands on one line, in order: this looks like a table of values and how "
+                "often each occurred, not like a log with one line for each event, which is what is needed"
+            )
+            return
+
+
 def _near_repeats(column: Column, table: Table) -> float:
     """Of the lines whose id occurred before in their piece, the share that follow it within a few lines."""
     last: dict[tuple[int, str], int] = {}

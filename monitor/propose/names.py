@@ -16,7 +16,7 @@ _DIGITS = re.compile(r"[0-9][0-9T:_\-]*")
 def feed_name(path: str) -> str:
     """A short name for the feed: the file's name without date and ending; only letters, digits, - and _."""
     name = path.rsplit("/", 1)[-1]
-    name = _DATES.sub("", _ENDINGS.sub("", name))
+    name = _DATES.sub("-", _ENDINGS.sub("", name))
     name = re.sub(r"[^A-Za-z0-9_-]+", "-", name).strip("-_")[:40]
     return name.lower() or "events"
 

@@ -190,6 +190,7 @@ def _with_text(proposal: Proposal, text: str) -> Proposal:
 def _doubts(found: Found, trial: Trial) -> list[str]:
     table, size = found.table, found.size
     doubts = [*trial.troubles, *table.notes, *cautions.size_doubts(table, size, found.sizes)]
+    doubts += cautions.no_log(table, size, found.times)
     doubts += cautions.repeated_ids(table, size)
     doubts += [] if found.unit.doubt is None else [found.unit.doubt]
     doubts += cautions.time_doubts(table, size, found.times, found.duration)

@@ -44,6 +44,8 @@ def _why_not(column: Column, table: Table, times: frozenset[object]) -> str | No
         return _nearly_a_number(column)
     if column.quoted:
         return "its numbers stand in quotes, and a size in JSON must be a bare number; let the writer change that"
+    if table.lines == "number":  # there is nothing else that could be the size
+        return None if column.positive.size else "none of its numbers is above zero"
     return _named_otherwise(column) or _looks_otherwise(column, table)
 
 
@@ -88,7 +90,7 @@ def _looks_otherwise(column: Column, table: Table) -> str | None:
     if numbers.size >= 20 and np.abs(numbers).max() <= 180 and negative > 0.2 and not column.whole:
         return "it lies between -180 and 180 on both sides of zero, as a place on earth does"
     unusual = column.whole and numbers.min() >= 100 and numbers.max() <= 599 and distinct <= 25
-    if unusual and table.lines != "number" and not column.words & QUANTITY:
+    if unusual and not column.words & QUANTITY:
         return f"it has {distinct} values between 100 and 599, as a status does"
     return None
 

@@ -111,6 +111,8 @@ def _watch(plan: Plan, asked: Asked, around: _Around) -> Plan | None:
     store, clock, log = around.store, around.clock, around.log
     state = _remember(plan, store, clock, log)
     feeds = _open_feeds(plan, asked.base, state, clock)
+    if any(feed.listen is not None for feed in plan.feeds):
+        store.make_durable()
     loop = Loop(state, store, feeds, around.worker, clock=clock, log=log)
     log.info(f"watching {', '.join(feed.name for feed in plan.feeds)} into {store.path}")
     around.manager.tell(f"READY=1\nSTATUS=watching into {store.path}")

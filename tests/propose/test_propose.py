@@ -14,6 +14,7 @@ from monitor.errors import DataError
 from monitor.parse import compile_parser
 from monitor.plan import read_plan
 from monitor.propose import FileSample, Piece, Proposal, propose
+from monitor.propose.names import feed_name
 from monitor.propose.toml_text import comment, key, quoted
 from tests.propose.logs import log, stamp
 
@@ -160,6 +161,28 @@ def test_lines_of_several_kinds_get_a_condition() -> None:
     assert proposal.format.where == (("kind", ("order",)),)
     assert (proposal.rejected, proposal.skipped) == ({}, {"condition": 400})
     assert read_plan(proposal.settings, "p").feeds[0].format.where == proposal.format.where
+
+
+def test_tables_of_counts_and_sorted_lists_are_told_from_logs() -> None:
+    counts = of(b"minutes_late,flights\n" + b"".join(b"%d,%d\n" % (i, 9000 // i) for i in range(1, 200)))
+    assert "each minutes_late stands on one line, in order" in doubts(counts)
+    assert "the sizes stand sorted" in doubts(of(b"hours\n" + b"".join(b"%d\n" % i**2 for i in range(1, 200))))
+    assert "sorted" not in doubts(of(log("number")))
+
+
+@pytest.mark.parametrize(
+    ("path", "name"),
+    [
+        ("logs/orders-2026-11-01.jsonl", "orders"),
+        ("/var/log/access.log.2.gz", "access"),
+        ("claims_2024_lisbon.csv", "claims-lisbon"),
+        ("-", "events"),
+        ("\x1b[2J.csv", "j"),
+        ("20261101.csv", "events"),
+    ],
+)
+def test_feeds_are_named_after_their_files(path: str, name: str) -> None:
+    assert feed_name(path) == name
 
 
 @pytest.mark.parametrize(

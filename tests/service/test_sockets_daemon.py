@@ -11,6 +11,7 @@ from pathlib import Path
 import pytest
 
 from storage.history import open_reader
+from storage.store import open_store
 from tests.service.daemon import Daemon, command, export, lines_read, wait_for
 from tests.service.test_run import SETTINGS, fresh, order_lines
 from tests.sources.wire import free_port
@@ -128,3 +129,11 @@ def test_an_address_in_use_ends_the_daemon_with_a_sentence(tmp_path: Path) -> No
     assert done.returncode == 66
     assert "another process listens there already" in done.stderr
     assert "Traceback" not in done.stderr
+
+
+def test_what_is_acknowledged_has_reached_the_disk(tmp_path: Path) -> None:
+    """PRAGMA synchronous = 2 (FULL): SQLite documents that a commit then survives a power cut."""
+    with open_store(tmp_path / "a.db", store_id="s", now=0, distinct=4096) as store:
+        assert store.db.execute("pragma synchronous").fetchone()[0] == 1
+        store.make_durable()
+        assert store.db.execute("pragma synchronous").fetchone()[0] == 2

@@ -20,6 +20,8 @@ COMMIT_EVENTS = 50_000
 COMMIT_SECONDS = 1.0
 AWAITED_SECONDS = 0.05
 """Between commits while a sender waits for one."""
+HURRY_SECONDS = 0.5
+"""After an answer the sender's next batch is probably on its way."""
 PAGES_GIVEN_BACK = 2000
 """Free pages returned to the file system after a deletion; what is left is returned after the next."""
 FIRST_RETRY, LAST_RETRY = 1.0, 60.0
@@ -41,6 +43,7 @@ class Loop:
         self._pending: list[Fact] = []
         self._last_commit = clock.monotonic()
         self._retry_at = 0.0
+        self._last_answer = -HURRY_SECONDS
         self._retry_after = FIRST_RETRY
         self._started = clock.monotonic()
         self._told_compiling = False
@@ -118,8 +121,9 @@ class Loop:
         """A committed position: senders who waited for it are told."""
         if isinstance(fact, ChainState):
             for feed in self.feeds:
-                if feed.plan.name == fact.feed:
+                if feed.plan.name == fact.feed and feed.awaited:
                     feed.committed(fact.bookmark)
+                    self._last_answer = self.clock.monotonic()
 
     def _poll_worker(self) -> None:
         self._tell_compiling()
@@ -165,6 +169,12 @@ class Loop:
             for trouble in feed.troubles():
                 self.log.warning(trouble)
         step(self.state, Ended(now=self.clock.now()))
+
+    @property
+    def hurried(self) -> bool:
+        """Senders wait, or did just now: the next turn should come soon."""
+        lately = self.clock.monotonic() - self._last_answer < HURRY_SECONDS
+        return lately or any(feed.awaited for feed in self.feeds)
 
     @property
     def refits_left(self) -> int:

@@ -28,7 +28,7 @@ from storage.facts import SettingsTaken
 from storage.history import Reader, open_reader
 from storage.store import Store, open_store
 
-IDLE_SLEEP = 0.1
+IDLE_SLEEP, BRIEF_SLEEP = 0.1, 0.005
 
 
 class Stop:
@@ -149,7 +149,7 @@ def _follow(loop: Loop, asked: Asked, around: _Around) -> Plan | None:
             stop.reread = False
             following = _reread(loop, asked, around)
         elif not active and not stop.wanted:
-            clock.sleep(IDLE_SLEEP)
+            clock.sleep(BRIEF_SLEEP if loop.hurried else IDLE_SLEEP)
     loop.commit()
     return following
 

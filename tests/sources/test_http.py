@@ -110,6 +110,15 @@ def test_what_was_not_committed_before_a_crash_is_taken_again(wire: Wire) -> Non
     assert wire.data() == b"1\n"
 
 
+def test_without_the_ids_in_the_bookmark_a_retry_would_be_counted_twice(wire: Wire) -> None:
+    """The negative control: it is the committed ids that make a batch count once, not luck."""
+    assert post(wire, request(b"1\n", "x"))[0] == 200
+    wire.bookmark = None
+    wire.crash()
+    assert post(wire, request(b"1\n", "x")) == (200, '{"lines":1,"repeated":false}\n')
+    assert wire.data() == b"1\n1\n"
+
+
 def test_an_id_does_not_stand_for_other_lines(wire: Wire) -> None:
     assert post(wire, request(b"1\n", "x"))[0] == 200
     status, words = post(wire, request(b"2\n", "x"))

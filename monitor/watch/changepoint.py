@@ -23,9 +23,12 @@ from monitor.watch.scores import Past
 from monitor.watch.slots import SlotFacts, Yardstick, ordered
 
 _LEVEL = 0.95
-_BLOCKS = 300
+_BLOCKS = 120
 _CLEARLY = 3.0
 """Difference of log-likelihoods (e^3 = 20 times as likely) from which a shape of the change is stated."""
+
+_TO_TELL = 30
+"""Values after the change from which its shape is judged at all."""
 
 Shape = Literal["step", "ramp", "unclear"]
 
@@ -128,7 +131,7 @@ def changed(history: History, grew: bool) -> Change | None:
         before=sum_before / n_before if n_before else 0.0,
         after=sum_after / max(n_after, 0.5),
         counted=n_after,
-        shape=_shape(history),
+        shape=_shape(history) if n_after >= _TO_TELL else "unclear",
     )
 
 
@@ -157,7 +160,7 @@ def _shape(history: History) -> Shape:
     if counts.size < 4 or not sums.all():
         return "unclear"
     seen = np.cumsum(counts) - 0.5 * counts
-    starts = np.linspace(0.0, 0.98, 50)[:, None] * seen[-1]
+    starts = np.linspace(0.0, 0.98, 40)[:, None] * seen[-1]
     progress = np.clip((seen - starts) / (seen[-1] - starts), 0.0, 1.0)
     step = np.max(_profile(history.before, counts, sums, (seen > starts).astype(np.float64)))
     ramp = np.max(_profile(history.before, counts, sums, progress))
@@ -170,7 +173,7 @@ def _profile(
     before: Past, counts: NDArray[np.float64], sums: NDArray[np.float64], course: NDArray[np.float64]
 ) -> NDArray[np.float64]:
     """Log-likelihood with mean mu exp(beta * course), mu at its best; (courses, betas)."""
-    betas = np.linspace(-2.0, 2.0, 81)
+    betas = np.linspace(-2.0, 2.0, 61)
     pulled = np.stack([(sums * np.exp(-beta * course)).sum(axis=1) for beta in betas], axis=1)
     tilt = betas * (counts * course).sum(axis=1)[:, None]
     if before.known:

@@ -10,7 +10,7 @@ that follows it, order inside blocks kept.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from math import log
+from math import ceil, log
 from typing import Literal
 
 import msgspec
@@ -28,12 +28,13 @@ Row = NDArray[np.float64]
 Blocks = Literal["weeks", "days", "slots"]
 
 RAISE = 1.25
-FUTURE = 20
-"""Budgets that are simulated: so many false alarms would be allowed in them."""
+FUTURE = 60
+"""Budgets that are simulated: enough that chance alone seldom asks for a raise."""
+
+PATHS = 20
 
 _DAY_NS = 86_400_000_000_000
 _MOST_RAISES = 40
-_PATH = 100_000
 
 
 class Ground(msgspec.Struct, frozen=True, kw_only=True):
@@ -66,11 +67,12 @@ class _Block(msgspec.Struct, frozen=True):
 
 
 class _Path(msgspec.Struct, frozen=True):
-    """Log factors of both rules on one resampled path, and ln of the clock of each step."""
+    """Log factors of both rules on one resampled path, ln of the clock of each step for either, and its length."""
 
     sizes: Row
     gaps: Row
     ln_clock: Row
+    ln_clock_before: Row
     days: float
 
 
@@ -146,38 +148,45 @@ def _stated(budget: float | None, promised: float, kind: Blocks, number: int, fo
 def _raised(paths: Sequence[_Path], budget: float, rules: Sequence[RuleName]) -> _Raised:
     """The least budget, raised by steps, whose false alarms stay within what `budget` allows these rules."""
     days = sum(path.days for path in paths)
-    weight = sum(WEIGHTS[rule] for rule in rules)
-    tried, alarms = budget, 0
-    for _ in range(_MOST_RAISES):
-        alarms = sum(_alarms(path, tried, rule) for path in paths for rule in rules)
-        # Upper 90 % bound of a Poisson mean after `alarms` events.
-        if float(gammaincinv(alarms + 1, 0.9)) / days <= weight / budget:
-            return _Raised(tried, alarms, days)
-        tried *= RAISE
-    return _Raised(None, alarms, days)
+    allowed = days * sum(WEIGHTS[rule] for rule in rules) / budget
+
+    def alarms(raises: int) -> int:
+        return sum(_alarms(path, budget * RAISE**raises, rule) for path in paths for rule in rules)
+
+    def keeps(count: int) -> bool:
+        # Upper 90 % bound of a Poisson mean after `count` alarms.
+        return float(gammaincinv(count + 1, 0.9)) <= allowed
+
+    # Galloping, then halving: alarms fall as the budget grows.
+    low, high = -1, 0
+    while not keeps(count := alarms(high)):
+        if high >= _MOST_RAISES:
+            return _Raised(None, count, days)
+        low, high = high, min(max(1, 2 * high), _MOST_RAISES)
+    while high - low > 1:
+        middle = (low + high) // 2
+        if keeps(found := alarms(middle)):
+            high, count = middle, found
+        else:
+            low = middle
+    return _Raised(budget * RAISE**high, count, days)
 
 
 def _alarms(path: _Path, budget: float, rule: RuleName) -> int:
-    factors = path.sizes if rule == "exponent" else path.gaps
-    return int(crossings(factors, path.ln_clock, log(budget / WEIGHTS[rule])).size)
+    sizes = rule == "exponent"
+    factors, clock = (path.sizes, path.ln_clock) if sizes else (path.gaps, path.ln_clock_before)
+    return int(crossings(factors, clock, log(budget / WEIGHTS[rule])).size)
 
 
 def _paths(blocks: Sequence[_Block], prior: int, days: float, key: int) -> list[_Path]:
-    """Resampled paths whose futures together last `days`."""
-    out: list[_Path] = []
-    drawn, left = 0, days
-    usable = [block for block in blocks if block.y.size] or list(blocks)
-    each = sum(block.y.size for block in usable) / len(usable)
-    past_blocks = max(1, round(prior / each))
-    while left > 0:
-        chosen = min(_PATH / each, left / (sum(b.days for b in blocks) / len(blocks)))
-        future_blocks = max(1, int(np.ceil(chosen)))
-        places = (uniforms(key, drawn, past_blocks + future_blocks) * len(blocks)).astype(np.int64)
-        drawn += places.size
-        path = _path([blocks[i] for i in places[:past_blocks]], [blocks[i] for i in places[past_blocks:]])
-        left -= path.days
-        out.append(path)
-    return out
+    """`PATHS` resampled paths whose futures together last `days`, each with a past of its own.
+
+    Alarms come in clusters: a past that happens to be off brings many. So pasts must be many, not futures long.
+    """
+    past = max(1, round(prior * len(blocks) / sum(block.y.size for block in blocks)))
+    future = max(1, ceil(days / PATHS * len(blocks) / sum(block.days for block in blocks)))
+    places = (uniforms(key, 0, PATHS * (past + future)) * len(blocks)).astype(np.int64).reshape(PATHS, past + future)
+    return [_path([blocks[i] for i in row[:past]], [blocks[i] for i in row[past:]]) for row in places]
 
 
 def _path(past: Sequence[_Block], future: Sequence[_Block]) -> _Path:
@@ -193,6 +202,8 @@ def _path(past: Sequence[_Block], future: Sequence[_Block]) -> _Path:
         exponential_factors(sizes.scores, LOG_THETAS),
         exponential_factors(shares.scores, LOG_THETAS),
         np.log(clock),
+        # The clock that passes in a gap goes with its length: starts are added when it is over.
+        np.log(np.concatenate((clock[:1] * 0 + 1e-9, clock[:-1]))),
         after.days,
     )
 

@@ -122,7 +122,7 @@ def promise(setting: Setting) -> Promise:
     if not (setting.alpha > 1 and 0 < setting.share < 1 and setting.events_a_day > 0 and setting.budget_days > 0):
         raise ValueError("a promise needs alpha > 1, a share between 0 and 1, a rate and a budget above 0")
     ladder = {
-        shift: alpha_delay(setting, shift)
+        shift: alpha_delay(setting, shift, with_optimum=shift in ALPHA_SHIFTS)
         for size in sorted({*LADDER, *map(abs, ALPHA_SHIFTS)})
         for shift in (-size, size)
         if setting.alpha + shift > 1.05
@@ -152,7 +152,7 @@ def _smallest(ladder: Mapping[float, Delay], days: int, sign: int) -> float | No
     return min(seen, default=None)
 
 
-def alpha_delay(setting: Setting, shift: float, runs: int = RUNS) -> Delay:
+def alpha_delay(setting: Setting, shift: float, runs: int = RUNS, with_optimum: bool = True) -> Delay:
     """How soon a shift of alpha is seen by the exponent rule."""
     growth = (setting.alpha - 1.0) / (setting.alpha + shift - 1.0)
     rate = setting.exceedances_a_day
@@ -160,8 +160,10 @@ def alpha_delay(setting: Setting, shift: float, runs: int = RUNS) -> Delay:
     found = sizes_run(
         growth, prior=setting.prior, ln_threshold=ln_threshold, runs=runs, key=key_of("alpha", str(shift))
     )
-    chart = chart_for(growth, setting.budget_days * rate / setting.weights["exponent"])
-    return _delay("alpha", shift, found.steps, found.steps / rate, run_length(chart, growth))
+    optimum = None
+    if with_optimum:
+        optimum = run_length(chart_for(growth, setting.budget_days * rate / setting.weights["exponent"]), growth)
+    return _delay("alpha", shift, found.steps, found.steps / rate, optimum)
 
 
 def share_delay(setting: Setting, factor: float, runs: int = RUNS) -> Delay:
@@ -260,28 +262,32 @@ class _Course(msgspec.Struct, frozen=True):
 
 def _run(values: Callable[[int], Row], course: _Course, ln_threshold: float, cap: int) -> Runs:
     """All runs side by side, one value of each at a time, until every one has spoken or `cap` is reached."""
+    alive = np.arange(course.total.size)
     total = course.total.copy()
-    steps, clock = np.full(total.size, np.inf), np.zeros(total.size)
-    evidence = np.zeros((total.size, len(LOG_THETAS)))
-    slopes, thetas = -np.expm1(-np.asarray(LOG_THETAS)), np.exp(LOG_THETAS)
+    steps, clock = np.full(total.size, np.inf), np.full(total.size, np.inf)
+    evidence, passed = np.zeros((total.size, len(LOG_THETAS))), np.zeros(total.size)
+    slopes, log_thetas = -np.expm1(-np.asarray(LOG_THETAS)), np.asarray(LOG_THETAS)
     threshold = exp(ln_threshold)
+    before = np.zeros(alive.size) if course.clocked_by_value else None
     for step in range(1, cap + 1):
-        drawn = values(step)
+        drawn = values(step)[alive]
         value = drawn - course.less
-        n = 0 if course.prior is None else course.prior + step - 1
-        scores = value if course.prior is None else n * np.log1p(value / np.maximum(total, 1e-300))
+        ticks = drawn if course.clocked_by_value else np.ones(alive.size)
+        passed += ticks
+        # Clock that goes with the value itself starts nothing before the value is there.
+        evidence += ticks[:, None] if before is None else before[:, None]
+        n = 1 if course.prior is None else course.prior + step - 1
+        if n:
+            scores = value if course.prior is None else n * np.log1p(value / total)
+            evidence *= np.exp(np.minimum(scores, 600.0)[:, None] * slopes - log_thetas)
         total += value
-        passed = drawn if course.clocked_by_value else np.ones(total.size)
-        open_runs = np.isinf(steps)
-        clock[open_runs] += passed[open_runs]
-        factor = np.exp(np.minimum(scores, 600.0)[:, None] * slopes) / thetas if course.prior is None or n else 1.0
-        evidence = (evidence + passed[:, None]) * factor
-        spoke = open_runs & (evidence.mean(axis=1) >= threshold)
-        steps[spoke] = step
-        evidence[~open_runs | spoke] = 0.0  # finished runs must not overflow
-        if not np.isinf(steps).any():
-            break
-    clock[np.isinf(steps)] = np.inf
+        spoke = evidence.mean(axis=1) >= threshold
+        if spoke.any():
+            steps[alive[spoke]], clock[alive[spoke]] = step, passed[spoke]
+            alive, total, evidence, passed, ticks = (one[~spoke] for one in (alive, total, evidence, passed, ticks))
+            if not alive.size:
+                break
+        before = ticks if course.clocked_by_value else None
     return Runs(steps, clock)
 
 

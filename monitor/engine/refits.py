@@ -61,12 +61,17 @@ def next_request(state: State) -> RefitRequest | None:
         window_distinct=state.plan.window_distinct,
         first=stream.first,
         baseline=state.baselines.get(job.stream),
-        order=watch_order(state, job.stream),
+        order=watch_order(state, job.stream, job.end),
     )
 
 
-def watch_order(state: State, stream: str) -> WatchOrder:
-    """What the worker must know about the watch of a stream."""
+def watch_order(state: State, stream: str, at: int) -> WatchOrder:
+    """What the worker must know about the watch of a stream.
+
+    Parameters: at, ns of event time: the budget is divided over the streams that had begun by then, so that it does
+    not depend on how far ahead lines have been read.
+    """
+    begun = sum(other.first < at for other in state.streams.values())
     plan = state.plan.stream(stream, state.streams[stream].unit)
     posted = state.watches.get(stream)
     return WatchOrder(
@@ -76,7 +81,7 @@ def watch_order(state: State, stream: str) -> WatchOrder:
         pane=state.plan.pane,
         zone=state.plan.timezone,
         baseline_tail=None if stream in state.baselines else plan.baseline_tail,
-        budget_days=stream_budget(plan.false_alarm_every / DAY, len(state.streams)),
+        budget_days=stream_budget(plan.false_alarm_every / DAY, begun),
         passage=plan.limit,
         allowance=allowance_of(plan),
     )
@@ -155,6 +160,8 @@ def planned_baseline(state: State, stream: str, now: int) -> BaselineSet | None:
     seen = state.streams[stream]
     plan = state.plan.stream(stream, seen.unit)
     held = state.baselines.get(stream)
+    if stream in state.since:
+        return None  # a person accepted a change since: the plan is history
     if plan.planned is None or (held is not None and _is_this_plan(held, plan.planned)):
         return None
     start = seen.first // state.plan.pane * state.plan.pane

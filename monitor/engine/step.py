@@ -43,7 +43,9 @@ def _commit_due(state: State, now: int) -> list[Fact]:
         if baseline is not None:
             state.baselines[stream] = baseline
             facts.append(baseline)
-            facts += posts.post_planned(state, baseline, refits.watch_order(state, stream), now)
+            facts += posts.post_planned(
+                state, baseline, refits.watch_order(state, stream, baseline.panes_to + state.plan.pane), now
+            )
     facts += _silence(state, {fact.stream for fact in sealed}, now)
     return facts + alarming.pass_time(state, now)
 
@@ -60,10 +62,11 @@ def _asked(state: State, stimulus: Asked) -> list[Fact]:
 def _silence(state: State, sealed: set[str], now: int) -> list[Fact]:
     """Streams whose windows are all judged: their watch goes on over panes that stayed empty."""
     busy = sealed | {job.stream for job in state.jobs}
-    orders = {stream: refits.watch_order(state, stream) for stream in state.watches if stream not in busy}
-    marks = {stream: state.marks.get(state.carriers(stream), 0) for stream in orders}
+    idle = [stream for stream in state.watches if stream not in busy]
+    marks = {stream: state.marks.get(state.carriers(stream), 0) for stream in idle}
     ended = {stream: mark for stream, mark in marks.items() if mark < sealing.END_OF_TIME}
-    return posts.silent_streams(state, {stream: orders[stream] for stream in ended}, ended, now)
+    orders = {stream: refits.watch_order(state, stream, mark) for stream, mark in ended.items()}
+    return posts.silent_streams(state, orders, ended, now)
 
 
 def committed(state: State, facts: list[Fact]) -> None:

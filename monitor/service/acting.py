@@ -47,7 +47,9 @@ def carry_out(path: Path, plan: Plan, act: Act, clock: Clock) -> Answer:
         with open_reader(path) as reader:
             state = restore(plan, store.identity.distinct, remembered(reader), clock.now())
         store.commit(step(state, Asked(request=request, act=text, now=clock.now())))
-    return _answer(path, request) or Answer(outcome="queued", words="queued in the store")
+    return _answer(path, request) or Answer(
+        outcome="queued", words="it is in the store, and will be decided when a daemon runs"
+    )
 
 
 def _awaited(path: Path, request: str, clock: Clock) -> Answer:
@@ -57,7 +59,7 @@ def _awaited(path: Path, request: str, clock: Clock) -> Answer:
         if found is not None:
             return found
         clock.sleep(0.05)
-    return Answer(outcome="queued", words="queued: the daemon has not answered yet, it will")
+    return Answer(outcome="queued", words="the daemon has not answered yet, it will")
 
 
 def _answer(path: Path, request: str) -> Answer | None:

@@ -56,7 +56,7 @@ class Loop:
         due = AWAITED_SECONDS if any(feed.awaited for feed in self.feeds) else COMMIT_SECONDS
         if self.state.uncommitted >= COMMIT_EVENTS or real - self._last_commit >= due:
             self.commit()
-            self._heed_requests()
+        self._heed_requests()
         self._poll_worker()
         return active
 

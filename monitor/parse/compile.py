@@ -11,7 +11,7 @@ from monitor.parse.blocks import BOM, CODE, Findings, assemble, cut, mark_unread
 from monitor.parse.csv_lines import CsvReader
 from monitor.parse.free_lines import CombinedReader, PairsReader, PatternReader
 from monitor.parse.json_lines import JsonReader
-from monitor.parse.lines import FormatError, LineFormat, ParsedLines, Parser
+from monitor.parse.lines import Field, FormatError, LineFormat, ParsedLines, Parser
 from monitor.parse.text_lines import NumberReader, TextReader
 from monitor.rejects import Rejected
 
@@ -33,15 +33,26 @@ def compile_parser(format: LineFormat, *, compiled: bool = False) -> Parser:  # 
     _check(format)
     if format.lines == "csv":
         csv_lines.check(format)
-        return _CsvParser(format)
+        return _CsvParser(format, compiled=compiled)
     reader = _reader(format)
     plain = _OneParser(format, reader)
-    if compiled and isinstance(reader, JsonReader):
-        from monitor.parse.compiled_json import CompiledJson, can_be_compiled
+    return _compiled(format, plain, reader) or plain if compiled else plain
 
-        if can_be_compiled(format):
-            return CompiledJson(format, plain, reader)
-    return plain
+
+def _compiled(format_: LineFormat, plain: Parser, reader: _Reader) -> Parser | None:
+    """The compiled parser of a format, None when there is none."""
+    from monitor.parse import desks  # late: it loads the compiler
+    from monitor.parse.compiled import CompiledParser
+
+    if isinstance(reader, JsonReader):
+        desk = desks.json_desk(format_)
+    elif isinstance(reader, PairsReader):
+        desk = desks.pairs_desk(format_)
+    elif isinstance(reader, CombinedReader):
+        desk = desks.combined_desk(format_)
+    else:
+        return None
+    return None if desk is None else CompiledParser(format_, desk, plain, reader)
 
 
 def warm_parsers() -> None:
@@ -52,22 +63,22 @@ def warm_parsers() -> None:
 
 
 class _OneParser:
-    """A format whose lines mean the same in every file."""
+    """Lines whose fields stand in known places."""
 
-    def __init__(self, format_: LineFormat, reader: _Reader) -> None:
-        self._format, self._reader = format_, reader
+    def __init__(self, format_: LineFormat, reader: _Reader, *, has_header: bool = False) -> None:
+        self._format, self._reader, self._has_header = format_, reader, has_header
 
     def parse(self, block: bytes, *, header: bytes | None = None, first: bool = False) -> ParsedLines:
-        return _parse(self._format, self._reader, block, first=first, skip_first=False)
+        return _parse(self._format, self._reader, block, first=first, skip_first=first and self._has_header)
 
 
 class _CsvParser:
     """CSV: the header of the file decides where the columns are."""
 
-    def __init__(self, format_: LineFormat) -> None:
-        self._format = format_
+    def __init__(self, format_: LineFormat, *, compiled: bool) -> None:
+        self._format, self._compiled = format_, compiled
         self._named = csv_lines.has_header(format_)
-        self._known: tuple[bytes | None, CsvReader] | None = None
+        self._known: tuple[bytes | None, Parser] | None = None
 
     def parse(self, block: bytes, *, header: bytes | None = None, first: bool = False) -> ParsedLines:
         if first and header is None:
@@ -75,8 +86,19 @@ class _CsvParser:
         if self._known is None or (self._named and self._known[0] != header):
             if not block:
                 return _parse(self._format, NumberReader(self._format), b"", first=False, skip_first=False)
-            self._known = (header, CsvReader(self._format, *csv_lines.columns_of(self._format, header)))
-        return _parse(self._format, self._known[1], block, first=first, skip_first=first and self._named)
+            self._known = (header, self._of_columns(*csv_lines.columns_of(self._format, header)))
+        return self._known[1].parse(block, first=first)
+
+    def _of_columns(self, columns: dict[Field, int], width: int | None) -> Parser:
+        reader = CsvReader(self._format, columns, width)
+        plain = _OneParser(self._format, reader, has_header=self._named)
+        if not self._compiled:
+            return plain
+        from monitor.parse import desks  # late: it loads the compiler
+        from monitor.parse.compiled import CompiledParser
+
+        desk = desks.csv_desk(self._format, columns, width)
+        return plain if desk is None else CompiledParser(self._format, desk, plain, reader, has_header=self._named)
 
 
 def _parse(format_: LineFormat, reader: _Reader, block: bytes, *, first: bool, skip_first: bool) -> ParsedLines:

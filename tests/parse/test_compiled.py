@@ -10,13 +10,21 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
-from monitor.parse import LineFormat, Parser, compile_parser
-from monitor.parse import compiled_json as compiled_module
-from monitor.parse.compiled_json import CompiledJson
+from monitor.parse import LineFormat, Parser, compile_parser, desks
+from monitor.parse import compiled as compiled_module
+from monitor.parse.compiled import CompiledParser
 from tests.parse.test_twins import FORMATS, blocks_of, changed_line
 from tests.references import plain_lines
 
 COMPILED = {
+    "csv": FORMATS["csv"],
+    "csv numbers": LineFormat(lines="csv", size=3, time=2, stream=(1,), delimiter=";", time_unit="ms"),
+    "csv plain": FORMATS["csv plain"],
+    "csv tabs": LineFormat(lines="csv", size=3, time=2, stream=(1,), delimiter="\t", timezone="Europe/Lisbon"),
+    "pairs": FORMATS["pairs"],
+    "pairs same": LineFormat(lines="pairs", size="units", time="at", stream=("at",)),
+    "combined": LineFormat(lines="combined", size="bytes", time="time", stream=("method",)),
+    "combined status": LineFormat(lines="combined", size="status", stream=("user",)),
     "json": FORMATS["json"],
     "json local": FORMATS["json local"],
     "json flat": LineFormat(lines="json", size="units", time="at", stream=("dock",)),
@@ -65,16 +73,37 @@ SHAPES = [
 ]
 
 
+TEXT_SHAPES = {
+    "csv": ["{name},{stamp},{number},x", "{name},{stamp},{number},x,y", '"{name}","{stamp}","{number}",{text}']
+    + ['{name},{stamp},{number},"a, ""{text}"""', "{name};{stamp};{number}", "{name}\t{stamp}\t{number}\t{text}"]
+    + ["{number},{name}", '{number},"{name}"', '"{name}"x,{stamp},{number},x', "{n},{stamp},{number},"]
+    + ["{name},{stamp},{number},x"] * 4,
+    "pairs": ["at={stamp} units={number} dock={name} {text}"] * 3
+    + ['msg="{text}" at="{stamp}" units="{number}"\tdock="{name}" ', "units=1 units={number} at={n} =x dock={name}"]
+    + ['at={stamp} x=a=b units={number}  dock="{name}" z', 'at={stamp} units={number} dock={name}" x="y'],
+    "combined": ['1.2.3.4 - joe [{log}] "GET /{text} HTTP/1.1" 200 {number} "-" "agent"'] * 3
+    + ['{name} - {name} [{log}] "{text} /a b" 404 {number}', '::1 - - [{stamp}] "POST /a HTTP/1.0" {n} {number} x']
+    + ['::1 - - [{log}] "POST  HTTP/1.0" 201 {number}', '::1 - - {log} "POST /a HTTP/1.0" 201 {number}\t']
+    + ['1.2.3.4  - [{log}] "GET /a HTTP/1.1" 20 {number}', '1.2.3.4 - - [{log}] "" - -'],
+}
+LOG_STAMPS = ["10/Oct/2000:13:55:36 -0700", "29/Feb/2024:23:59:59 +0000", "29/Feb/2023:23:59:59 +0000"]
+LOG_STAMPS += ["01/Jan/2026:00:00:60 +0000", "01/jan/2026:00:00:00 +0000", "01/Jan/2026:00:00:00"]
+LOG_STAMPS += ["31/Dec/2200:23:59:59 -0100", "01/Jan/1970:00:30:00 +0100", "01/May/2026:00:30:00 +01:00"]
+LOG_STAMPS += ["01/May/2026:00:30:00 +0160", "32/May/2026:00:00:00 +0000", "01/May/2026:24:00:00 +0000"]
+
+
 @st.composite
-def hard_line(draw: st.DrawFn) -> bytes:
+def hard_line(draw: st.DrawFn, family: str) -> bytes:
     """A line of one of the shapes, most of them good, perhaps with a byte changed."""
     seldom = st.integers(0, 3).map(bool)
+    stamps = [*STAMPS, *LOG_STAMPS, *NUMBERS, *(f"[{stamp}]" for stamp in LOG_STAMPS)]
     line = bytearray(
-        draw(st.sampled_from(SHAPES))
+        draw(st.sampled_from(TEXT_SHAPES.get(family, SHAPES)))
         .format(
-            stamp=STAMPS[0] if draw(seldom) else draw(st.sampled_from(STAMPS)),
+            stamp=draw(st.sampled_from(STAMPS[:4] if draw(seldom) else stamps)),
+            log=draw(st.sampled_from(LOG_STAMPS[:2] if draw(seldom) else stamps)),
             text="plain" if draw(seldom) else draw(st.sampled_from(TEXTS)),
-            name=draw(st.sampled_from(["north", "south", "a longer dock"] if draw(seldom) else TEXTS)),
+            name=draw(st.sampled_from(["north", "south", "a-longer-dock"] if draw(seldom) else TEXTS)),
             number=draw(st.sampled_from(["12.5", "7", "1234.75"] if draw(seldom) else NUMBERS)),
             n="1764597936123" if draw(seldom) else draw(st.sampled_from(NUMBERS)),
         )
@@ -82,22 +111,41 @@ def hard_line(draw: st.DrawFn) -> bytes:
     )
     if draw(st.integers(0, 5)) == 0:
         at = draw(st.integers(0, len(line)))
-        line[at : at + 1] = draw(
-            st.sampled_from([b"", b'"', b"\\", b"\xff", b"\xc3", b"\0", b" ", b"{", b"}", b"\r", b","])
-        )
-    return bytes(line).replace(b"\n", b"") + draw(st.sampled_from([b"\n", b"\n", b"\n", b"\r\n", b" \n"]))
+        others = [
+            b"",
+            b'"',
+            b"\\",
+            b"\xff",
+            b"\xc3",
+            b"\0",
+            b" ",
+            b"{",
+            b"}",
+            b"\r",
+            b",",
+            b"\t",
+            b"=",
+            b"]",
+            b"-",
+            b";",
+        ]
+        line[at : at + 1] = draw(st.sampled_from(others))
+    return bytes(line).replace(b"\n", b"") + draw(st.sampled_from([b"\n", b"\n", b"\n", b"\r\n", b" \n", b"\r\r\n"]))
 
 
 def any_block(name: str) -> st.SearchStrategy[bytes]:
-    lines = st.one_of(hard_line(), hard_line(), changed_line("json"))
+    family = name.split()[0]
+    lines = st.one_of(hard_line(family), hard_line(family), changed_line(family))
     mixed = st.lists(lines, max_size=12).map(b"".join)
     run = st.tuples(lines, st.integers(1, 6), lines).map(lambda t: t[0] * t[1] + t[2] + t[0])
-    return st.one_of(mixed, run, blocks_of(name))
+    return st.one_of(mixed, run, blocks_of(family))
 
 
-def agree(parser: Parser, format_: LineFormat, block: bytes) -> None:
-    parsed = parser.parse(block)
-    lines, events, skipped, rejected = plain_lines.read(format_, block)
+def agree(
+    parser: Parser, format_: LineFormat, block: bytes, *, header: bytes | None = None, first: bool = False
+) -> None:
+    parsed = parser.parse(block, header=header, first=first)
+    lines, events, skipped, rejected = plain_lines.read(format_, block, header, first)
     assert (parsed.lines, parsed.skipped, parsed.rejected) == (lines, skipped, rejected)
     assert parsed.sizes.tolist() == [e[0] for e in events]
     if format_.time is not None:
@@ -109,16 +157,20 @@ def agree(parser: Parser, format_: LineFormat, block: bytes) -> None:
 
 
 @pytest.mark.parametrize("name", COMPILED)
-@settings(max_examples=250, derandomize=True, deadline=None, suppress_health_check=list(HealthCheck))
-@given(data=st.data(), filling=st.sampled_from([0, 1, 63, 64, 65, 200]))
-def test_compiled_and_plain_agree(name: str, data: st.DataObject, filling: int) -> None:
+@settings(max_examples=150, derandomize=True, deadline=None, suppress_health_check=list(HealthCheck))
+@given(data=st.data(), filling=st.sampled_from([0, 1, 63, 64, 65, 200]), first=st.booleans())
+def test_compiled_and_plain_agree(name: str, data: st.DataObject, filling: int, first: bool) -> None:
     format_ = COMPILED[name]
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(compiled_module, "_FEWEST_BYTES", 1)
         parser = compile_parser(format_, compiled=True)
-        assert isinstance(parser, CompiledJson)
+        assert name.startswith("csv") or isinstance(parser, CompiledParser)
         for _ in range(2):  # the second block meets the layouts that the first one left
-            agree(parser, format_, data.draw(any_block(name)) + b"\n" * filling)
+            block = data.draw(any_block(name)) + b"\n" * filling
+            header = b"dock,at,units,more" if name == "csv" else None
+            if header and first:
+                block = header + b"\n" + block
+            agree(parser, format_, block, header=header, first=first)
 
 
 def good_lines(n: int) -> list[bytes]:
@@ -132,8 +184,9 @@ def good_lines(n: int) -> list[bytes]:
 
 def test_nearly_all_plain_lines_are_settled_without_the_slower_way() -> None:
     format_ = COMPILED["json flat"]
-    reader = _Counting()
-    parser = CompiledJson(format_, reader, reader)  # type: ignore[arg-type]
+    reader, desk = _Counting(), desks.json_desk(format_)
+    assert desk is not None
+    parser = CompiledParser(format_, desk, reader, reader)  # type: ignore[arg-type]
     parser.parse(b"".join(good_lines(5000)))
     assert reader.lines <= 2  # the last ones only, which stand too near to the block's end
 
@@ -170,5 +223,5 @@ def test_lines_that_are_not_utf8_do_not_disturb_their_neighbours() -> None:
 
 
 def test_conditions_and_several_stream_fields_keep_the_reader_of_records() -> None:
-    for name in ("json where", "csv", "number"):
-        assert not isinstance(compile_parser(FORMATS[name], compiled=True), CompiledJson)
+    for name in ("json where", "pairs where", "combined", "number", "pattern"):
+        assert not isinstance(compile_parser(FORMATS[name], compiled=True), CompiledParser)

@@ -5,7 +5,10 @@ from __future__ import annotations
 from numba import njit
 
 kernel = njit(nogil=True, cache=True, _nrt=False, error_model="numpy")
-"""A loop called from Python, or large enough to stand alone; compiled once and cached on disk."""
+"""A loop called from Python; compiled once and cached on disk, with all that it calls."""
+
+part = njit(nogil=True, _nrt=False, error_model="numpy")
+"""Large enough to stand alone, but called by kernels only."""
 
 helper = njit(nogil=True, forceinline=True, _nrt=False, error_model="numpy")
 """A few operations that disappear into the kernel calling them."""

@@ -17,13 +17,26 @@ from typing import Any
 
 import numpy as np
 
-from monitor.parse.kernels.compiling import helper, kernel
-from monitor.parse.kernels.scalars import epoch, json_number, name_code, past_number, rfc3339, whole_number
+from monitor.parse.kernels.compiling import helper, part
+from monitor.parse.kernels.desk import (
+    END,
+    EVERYTHING,
+    FIELDS,
+    NO_FIELD,
+    NUMBER,
+    OUT,
+    OWN,
+    POWERS_OF_TEN,
+    SIZE,
+    STREAM,
+    TEXT,
+    TIME,
+)  # fmt: skip
+from monitor.parse.kernels.scalars import json_number, past_number, whole_number
 from monitor.parse.kernels.words import (
     byte,
     keep,
     kept,
-    kept_float,
     lowest,
     next_mark,
     next_newline,
@@ -31,20 +44,8 @@ from monitor.parse.kernels.words import (
     word,
 )
 
-SETTLED, DOUBTFUL = 0, 1
-FIELDS, DEEPEST = 3, 32
-SIZE, TIME, STREAM = 0, 1, 2
-
-# The desk: one array of int64 on which a run does its work; these are places on it, in bytes.
-EVERYTHING = 0  # mask of the wanted fields
-UNIT, LOCAL_IS_UTC = 8, 16
-SCALE = 24
-TABLE = 32  # three words of name_code
-MINUTE = 56  # three words of rfc3339
-END = 80  # of the line just read
-OUT = 88  # of each field: start and end of its text, or its number, and which kind of scalar it was
-POWERS_OF_TEN = OUT + 24 * (FIELDS + 1)
-FINALS = POWERS_OF_TEN + 8 * 23  # of each depth, the mask of the fields whose path ends there
+DEEPEST = 32
+FINALS = OWN  # of each depth, the mask of the fields whose path ends there
 NAMES = FINALS + 8 * DEEPEST  # of each field and depth: bytes of the name, and the place of its words on the desk
 KINDS = NAMES + 16 * FIELDS * DEEPEST
 MASKS = KINDS + 8 * DEEPEST
@@ -57,8 +58,7 @@ WORDS = TURN + 8  # words of the names
 
 _OBJECT, _ARRAY = 0, 1
 _KEY_OR_END, _KEY, _VALUE, _VALUE_OR_END, _AFTER = 0, 1, 2, 3, 4  # what is expected next
-_STRING, _NUMBER, _LITERAL, _LAST = 0, 1, 2, 3
-_NO_FIELD = FIELDS  # what a scalar is: 4 * kind + field
+_LITERAL, _LAST = 2, 3  # beside TEXT and NUMBER
 
 
 @helper
@@ -68,7 +68,7 @@ def _past_space(p: Any) -> Any:
     return p
 
 
-@kernel
+@part
 def _past_escapes(p: Any) -> Any:
     """Place of the closing quote of a string that goes on at p; -1 in doubt."""
     while True:
@@ -92,16 +92,16 @@ def _past_escapes(p: Any) -> Any:
             return np.int64(-1)
 
 
-@kernel
+@part
 def _past_literal(p: Any) -> Any:
     """End of true, false or null at p; -1 when it is none."""
-    four = word(p) & lowest(4)
+    four = word(p) & lowest(np.int64(4))
     if four == 0x65757274 or four == 0x6C6C756E:  # true, null
         return p + 4
     return p + 5 if four == 0x736C6166 and byte(p + 4) == 101 else np.int64(-1)  # false
 
 
-@kernel
+@part
 def _fields_called(p: Any, q: Any, depth: Any, desk: Any) -> Any:
     """The mask of the fields in which the name between p and q stands at this depth."""
     found, able = np.int64(0), kept(desk + MASKS + 8 * depth)
@@ -112,9 +112,9 @@ def _fields_called(p: Any, q: Any, depth: Any, desk: Any) -> Any:
     return found
 
 
-@kernel
+@part
 def _field_of(mask: Any) -> Any:
-    """The one field of a mask, _NO_FIELD when it is empty."""
+    """The one field of a mask, NO_FIELD when it is empty."""
     f = np.int64(0)
     while f < FIELDS and not mask >> f & 1:
         f += 1
@@ -125,14 +125,14 @@ def _field_of(mask: Any) -> Any:
 def _string(p: Any, field: Any, desk: Any) -> Any:
     """Place of the closing quote of the string whose first byte is at p, -1 in doubt; keeps where a field's is."""
     q = next_mark(p)
-    if byte(q) == 92 and field == _NO_FIELD:
+    if byte(q) == 92 and field == NO_FIELD:
         q = _past_escapes(q)
     if q < 0 or byte(q) != 34:
         return np.int64(-1)
     out = desk + OUT + 24 * field
     keep(out, p)
     keep(out + 8, q)
-    keep(out + 16, np.int64(_STRING))
+    keep(out + 16, np.int64(TEXT))
     return q
 
 
@@ -140,7 +140,7 @@ def _string(p: Any, field: Any, desk: Any) -> Any:
 def _number(p: Any, field: Any, desk: Any) -> Any:
     """End of the number at p, -1 in doubt; keeps what a field needs of it."""
     out = desk + OUT + 24 * field
-    keep(out + 16, np.int64(_NUMBER))
+    keep(out + 16, np.int64(NUMBER))
     if field == SIZE:
         return json_number(p, desk + POWERS_OF_TEN, out)
     if field == TIME:
@@ -153,7 +153,7 @@ def _number(p: Any, field: Any, desk: Any) -> Any:
     return past_number(p)
 
 
-@kernel
+@part
 def _by_grammar(p: Any, desk: Any) -> Any:
     """Read one object at p. Returns how many scalars it has, -1 in doubt; keeps them at SCALARS, the fields at OUT."""
     everything = kept(desk + EVERYTHING)
@@ -207,23 +207,23 @@ def _by_grammar(p: Any, desk: Any) -> Any:
             if current and not final:
                 return np.int64(-1)  # an object was expected
             field = _field_of(final)
-            kind = _STRING if c == 34 else _NUMBER if c == 45 or 48 <= c <= 57 else _LITERAL
-            if kind == _STRING:
+            kind = TEXT if c == 34 else NUMBER if c == 45 or 48 <= c <= 57 else _LITERAL
+            if kind == TEXT:
                 q = _string(p + 1, field, desk)
-            elif kind == _NUMBER:
+            elif kind == NUMBER:
                 q = _number(p, field, desk)
             else:
-                q = _past_literal(p) if field == _NO_FIELD else np.int64(-1)
+                q = _past_literal(p) if field == NO_FIELD else np.int64(-1)
             if q < 0:
                 return np.int64(-1)
             found |= final
             if count < MOST_SCALARS:
                 place = desk + SCALARS + 24 * count
-                keep(place, p + 1 if kind == _STRING else p)
+                keep(place, p + 1 if kind == TEXT else p)
                 keep(place + 8, q)
                 keep(place + 16, 4 * kind + field)
             count += 1
-            p = q + 1 if kind == _STRING else q
+            p = q + 1 if kind == TEXT else q
             state = _AFTER
         elif c == 44:
             state = _KEY if kept(desk + KINDS + 8 * depth) == _OBJECT else _VALUE
@@ -238,7 +238,7 @@ def _by_grammar(p: Any, desk: Any) -> Any:
             return np.int64(-1)
 
 
-@kernel
+@part
 def _learn(p: Any, e: Any, count: Any, desk: Any) -> Any:
     """Keep the layout of the line between p and its newline e, which has `count` scalars.
 
@@ -258,7 +258,7 @@ def _learn(p: Any, e: Any, count: Any, desk: Any) -> Any:
             keep(layout, np.int64(0))
             return
         keep(at, end - p)
-        keep(at + 8, np.int64(4 * _LAST + _NO_FIELD) if k == count else kept(place + 16))
+        keep(at + 8, np.int64(4 * _LAST + NO_FIELD) if k == count else kept(place + 16))
         at += 16
         while end - p >= 8:
             keep(at, word(p))
@@ -271,7 +271,7 @@ def _learn(p: Any, e: Any, count: Any, desk: Any) -> Any:
     keep(desk + TURN, (turn + 1) % MOST_LAYOUTS)
 
 
-@kernel
+@part
 def _by_layout(p: Any, layout: Any, desk: Any) -> Any:
     """The end (newline) of a line at p that is laid out so, keeping its fields at OUT; -1 when it is not."""
     while True:
@@ -282,11 +282,11 @@ def _by_layout(p: Any, layout: Any, desk: Any) -> Any:
         p += length
         layout += (length + 7) & ~7
         kind = what >> 2
-        if kind == _STRING:
+        if kind == TEXT:
             p = _string(p, what & 3, desk)
             if p < 0:
                 return np.int64(-1)
-        elif kind == _NUMBER:
+        elif kind == NUMBER:
             p = _number(p, what & 3, desk)
             if p < 0:
                 return np.int64(-1)
@@ -298,17 +298,32 @@ def _by_layout(p: Any, layout: Any, desk: Any) -> Any:
             return p - 1
 
 
-@kernel
-def _line(p: Any, layout: Any, desk: Any) -> Any:
-    """Read a line by the layout of the last one, by another, or by the grammar. Returns which, -1 in doubt."""
+@part
+def json_line(p: Any, layout: Any, desk: Any) -> Any:
+    """Read a line by the layout of the last one, by another, or by the grammar.
+
+    Returns which layout, -1 in doubt; keeps the newline's place at END.
+    """
     first = desk + LAYOUTS
-    for _ in range(MOST_LAYOUTS):
+    if kept(first + layout * LAYOUT_BYTES) > 0:
+        e = _by_layout(p, first + layout * LAYOUT_BYTES, desk)
+        if e >= 0:
+            keep(desk + END, e)
+            return layout
+    return _otherwise(p, layout, desk)
+
+
+@part
+def _otherwise(p: Any, layout: Any, desk: Any) -> Any:
+    """json_line, where the layout of the last line did not fit."""
+    first = desk + LAYOUTS
+    for _ in range(MOST_LAYOUTS - 1):
+        layout = (layout + 1) % MOST_LAYOUTS
         if kept(first + layout * LAYOUT_BYTES) > 0:
             e = _by_layout(p, first + layout * LAYOUT_BYTES, desk)
             if e >= 0:
                 keep(desk + END, e)
                 return layout
-        layout = (layout + 1) % MOST_LAYOUTS
     count = _by_grammar(p, desk)
     if count < 0:
         return np.int64(-1)
@@ -316,55 +331,3 @@ def _line(p: Any, layout: Any, desk: Any) -> Any:
     _learn(p, e, count, desk)
     keep(desk + END, e)
     return layout
-
-
-@helper
-def _stamp(desk: Any) -> Any:
-    """ns of the time that the line just read holds, -1 in doubt."""
-    out = desk + OUT + 24 * TIME
-    if kept(out + 16) == _STRING:
-        return rfc3339(kept(out), kept(out + 8), kept(desk + LOCAL_IS_UTC) != 0, desk + MINUTE)
-    return epoch(kept(out), kept(desk + UNIT))
-
-
-@kernel
-def scan(a: Any, until: Any, desk_array: Any, names_array: Any, outputs: Any) -> Any:
-    """Read the lines in front of a[until], which is the start of a line or the end of the text.
-
-    Parameters: a, uint8, with SPARE bytes behind a[until]; desk_array, int64, see above; names_array, int64, see
-    name_code; outputs, (starts, ends, status, sizes, stamps, codes), are filled in for each line, the last three
-    only where status is SETTLED.
-    Returns the number of distinct stream names, whose places (addresses) are in names_array.
-    """
-    starts, ends, statuses, sizes, stamps, codes = outputs
-    desk, names, text = np.int64(desk_array.ctypes.data), np.int64(names_array.ctypes.data), np.int64(a.ctypes.data)
-    wanted, scale = kept(desk + EVERYTHING), kept_float(desk + SCALE)
-    timed, named = wanted >> TIME & 1, wanted >> STREAM & 1
-    known, layout, stamp, code = np.int64(0), np.int64(0), np.int64(0), np.int64(0)
-    p, n = text, np.uint64(0)
-    while p < text + until:
-        starts[n] = p - text
-        status = np.uint8(DOUBTFUL)
-        used = _line(p, layout, desk)
-        if used < 0:
-            e = next_newline(p)
-        else:
-            e, layout = kept(desk + END), used
-            size = kept_float(desk + OUT + 24 * SIZE) * scale
-            plain = kept(desk + OUT + 24 * SIZE + 16) == _NUMBER and 0.0 < size < np.inf
-            if plain and timed:
-                stamp = _stamp(desk)
-                plain = stamp >= 0
-            if plain and named:
-                out = desk + OUT + 24 * STREAM
-                code = name_code(kept(out), kept(out + 8), names, known, desk + TABLE)
-                plain = code >= 0
-                known = max(known, code + 1)
-            if plain:
-                sizes[n], stamps[n], codes[n] = size, stamp, code
-                status = np.uint8(SETTLED)
-        ends[n] = e - text
-        statuses[n] = status
-        n += np.uint64(1)
-        p = e + 1
-    return known

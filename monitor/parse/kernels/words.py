@@ -17,8 +17,9 @@ from monitor.parse.kernels.compiling import helper, kernel
 SPARE = 64
 """Bytes behind the text that may be loaded (and are not looked at)."""
 
+_FIRST = ir.Constant(ir.IntType(32), 0)
 _BYTE, _WORD, _VECTOR = ir.IntType(8), ir.IntType(64), ir.VectorType(ir.IntType(8), 32)
-_QUOTE, _BACKSLASH, _SPACE, _NEWLINE, _FIRST_HIGH = 34, 92, 32, 10, 128
+_QUOTE, _BACKSLASH, _SPACE, _NEWLINE, _EQUALS, _FIRST_HIGH = 34, 92, 32, 10, 61, 128
 
 
 def _loaded(builder: Any, address: Any, kind: Any, align: Any) -> Any:
@@ -104,9 +105,33 @@ def _is_mark(builder: Any, bytes_: Any) -> Any:
     return builder.or_(builder.or_(quote, back), builder.icmp_unsigned("<", bytes_, _all(_SPACE)))
 
 
+def _is_pair_mark(builder: Any, bytes_: Any) -> Any:
+    equals = builder.icmp_unsigned("==", bytes_, _all(_EQUALS))
+    quote = builder.icmp_unsigned("==", bytes_, _all(_QUOTE))
+    return builder.or_(builder.or_(quote, equals), builder.icmp_unsigned("<=", bytes_, _all(_SPACE)))
+
+
 marks = _hits(_is_mark)
+pair_marks = _hits(_is_pair_mark)
+gaps = _hits(lambda builder, bytes_: builder.icmp_unsigned("<=", bytes_, _all(_SPACE)))
 newlines = _hits(lambda builder, bytes_: builder.icmp_unsigned("==", bytes_, _all(_NEWLINE)))
 highs = _hits(lambda builder, bytes_: builder.icmp_unsigned(">=", bytes_, _all(_FIRST_HIGH)))
+
+
+@intrinsic
+def separators(_typing: Any, address: Any, delimiter: Any) -> Any:
+    """Among 32 bytes the delimiters, quotes and newlines, as bits."""
+
+    def generate(_context: Any, builder: Any, _signature: Any, arguments: Any) -> Any:
+        bytes_ = _loaded(builder, arguments[0], _VECTOR, 1)
+        one = builder.insert_element(ir.Constant(_VECTOR, ir.Undefined), builder.trunc(arguments[1], _BYTE), _FIRST)
+        all_ = builder.shuffle_vector(one, one, ir.Constant(ir.VectorType(ir.IntType(32), 32), [0] * 32))
+        quote = builder.icmp_unsigned("==", bytes_, _all(_QUOTE))
+        newline = builder.icmp_unsigned("==", bytes_, _all(_NEWLINE))
+        found = builder.or_(builder.or_(quote, newline), builder.icmp_unsigned("==", bytes_, all_))
+        return builder.zext(builder.bitcast(found, ir.IntType(32)), _WORD)
+
+    return types.uint64(types.int64, types.int64), generate
 
 
 @intrinsic
@@ -134,6 +159,36 @@ def next_mark(p: Any) -> Any:
     """Place of the first quote, backslash or control character at or behind p; there must be one."""
     while True:
         hits = marks(p)
+        if hits:
+            return p + trailing_zeros(hits)
+        p += 32
+
+
+@helper
+def next_pair_mark(p: Any) -> Any:
+    """Place of the first space, control character, quote or equals sign at or behind p; there must be one."""
+    while True:
+        hits = pair_marks(p)
+        if hits:
+            return p + trailing_zeros(hits)
+        p += 32
+
+
+@helper
+def next_gap(p: Any) -> Any:
+    """Place of the first space or control character at or behind p; there must be one."""
+    while True:
+        hits = gaps(p)
+        if hits:
+            return p + trailing_zeros(hits)
+        p += 32
+
+
+@helper
+def next_separator(p: Any, delimiter: Any) -> Any:
+    """Place of the first delimiter, quote or newline at or behind p; there must be one."""
+    while True:
+        hits = separators(p, delimiter)
         if hits:
             return p + trailing_zeros(hits)
         p += 32

@@ -40,7 +40,8 @@ _MOST_RAISES = 40
 class Ground(msgspec.Struct, frozen=True, kw_only=True):
     """The budget that keeps the promise, and on which ground.
 
-    budget_days    to be given to rules.begin; None when no raise was enough
+    budget_days    to be given to rules.begin
+    kept           False: no raise was enough, the largest one tried stands in budget_days, and nothing is promised
     promised_days  what the stream then keeps
     blocks, number of blocks that were resampled; None and 0: the promise rests on independence
     alarms, days   false alarms in the last simulation and its length
@@ -54,6 +55,7 @@ class Ground(msgspec.Struct, frozen=True, kw_only=True):
     alarms: int
     days: float
     words: str
+    kept: bool = True
 
 
 class _Block(msgspec.Struct, frozen=True):
@@ -100,15 +102,15 @@ def ground(
     rules: tuple[RuleName, ...] = ("exponent", "tail share") if exponent else ("tail share",)
     paths = _paths(blocks, prior, FUTURE * tried, key_of("ground", slots[0].stream, slots[0].start_ns))
     found = _raised(paths, tried, rules)
-    if found.budget is None:
-        words = f"the stream's own past ({len(blocks)} {kind}) does not let the promise be kept at any budget tried"
-        return _stated(None, budget_days, kind, len(blocks), found, words)
     raised = found.budget * (budget_days / tried)
+    if not found.kept:
+        words = f"nothing is promised: on the stream's own past ({len(blocks)} {kind}) no budget tried was kept"
+        return _stated(raised, budget_days, kind, len(blocks), found, words)
     words = f"measured on the stream's own past ({len(blocks)} {kind} resampled)"
     if tried < budget_days:
         shorter = _raised(paths, tried / 4.0, rules)
         slope = 0.0
-        if shorter.budget is not None:
+        if shorter.kept:
             slope = max(0.0, log(found.budget / tried / (shorter.budget / (tried / 4.0))) / log(4.0))
         raised *= (budget_days / tried) ** slope
         words += f", up to {tried:.3g} days between false alarms and extrapolated from there"
@@ -128,12 +130,13 @@ def _independent(budget_days: float) -> Ground:
 
 
 class _Raised(msgspec.Struct, frozen=True):
-    budget: float | None
+    budget: float
     alarms: int
     days: float
+    kept: bool = True
 
 
-def _stated(budget: float | None, promised: float, kind: Blocks, number: int, found: _Raised, words: str) -> Ground:
+def _stated(budget: float, promised: float, kind: Blocks, number: int, found: _Raised, words: str) -> Ground:
     return Ground(
         budget_days=budget,
         promised_days=promised,
@@ -142,6 +145,7 @@ def _stated(budget: float | None, promised: float, kind: Blocks, number: int, fo
         alarms=found.alarms,
         days=found.days,
         words=words,
+        kept=found.kept,
     )
 
 
@@ -161,7 +165,7 @@ def _raised(paths: Sequence[_Path], budget: float, rules: Sequence[RuleName]) ->
     low, high = -1, 0
     while not keeps(count := alarms(high)):
         if high >= _MOST_RAISES:
-            return _Raised(None, count, days)
+            return _Raised(budget * RAISE**high, count, days, kept=False)
         low, high = high, min(max(1, 2 * high), _MOST_RAISES)
     while high - low > 1:
         middle = (low + high) // 2

@@ -163,6 +163,20 @@ def test_a_busy_streams_raise_is_extrapolated_and_says_so():
     assert found.budget_days > 5000.0
 
 
+def test_a_past_that_no_budget_fits_is_said_aloud():
+    # Every other week the log sizes are three times as large: no threshold in reach keeps that silent.
+    rng = np.random.default_rng(5)
+    slots = []
+    for hour in range(70 * 24):
+        y = rng.standard_exponential(8) * (1.5 if hour // 168 % 2 else 0.5)
+        slot = SlotFacts(stream="w", start_ns=hour * HOUR, length_ns=HOUR)
+        slots.append(facts_of(100 * np.exp(y), np.ones(8, np.int64), slot, YARDSTICK))
+    found = ground(slots, YARDSTICK, budget_days=8.0, prior=1500, most=40_000)
+    assert not found.kept
+    assert found.budget_days > 1000 * 8.0
+    assert "nothing is promised" in found.words
+
+
 def test_the_share_alone_is_measured_where_no_power_law_fits():
     slots = stream_of(4, 60, length=HOUR)
     found = ground(slots, YARDSTICK, budget_days=10.0, prior=1000, exponent=False)

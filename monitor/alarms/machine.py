@@ -202,13 +202,9 @@ class _Run:
             elif alarm.wait_until == due:
                 self.set(wait_until=None)
                 self.move("wait over", due)
-            else:
-                self._hold_over(due)
-
-    def _hold_over(self, t: int) -> None:
-        self.set(held=None, held_until=None)
-        if self.alarm.state == UNACKNOWLEDGED:
-            self.announce(t)
+            else:  # only an unacknowledged alarm is held
+                self.set(held=None, held_until=None)
+                self.announce(due)
 
 
 def _next_due(alarm: Alarm) -> int | None:

@@ -254,8 +254,20 @@ def test_no_text_raises(lines: list[str]) -> None:
 
 def test_the_horizon_cuts_nothing_that_touches_it() -> None:
     how = Reading(timezone="UTC", start=ns(2026, 11, 2), end=ns(2026, 11, 3))
-    event_text = "BEGIN:VEVENT\nDTSTART:20261101T230000Z\nDURATION:PT2H\nRRULE:FREQ=DAILY\nEND:VEVENT"
+    event_text = "BEGIN:VEVENT\nDTSTART:20261030T230000Z\nDURATION:PT2H\nRRULE:FREQ=DAILY\nEND:VEVENT"
     text = f"BEGIN:VCALENDAR\n{event_text}\nEND:VCALENDAR"
     first = datetime(2026, 11, 1, 23, tzinfo=UTC)
     starts = [round((first + timedelta(days=n)).timestamp()) * 10**9 for n in range(2)]
     assert [one.start for one in read_calendar(text, how).known] == starts
+
+
+def test_a_date_as_the_end_of_a_repetition_is_its_whole_day() -> None:
+    timed = event("DTSTART:20261101T230000Z", "DURATION:PT1H", "RRULE:FREQ=DAILY;UNTIL=20261103")
+    assert len(spans(timed)) == 3
+    whole = event("DTSTART;VALUE=DATE:20261101", "RRULE:FREQ=DAILY;UNTIL=20261103", zone="America/New_York")
+    assert len(spans(whole)) == 3
+
+
+def test_a_byte_order_mark_is_no_fault() -> None:
+    text = "\ufeffBEGIN:VCALENDAR\nBEGIN:VEVENT\nDTSTART:20260501\nEND:VEVENT\nEND:VCALENDAR"
+    assert len(read_calendar(text, Reading(timezone="UTC", start=0, end=ns(2030, 1, 1))).known) == 1

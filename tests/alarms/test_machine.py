@@ -52,6 +52,13 @@ def test_an_on_delay_holds_the_alarm_back_and_drops_what_passes() -> None:
     )
 
 
+def test_what_the_rule_says_during_the_on_delay_is_what_is_announced() -> None:
+    pending = raise_alarm(SPOKE, policy(on_delay=HOUR)).alarm
+    again = step(pending, Speaks(spoke=spoke(at=T0 + MINUTE, after=9900.0)), T0 + MINUTE)
+    assert (again.alarm.after, again.alarm.spoken, again.changes) == (9900.0, 2, ())
+    assert step(again.alarm, Ticked(), T0 + HOUR).alarm.state == "unacknowledged"
+
+
 def test_it_returns_to_normal_when_the_statistic_stays_low_for_the_off_delay() -> None:
     alarm = raise_alarm(SPOKE, policy(off_delay=HOUR, return_below=0.2)).alarm
     alarm = step(alarm, Measured(share=0.1), T0 + MINUTE).alarm
@@ -173,6 +180,15 @@ def test_each_choice_has_its_consequence() -> None:
         record = outcome.alarm.decisions[-1]
         assert (record.before, record.after, record.unit, record.by) == (5200.0, 9400.0, "units", "ana")
     assert set(MEANINGS) == set(CHOICES)
+
+
+@pytest.mark.parametrize(("changed_at", "since"), [(T0 - HOUR, T0 - HOUR), (None, T0)])
+def test_without_a_set_the_likeliest_moment_counts_and_without_that_the_alarm_s(
+    changed_at: int | None, since: int
+) -> None:
+    alarm = raise_alarm(spoke(changed_between=None, changed_at=changed_at), policy()).alarm
+    outcome = step(alarm, Decide(by="ana", choice="accept"), T0 + DAY)
+    assert outcome.consequences == (AcceptChange(stream="north-dock", since=since, by="ana", note=""),)
 
 
 def test_a_declared_change_concerns_this_stream_alone() -> None:

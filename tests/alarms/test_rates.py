@@ -36,6 +36,8 @@ def test_a_standing_alarm_stands_for_more_than_a_day() -> None:
 def test_three_announcements_within_ten_minutes_are_chatter() -> None:
     calm = [announced("a", T0 + n * 10 * MINUTE) for n in range(5)]
     assert alarm_rates([], calm, T0, T0 + DAY).chattering == ()
+    on_the_edge = [announced("e", T0 + n * 5 * MINUTE) for n in range(3)]
+    assert alarm_rates([], on_the_edge, T0, T0 + DAY).chattering == ()
     restless = [announced("b", T0 + HOUR + n * 4 * MINUTE) for n in range(4)]
     found = alarm_rates([], calm + restless, T0, T0 + DAY).chattering
     assert [(one.alarm, one.times, one.since) for one in found] == [("b", 3, T0 + HOUR)]

@@ -10,6 +10,7 @@ from pathlib import Path
 
 import pytest
 
+from monitor.deliver.child import MOST_OUTPUT, Child
 from monitor.deliver.cloudevent import structured
 from monitor.deliver.command import CommandRoute
 from monitor.deliver.route import Receipt
@@ -93,6 +94,14 @@ def test_a_program_that_writes_without_end_is_ended_and_its_output_bounded(tmp_p
     found = run(tmp_path, program(tmp_path, "while True: os.write(1, b'spam ' * 10000)"), timeout=1.0)
     assert "took longer than 1 s" in found.detail
     assert len(found.detail) <= 500
+
+
+def test_only_the_end_of_the_output_is_kept(tmp_path: Path) -> None:
+    child = Child([sys.executable, "-ISc", "print('x' * 100_000 + 'end')"], b"", deadline=time.monotonic() + 20.0)
+    while (end := child.poll(time.monotonic())) is None:
+        time.sleep(0.005)
+    assert len(end.output) == MOST_OUTPUT
+    assert end.output.endswith(b"xend\n")
 
 
 def test_much_output_is_read_so_that_the_program_can_end(tmp_path: Path) -> None:

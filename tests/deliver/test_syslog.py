@@ -89,6 +89,12 @@ def test_a_long_sentence_is_cut_between_characters() -> None:
     assert message.decode().endswith("\u20ac..")
 
 
+def test_a_long_name_leaves_room_for_the_sentence() -> None:
+    message = syslog_message(msgspec.structs.replace(event(), subject="]" * 5000), SENDER)
+    assert len(message) <= MOST_BYTES
+    assert parsed(message)["text"].decode() == "north-dock: tail heavier."
+
+
 def send(way: SyslogWay, timeout: float = 10.0) -> Receipt:
     route = SyslogRoute(way, host="watch", process=7, timeout=timeout)
     return receipt(route.send(event(), time.monotonic()))

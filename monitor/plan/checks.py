@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Sequence
 from datetime import UTC, date, datetime
 from difflib import get_close_matches
 from types import UnionType
@@ -33,10 +34,15 @@ def no_unknown_keys(name: str, raw: Any, table: Any, path: str = "") -> None:
         fields = {f.encode_name: hints[f.name] for f in msgspec.structs.fields(table)}
         for key, value in raw.items():
             if key not in fields:
-                near = get_close_matches(key, fields, n=1, cutoff=0.5)
-                hint = f'Did you mean "{near[0]}"?' if near else f"Known keys here: {', '.join(sorted(fields))}."
+                hint = nearest(key, sorted(fields), "Known keys here")
                 raise SettingsError(f"{name}: {path}{quoted(key)}: unknown key. {hint}")
             no_unknown_keys(name, value, fields[key], f"{path}{key}.")
+
+
+def nearest(key: str, known: Sequence[str], of: str = "Known are") -> str:
+    """'Did you mean "size"?', or, when nothing is near, all that is known."""
+    near = get_close_matches(key, known, n=1, cutoff=0.5)
+    return f'Did you mean "{near[0]}"?' if near else f"{of}: {', '.join(known)}."
 
 
 def quoted(key: str) -> str:

@@ -13,6 +13,7 @@ from monitor.alarms.known import EFFECTS, Effect, KnownChange
 from monitor.errors import SettingsError
 from monitor.parse.compile import compile_parser
 from monitor.parse.lines import FormatError, LineFormat
+from monitor.plan.alarm_rules import AlarmTable, policies
 from monitor.plan.checks import (
     in_range,
     no_unknown_keys,
@@ -127,6 +128,12 @@ class SettingsTable(msgspec.Struct, frozen=True, forbid_unknown_fields=True, kw_
     stream: dict[str, StreamTable] = {}
     known: list[KnownTable] = []
     notify: dict[str, NotifyTable] = {}
+    alarm: dict[str, AlarmTable] = {}
+
+
+TABLES_BY_NAME: tuple[tuple[str, type[msgspec.Struct]], ...] = (
+    ("feed", FeedTable), ("stream", StreamTable), ("notify", NotifyTable), ("alarm", AlarmTable),
+)  # fmt: skip
 
 
 def read_plan(text: str, name: str) -> Plan:
@@ -140,7 +147,7 @@ def read_plan(text: str, name: str) -> Plan:
     except tomllib.TOMLDecodeError as error:
         raise SettingsError(f"{name}: not valid TOML: {error}.") from None
     no_unknown_keys(name, raw, SettingsTable)
-    for section, kind in (("feed", FeedTable), ("stream", StreamTable), ("notify", NotifyTable)):
+    for section, kind in TABLES_BY_NAME:
         tables = raw.get(section)
         for key, value in tables.items() if isinstance(tables, dict) else ():
             # One by one, since in a whole dict the offending table's name would not be told.
@@ -193,6 +200,7 @@ def _plan(name: str, table: SettingsTable, text: str) -> Plan:
         known=_known(name, table.known, zone),
         calendars=_calendars(name, table.known),
         receivers=receivers(name, table.notify, zone),
+        policies=policies(name, table.alarm),
         not_yet=_not_yet(table),
         text=text,
         digest=blake2b(text.encode(), digest_size=16).hexdigest(),
@@ -379,4 +387,5 @@ def _not_yet(table: SettingsTable) -> tuple[str, ...]:
     if table.known:
         keys.append("known")
     keys += [f"notify.{name}" for name in table.notify]
+    keys += [f"alarm.{name}" for name in table.alarm]
     return tuple(keys)

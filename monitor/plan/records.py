@@ -8,6 +8,7 @@ from typing import Literal
 import msgspec
 
 from monitor.alarms.known import Effect, KnownChange
+from monitor.alarms.priorities import Policy, Rule
 from monitor.parse.lines import LineFormat
 from monitor.plan.listen import Listen
 from monitor.plan.receivers import Receiver
@@ -98,6 +99,8 @@ class Plan(msgspec.Struct, frozen=True, kw_only=True):
     known: tuple[KnownChange, ...]
     calendars: tuple[KnownCalendar, ...]
     receivers: tuple[Receiver, ...]
+    policies: dict[Rule, Policy]
+    """How the alarms of each rule are treated."""
     not_yet: tuple[str, ...]
     """Keys that are read and checked, but that this version does not act on."""
     text: str

@@ -10,6 +10,7 @@ store = "orders.db"                    # the SQLite file that keeps everything; 
 
 [feed.orders]                          # one table a place that lines come from; the name is yours
 follow = ["logs/orders-*.jsonl"]       # files to follow, through rotations; or: read = "-" (standard input)
+                                       # or: listen = "http://127.0.0.1:7070" (batches), "tcp://...", "unix://..."
 lines  = "json"                        # json | csv | number (also combined | pairs | pattern)
 size   = "units"                       # where the size stands: field name, or column name or number
 time   = "placed_at"                   # where the event time stands; without it the time of arrival counts

@@ -41,25 +41,19 @@ def must_post(port: int, key: str, body: bytes) -> None:
         time.sleep(0.05)
 
 
-@pytest.mark.slow
-def test_batches_are_counted_once_through_kills_and_retries(tmp_path: Path) -> None:
-    """The daemon is killed while batches are under way; the store equals that of one quiet run of a file."""
-    lines = order_lines(3000)
-    whole = tmp_path / "whole"
-    fresh(whole).write_text("\n".join(lines) + "\n")
-    assert command("run", "t.toml", "--finish", folder=whole).returncode == 0
+def batches_of(lines: list[str]) -> list[bytes]:
+    return [("\n".join(lines[i : i + 30]) + "\n").encode() for i in range(0, len(lines), 30)]
 
-    port, rng = free_port(), random.Random(5)
-    folder = tmp_path / "live"
-    store = listening(folder, f"http://127.0.0.1:{port}")
-    batches = [("\n".join(lines[i : i + 30]) + "\n").encode() for i in range(0, 3000, 30)]
+
+def send_disturbed(folder: Path, port: int, batches: list[bytes], rng: random.Random) -> None:
+    """Send all batches; now and then the daemon is killed while one is under way."""
     sent = 0
     while sent < len(batches):
         with Daemon(folder) as daemon:
-            last = sent + rng.randrange(15, 40)
-            for i in range(sent, min(last, len(batches))):
+            last = min(sent + rng.randrange(15, 40), len(batches))
+            for i in range(sent, last):
                 must_post(port, f"batch-{i}", batches[i])
-                sent = i + 1
+            sent = last
             if sent < len(batches):
                 # One more whose answer is not waited for: the kill falls before, in or after its commit.
                 post(port, f"batch-{sent}", batches[sent], seconds=rng.uniform(0.001, 0.15))
@@ -68,13 +62,34 @@ def test_batches_are_counted_once_through_kills_and_retries(tmp_path: Path) -> N
                 assert post(port, "batch-0", batches[0]) == 200  # known through all those restarts
                 assert post(port, "batch-0", b"other\n") == 422
                 assert daemon.stop() == 0
-    assert lines_read(store) == 3000
-    assert command("run", "t.toml", "--finish", folder=folder).returncode == 0
 
-    def without_chains(path: Path) -> list[str]:
-        return [line for line in export(path) if not line.startswith('{"chain"') and "largest" not in line]
 
-    assert without_chains(store) == without_chains(whole / "orders.db")
+@pytest.mark.slow
+def test_batches_are_counted_once_through_kills_and_retries(tmp_path: Path) -> None:
+    """The store equals that of a quiet run to the last bit, and its panes those of a followed file."""
+    lines, port = order_lines(3000), free_port()
+    batches = batches_of(lines)
+    disturbed, quiet = tmp_path / "disturbed", tmp_path / "quiet"
+    stores = [listening(folder, f"http://127.0.0.1:{port}") for folder in (disturbed, quiet)]
+    send_disturbed(disturbed, port, batches, random.Random(5))
+    with Daemon(quiet) as daemon:
+        for i, batch in enumerate(batches):
+            must_post(port, f"batch-{i}", batch)
+        assert daemon.stop() == 0
+    for folder in (disturbed, quiet):
+        assert command("run", "t.toml", "--finish", folder=folder).returncode == 0
+    assert lines_read(stores[0]) == 3000
+    assert export(stores[0]) == export(stores[1])
+
+    followed = tmp_path / "followed"
+    fresh(followed).write_text("\n".join(lines) + "\n")
+    assert command("run", "t.toml", "--finish", folder=followed).returncode == 0
+    assert len(panes(stores[0])) > 20
+    assert panes(stores[0]) == panes(followed / "orders.db")
+
+
+def panes(store: Path) -> list[str]:
+    return [line for line in export(store) if line.startswith('{"pane"')]
 
 
 def test_without_the_id_a_batch_is_refused(tmp_path: Path) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator
 
 import numpy as np
@@ -13,6 +14,7 @@ from monitor.propose.times import MINUTE, as_floats, disorder_of, stamps_of
 from monitor.propose.units import PER_UNIT, Duration
 from monitor.propose.vocabulary import DURATION, IDENTIFIER_OF_EVENT
 
+_CLOCK = re.compile(r"[0-2]?\d:\d\d(:\d\d)?")
 _NEAR = 8
 """Lines within which a repeated id counts as standing together."""
 
@@ -126,10 +128,20 @@ def time_doubts(
             f"{called(time.field)} holds dates only: all events of a day count at its midnight, so panes cannot be "
             "under 1d"
         )
+        clock = next((c for c in table.columns if _times_of_day(c)), None)
+        if clock is not None:
+            yield (
+                f"the time of day stands in {called(clock.field)}, apart from its date; one field is read, so let the "
+                "writer put both into one"
+            )
     if len(times) > 1:
         others = ", ".join(called(t.field) for t in times[1:4])
         yield f"which time counts: {called(time.field)} was taken; there is also {others}"
     yield from _start_stamps(table, size, time, duration)
+
+
+def _times_of_day(column: Column) -> bool:
+    return column.present > 0 and sum(bool(_CLOCK.match(text)) for text in column.counts) > 0.9 * len(column.counts)
 
 
 def _start_stamps(table: Table, size: Column, time: TimeFound, duration: Duration | None) -> Iterator[str]:

@@ -131,6 +131,16 @@ def test_local_stamps_are_a_doubt_about_the_zone() -> None:
     assert "time zone" not in doubts(of(log("json")))
 
 
+def test_a_date_apart_from_its_time_of_day_is_told() -> None:
+    rng = random.Random(12)
+    rows = [
+        f"2026-11-{1 + i // 40:02d},{i % 24:02d}:{i % 60:02d}:00,{5 * rng.paretovariate(1.4):.2f}" for i in range(400)
+    ]
+    proposal = of("\n".join(["day,hour,weight_kg", *rows, ""]).encode())
+    assert (proposal.format.time, proposal.unit) == ("day", "kg")
+    assert "the time of day stands in hour" in doubts(proposal)
+
+
 def test_two_likely_sizes_are_a_doubt() -> None:
     rng = random.Random(5)
     rows = [{"weight": 3 * rng.paretovariate(1.5), "amount": 9 * rng.paretovariate(1.5)} for _ in range(300)]

@@ -88,6 +88,14 @@ def test_a_rule_that_goes_on_speaking_tells_nobody_twice_but_a_turn_does() -> No
     assert (turned.alarm.state, turned.alarm.direction, turned.alarm.seen_by) == ("unacknowledged", "lighter", None)
 
 
+def test_an_alarm_that_nobody_has_acknowledged_is_told_again_when_it_turns_but_not_when_it_goes_on() -> None:
+    alarm = alarm_in("unacknowledged")
+    assert step(alarm, Speaks(spoke=spoke(at=T0 + HOUR)), T0 + HOUR).notices == ()
+    turned = step(alarm, Speaks(spoke=spoke(at=T0 + HOUR, direction="lighter", after=3000.0)), T0 + HOUR)
+    assert [notice.kind for notice in turned.notices] == ["raised again"]
+    assert (turned.alarm.direction, turned.alarm.after) == ("lighter", 3000.0)
+
+
 def test_a_shelf_ends_at_its_own_moment_however_late_the_clock_is_looked_at() -> None:
     shelved = step(alarm_in("unacknowledged"), Shelve(by="ana", until=T0 + HOUR), T0 + MINUTE).alarm
     outcome = step(shelved, Acknowledge(by="bo"), T0 + DAY)

@@ -11,7 +11,6 @@ from __future__ import annotations
 
 import struct
 import zlib
-from bisect import insort
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from hashlib import blake2b
@@ -32,6 +31,7 @@ LARGEST_KEPT = 32
 
 _MAGIC = b"TGP1"
 _HEADER = struct.Struct("<4sBBBxIqqdd")  # magic, grid?, bytes a count, largest kept, entries, n, late, min, max
+_EVENT = struct.Struct("<dq8s")  # size, time, digest of the line
 _COUNT_TYPES = {1: "<u1", 2: "<u2", 4: "<u4", 8: "<i8"}
 
 
@@ -51,6 +51,10 @@ class LargeEvent(msgspec.Struct, frozen=True, array_like=True):
     def rank(self) -> tuple[float, int, str]:
         """The key that orders large events."""
         return (-self.size, self.time, self.digest)
+
+
+def _rank(event: LargeEvent) -> tuple[float, int, str]:
+    return (-event.size, event.time, event.digest)
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,7 +120,7 @@ def add(panes: Iterable[Pane], distinct: int) -> Pane:
     late = sum(pane.late for pane in parts)
     smallest = min(pane.smallest for pane in parts)
     largest = max(pane.largest for pane in parts)
-    events = sorted((event for pane in parts for event in pane.largest_events), key=lambda event: event.rank)
+    events = sorted((event for pane in parts for event in pane.largest_events), key=_rank)
     cells: NDArray[np.int64] | None = None
     if all(pane.cells is None for pane in parts):
         sizes, counts = _counted(
@@ -174,15 +178,23 @@ class PaneBuilder:
         self, sizes: NDArray[np.float64], times: NDArray[np.int64], describe: Callable[[int], tuple[str, str]]
     ) -> None:
         """Keep by name what is among the largest. Parameters as of `add`."""
-        for i in _largest_candidates(sizes, times, self.bar):
-            rank = (-float(sizes[i]), int(times[i]))
-            if len(self._top) == LARGEST_KEPT:
-                if rank > self._top[-1]:
-                    continue
-                self._top.pop()
-            insort(self._top, rank)
+        able = _largest_candidates(sizes, times, self.bar)
+        ranks = list(zip((-sizes[able]).tolist(), times[able].tolist(), strict=True))
+        room = LARGEST_KEPT - len(self._top)
+        if len(ranks) <= room:
+            self._top = sorted([*self._top, *ranks])
+        else:
+            able, ranks = self._best_of(able, ranks)
+        for i, (negative, time) in zip(able, ranks, strict=True):
             digest, place = describe(i)
-            self.events.append(LargeEvent(-rank[0], rank[1], digest, place))
+            self.events.append(LargeEvent(-negative, time, digest, place))
+
+    def _best_of(self, able: list[int], ranks: list[tuple[float, int]]) -> tuple[list[int], list[tuple[float, int]]]:
+        """Those of some events, and their ranks, that are among the largest, ties with the last one included."""
+        self._top = sorted([*self._top, *ranks])[:LARGEST_KEPT]
+        last = self._top[-1]
+        kept = [k for k, rank in enumerate(ranks) if rank <= last]
+        return [able[k] for k in kept], [ranks[k] for k in kept]
 
     def build(self, distinct: int) -> Pane:
         """The pane of all events taken in since the last time."""
@@ -192,7 +204,7 @@ class PaneBuilder:
         """The events to be kept by name, and none of them a second time."""
         able = [event for event in self.events if (-event.size, event.time) <= self._top[-1]]
         self.events = []
-        return tuple(sorted(able, key=lambda event: event.rank)[:LARGEST_KEPT])
+        return tuple(sorted(able, key=_rank)[:LARGEST_KEPT])
 
 
 def build_panes(builders: Sequence[PaneBuilder], distinct: int) -> list[Pane]:
@@ -249,7 +261,9 @@ def _built(builder: PaneBuilder, sizes: NDArray[np.float64], counts: NDArray[np.
 
 
 def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], bar: float) -> list[int]:
-    """Indices of the events that can be among the largest kept, largest first: the top by (size, time), with ties."""
+    """Indices of the events that can be among the largest kept: the top by (size, time), with all ties."""
+    if sizes.size <= LARGEST_KEPT and not bar:
+        return list(range(sizes.size))
     able = np.flatnonzero(sizes >= bar)
     if able.size > LARGEST_KEPT:
         cut = np.partition(sizes[able], able.size - LARGEST_KEPT)[able.size - LARGEST_KEPT]
@@ -258,7 +272,7 @@ def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], ba
         order = np.lexsort((times[able], -sizes[able]))
         last = able[order[LARGEST_KEPT - 1]]
         able = able[(sizes[able] > sizes[last]) | (times[able] <= times[last])]
-    found: list[int] = able[np.argsort(-sizes[able], kind="stable")].tolist()
+    found: list[int] = able.tolist()
     return found
 
 
@@ -269,27 +283,33 @@ def line_digest(line: bytes) -> str:
 
 def _body(pane: Pane) -> bytes:
     """The canonical bytes: all that equality means, nothing else."""
-    width = next(w for w in (1, 2, 4, 8) if not pane.counts.size or int(pane.counts.max()) < 1 << (8 * w - 1))
+    most = int(pane.counts.max()) if pane.counts.size else 0
+    width = next(w for w in (1, 2, 4, 8) if most < 1 << (8 * w - 1))
     keys = pane.sizes.astype("<f8") if pane.cells is None else pane.cells.astype("<i4")
     header = _HEADER.pack(
         _MAGIC, pane.cells is not None, width, len(pane.largest_events), pane.sizes.size, pane.n, pane.late,
         pane.smallest, pane.largest,
     )  # fmt: skip
-    events = b"".join(
-        struct.pack("<dq", event.size, event.time) + bytes.fromhex(event.digest) for event in pane.largest_events
-    )
+    pack = _EVENT.pack
+    events = b"".join([pack(e.size, e.time, bytes.fromhex(e.digest)) for e in pane.largest_events])
     return header + keys.tobytes() + pane.counts.astype(_COUNT_TYPES[width]).tobytes() + events
 
 
 def digest(pane: Pane) -> str:
     """BLAKE2b (16 bytes, hex) of the content, places left out: equal panes have equal digests."""
-    return blake2b(_body(pane), digest_size=16).hexdigest()
+    return digest_and_blob(pane)[0]
 
 
 def encode(pane: Pane) -> bytes:
     """The pane as one BLOB: body, places, CRC-32 over both."""
-    content = _body(pane) + msgspec.json.encode([event.place for event in pane.largest_events])
-    return content + struct.pack("<I", zlib.crc32(content))
+    return digest_and_blob(pane)[1]
+
+
+def digest_and_blob(pane: Pane) -> tuple[str, bytes]:
+    """What `digest` and `encode` give, for the price of one."""
+    body = _body(pane)
+    content = body + msgspec.json.encode([event.place for event in pane.largest_events])
+    return blake2b(body, digest_size=16).hexdigest(), content + struct.pack("<I", zlib.crc32(content))
 
 
 def decode(blob: bytes) -> Pane:
@@ -310,11 +330,8 @@ def decode(blob: bytes) -> Pane:
     counts = np.frombuffer(content, _COUNT_TYPES[width], k, at).astype(np.int64)
     at += width * k
     places = msgspec.json.decode(content[at + 24 * kept :], type=list[str])
-    events = []
-    for place in places:
-        size, time = struct.unpack_from("<dq", content, at)
-        events.append(LargeEvent(size, time, content[at + 16 : at + 24].hex(), place))
-        at += 24
+    named = zip(_EVENT.iter_unpack(content[at : at + 24 * kept]), places, strict=True)
+    events = [LargeEvent(size, time, mark.hex(), place) for (size, time, mark), place in named]
     cells = keys.astype(np.int64) if on_grid else None
     sizes = edges(cells) if cells is not None else keys.astype(np.float64)
     return Pane(sizes, counts, cells, late, smallest, largest, tuple(events))

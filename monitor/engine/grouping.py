@@ -24,10 +24,6 @@ class Groups:
     codes: NDArray[np.int64]
     panes: NDArray[np.int64]
 
-    def place(self, i: int) -> int:
-        """Where sorted event i stands in the block."""
-        return i if self.order is None else int(self.order[i])
-
 
 def groups_of(codes: NDArray[np.int32], panes: NDArray[np.int64]) -> Groups:
     """Group k > 0 events by their streams' codes >= 0 and the numbers of their panes."""

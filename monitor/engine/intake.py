@@ -199,13 +199,24 @@ def _consider(
     able = np.flatnonzero(sizes >= np.repeat(bars, groups.sizes))
     cuts = np.searchsorted(able, groups.firsts)
     counts = np.diff(cuts, append=able.size)
-    for i in np.flatnonzero(counts).tolist():
-        chosen = able[cuts[i] : cuts[i] + counts[i]]
-        builders[i].consider(
-            sizes[chosen],
-            times[chosen],
-            lambda k, chosen=chosen: describe(groups.place(int(chosen[k]))),  # type: ignore[misc]
-        )
+    sizes, times = sizes[able], times[able]
+    places = (able if groups.order is None else groups.order[able]).tolist()
+    for i, low, high in zip(
+        np.flatnonzero(counts).tolist(), cuts[counts > 0].tolist(), (cuts + counts)[counts > 0].tolist(), strict=True
+    ):
+        builders[i].consider(sizes[low:high], times[low:high], _Describe(describe, places[low:high]))
+
+
+class _Describe:
+    """describe, by the index among some events of a block."""
+
+    __slots__ = ("_describe", "_places")
+
+    def __init__(self, describe: Callable[[int], tuple[str, str]], places: list[int]) -> None:
+        self._describe, self._places = describe, places
+
+    def __call__(self, i: int) -> tuple[str, str]:
+        return self._describe(self._places[i])
 
 
 def _streams(state: State, chain: Chain, lines: Lines, groups: Groups, firsts: NDArray[np.int64]) -> list[Stream]:

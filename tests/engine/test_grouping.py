@@ -24,8 +24,9 @@ def test_groups_hold_every_event_in_order(listed: list[tuple[int, int]], ordered
     expected: dict[tuple[int, int], list[int]] = {}
     for i, key in enumerate(listed):
         expected.setdefault(key, []).append(i)
+    order = list(range(len(listed))) if groups.order is None else groups.order.tolist()
     found = {
-        (int(c), int(p)): [groups.place(k) for k in range(first, first + size)]
+        (int(c), int(p)): order[first : first + size]
         for c, p, first, size in zip(
             groups.codes, groups.panes, groups.firsts.tolist(), groups.sizes.tolist(), strict=True
         )

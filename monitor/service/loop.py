@@ -16,7 +16,8 @@ from storage.store import Store
 
 BLOCK = 4 << 20
 """Bytes taken from a feed in one turn."""
-COMMIT_EVENTS = 50_000
+COMMIT_EVENTS = 250_000
+"""Events held between commits at most: each of the many streams costs something a commit, whatever it brought."""
 COMMIT_SECONDS = 1.0
 AWAITED_SECONDS = 0.05
 """Between commits while a sender waits for one."""

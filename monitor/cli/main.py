@@ -33,6 +33,7 @@ COMMANDS = {
     "decide": "monitor.cli.acts:decide",
     "baseline": "monitor.cli.alarms:baseline",
     "promise": "monitor.cli.promise:promise_command",
+    "rehearse": "monitor.cli.rehearse:rehearse",
 }
 INTERRUPTED = 130
 INTERNAL = 70

@@ -143,3 +143,20 @@ def test_alarms_do_not_depend_on_the_rhythm(watched: Path, tmp_path: Path) -> No
         file.write("".join(line + "\n" for line in lines[20_000:]))
     assert command("run", "t.toml", "--finish", folder=tmp_path).returncode == 0
     assert export(tmp_path / "orders.db") == export(watched / "orders.db")
+
+
+def test_a_rehearsal_raises_the_same_alarms_and_touches_nothing(watched: Path, tmp_path: Path) -> None:
+    (tmp_path / "t.toml").write_text(SETTINGS)
+    (tmp_path / "old.jsonl").write_bytes((watched / "orders.jsonl").read_bytes())
+    done = command("rehearse", "t.toml", "old.jsonl", "--json", folder=tmp_path)
+    assert done.returncode == 0, done.stderr
+    found = json.loads(done.stdout)
+    assert [alarm["id"] for alarm in found["alarms"]] == [alarm["id"] for alarm in alarms(watched)]
+    assert sorted(path.name for path in tmp_path.iterdir()) == ["old.jsonl", "t.toml"]
+    north = next(stream for stream in found["streams"] if stream["stream"] == "north")
+    budgets = [trial["budget_days"] for trial in north["trials"]]
+    assert budgets == sorted(budgets)
+    spoke = [trial["spoke"]["exponent"] for trial in north["trials"]]
+    assert spoke == sorted(spoke)  # a longer budget never speaks earlier
+    missing = command("rehearse", "t.toml", "nowhere.jsonl", folder=tmp_path)
+    assert missing.returncode == 66

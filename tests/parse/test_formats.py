@@ -206,3 +206,9 @@ def test_a_line_too_long_for_a_pattern_is_not_matched() -> None:
     parsed = parser.parse(b"7" * (LONGEST_LINE + 1) + b"\n" + b"x " * 900 + b"8\n")
     assert parsed.rejected == {"too long for a pattern": 1}
     assert parsed.sizes.tolist() == [8.0]
+
+
+@pytest.mark.parametrize("field", ['a"b', "a\x07", "order.a\tb"])
+def test_a_field_that_no_record_can_name_is_refused_in_words(field: str) -> None:
+    with pytest.raises(FormatError, match="size: .* holds a quote, a backslash or a control character"):
+        compile_parser(LineFormat(lines="json", size=field))

@@ -220,16 +220,14 @@ class Store:
         self.db["settings"].insert_all(msgspec.to_builtins(fact) for fact in facts)
 
     def _put_streams(self, facts: list[StreamState]) -> None:
-        self.db["stream"].insert_all(
-            (
-                {
-                    "stream": fact.stream, "feed": fact.feed, "unit": fact.unit, "first_ns": fact.first,
-                    "newest_ns": fact.newest, "events": fact.events, "late": fact.late,
-                }
-                for fact in facts
-            ),
-            replace=True,
-        )  # fmt: skip
+        rows = [
+            {
+                "stream": fact.stream, "feed": fact.feed, "unit": fact.unit, "first_ns": fact.first,
+                "newest_ns": fact.newest, "events": fact.events, "late": fact.late,
+            }
+            for fact in facts
+        ]  # fmt: skip
+        self._insert("stream", rows, replace=True)
 
     def _put_advances(self, facts: list[Advance]) -> None:
         self.db["advance"].insert_all(
@@ -237,18 +235,26 @@ class Store:
         )
 
     def _put_parts(self, facts: list[PanePart]) -> None:
-        self.db["pane_part"].insert_all(
+        rows = [
             {
                 "stream": fact.stream, "from_ns": fact.start, "to_ns": fact.end, "events": fact.content.n,
                 "content": panes.encode(fact.content),
             }
             for fact in facts
-        )  # fmt: skip
+        ]  # fmt: skip
+        self._insert("pane_part", rows)
         for fact in facts:
             key = (fact.stream, fact.start)
             self._parts[key] += 1
             if self._parts[key] > PARTS_BEFORE_COMPACTION:
                 self._compact(fact)
+
+    def _insert(self, table: str, rows: list[dict[str, Any]], *, replace: bool = False) -> None:
+        """Insert rows of the same plain columns: where there may be thousands, looking at each value costs too much."""
+        if rows:
+            names, how = list(rows[0]), "insert or replace" if replace else "insert"
+            values = ", ".join(f":{name}" for name in names)
+            self.db.conn.executemany(f"{how} into {table} ({', '.join(names)}) values ({values})", rows)
 
     def _sum_of_parts(self, stream: str, start: int, now: int) -> panes.Pane:
         """The pane so far. A damaged part is set aside, so that one bad block does not stop the watch."""
@@ -278,12 +284,13 @@ class Store:
         rows, jobs = [], []
         for fact in facts:
             total = self._sum_of_parts(fact.stream, fact.start, fact.known_at)
+            digest, blob = panes.digest_and_blob(total)
             rows.append(
                 {
                     "stream": fact.stream, "from_ns": fact.start, "to_ns": fact.end, "events": total.n,
                     "late": total.late, "distinct_sizes": int(total.sizes.size), "resolution": total.resolution,
-                    "smallest": total.smallest, "largest": total.largest, "digest": panes.digest(total),
-                    "content": panes.encode(total), "known_at": fact.known_at,
+                    "smallest": total.smallest, "largest": total.largest, "digest": digest,
+                    "content": blob, "known_at": fact.known_at,
                 }
             )  # fmt: skip
             jobs.append(
@@ -292,10 +299,12 @@ class Store:
                     "settings": fact.settings, "attempts": 0,
                 }
             )  # fmt: skip
-            self.db.execute("delete from pane_part where stream = ? and from_ns = ?", [fact.stream, fact.start])
             self._parts.pop((fact.stream, fact.start), None)
-        self.db["pane"].insert_all(rows)
-        self.db["refit_job"].insert_all(jobs)
+        self.db.conn.executemany(
+            "delete from pane_part where stream = ? and from_ns = ?", [(fact.stream, fact.start) for fact in facts]
+        )
+        self._insert("pane", rows)
+        self._insert("refit_job", jobs)
 
     def _put_chains(self, facts: list[ChainState]) -> None:
         self.db["chain"].insert_all(

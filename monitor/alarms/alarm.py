@@ -65,6 +65,8 @@ class Decision(msgspec.Struct, frozen=True, kw_only=True):
 class Alarm(msgspec.Struct, frozen=True, kw_only=True):
     """One alarm, from the moment its rule spoke. Times and spans are ns.
 
+    found_at       when the rule said what stands here: direction, change, before and after, cause
+    momentary      each time its rule speaks is told anew
     standing       the condition is there
     seen_by        who acknowledged it since the condition last came; None while nobody has
     pending_until  end of the on-delay; until then it is "normal" and nobody is told
@@ -79,6 +81,7 @@ class Alarm(msgspec.Struct, frozen=True, kw_only=True):
     state: State
     raised_at: int
     raised_after_events: int
+    found_at: int
     direction: Direction | None
     changed_at: int | None
     changed_between: tuple[int, int] | None
@@ -92,6 +95,7 @@ class Alarm(msgspec.Struct, frozen=True, kw_only=True):
     return_below: float
     off_delay: int
     longest_shelf: int
+    momentary: bool = False
     message: str = ""
     standing: bool = True
     seen_by: str | None = None

@@ -74,6 +74,7 @@ def raise_alarm(spoke: Spoke, policy: Policy, known: Sequence[KnownChange] = ())
         return_below=policy.return_below,
         off_delay=policy.off_delay,
         longest_shelf=policy.longest_shelf,
+        momentary=policy.momentary,
         pending_until=spoke.at + policy.on_delay,
         **_finding(spoke),
     )
@@ -166,7 +167,7 @@ class _Run:
 
     def _tell(self, before: Alarm, event: Event, t: int) -> None:
         after = self.alarm
-        if after.state == UNACKNOWLEDGED and (before.state != UNACKNOWLEDGED or event == "turns"):
+        if after.state == UNACKNOWLEDGED and (before.state != UNACKNOWLEDGED or event in ("turns", "recurs")):
             # Whatever is announced anew is to be acknowledged anew.
             self.set(seen_by=None)
             self.announce(t)
@@ -228,14 +229,17 @@ def _leaving(before: Alarm, to: str) -> dict[str, object]:
 
 def _finding(spoke: Spoke) -> dict[str, Any]:
     return {
-        "direction": spoke.direction, "changed_at": spoke.changed_at, "changed_between": spoke.changed_between,
+        "found_at": spoke.at, "direction": spoke.direction, "changed_at": spoke.changed_at,
+        "changed_between": spoke.changed_between,
         "unit": spoke.unit, "measure": spoke.measure, "before": spoke.before, "after": spoke.after,
         "cause": spoke.cause,
     }  # fmt: skip
 
 
 def _speaks(run: _Run, spoke: Spoke) -> None:
-    """The rule speaks again. A condition that came back has not been seen; one that turned is another condition."""
+    """The rule speaks again. A condition that came back has not been seen; one that turned is another condition;
+    one that lasts for a moment only is another one each time.
+    """
     alarm = run.alarm
     if alarm.pending_until is not None:
         run.set(spoken=alarm.spoken + 1, quiet_since=None, **_finding(spoke))
@@ -244,11 +248,11 @@ def _speaks(run: _Run, spoke: Spoke) -> None:
     if alarm.state == NORMAL:
         run.refuse(refusal(NORMAL, "speaks"))
         return
-    anew = turned or not alarm.standing
+    anew = turned or alarm.momentary or not alarm.standing
     run.set(standing=True, spoken=alarm.spoken + 1, quiet_since=None, seen_by=None if anew else alarm.seen_by)
     if anew:
         run.set(**_finding(spoke))
-    run.move("turns" if turned else "speaks", spoke.at)
+    run.move("recurs" if alarm.momentary else "turns" if turned else "speaks", spoke.at)
 
 
 def _measured(run: _Run, share: float, t: int) -> None:

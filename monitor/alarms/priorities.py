@@ -31,6 +31,7 @@ class Policy(msgspec.Struct, frozen=True, kw_only=True):
     return_below  it counts as gone while the rule's statistic stays below this share of its threshold ...
     off_delay     ... for so long
     longest_shelf the longest that one act of shelving may last
+    momentary     each time the rule speaks is an occurrence of its own, to be told and seen anew
     response      what the person who is told should do: one sentence without its full stop
     """
 
@@ -40,6 +41,7 @@ class Policy(msgspec.Struct, frozen=True, kw_only=True):
     off_delay: int = DAY
     return_below: float = 0.1
     longest_shelf: int = 30 * DAY
+    momentary: bool = False
 
 
 _CAUSE = "look for what changed then, and decide whether the plan still holds"
@@ -65,7 +67,12 @@ POLICIES: dict[Rule, Policy] = {
     "rejects": Policy(
         priority="medium", response="look at the rejected lines and compare them with the settings", off_delay=HOUR
     ),
-    "single event": Policy(priority="high", response="look at this event in its file before you act on it"),
+    "single event": Policy(
+        priority="high",
+        response="look at this event in its file before you act on it",
+        off_delay=10 * MINUTE,
+        momentary=True,
+    ),
 }
 """Common practice for the choice: high where a limit or the watch itself is at stake, low where figures get less sure.
 

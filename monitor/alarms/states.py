@@ -35,6 +35,7 @@ Event = Literal[
     "on-delay over",
     "speaks",
     "turns",
+    "recurs",
     "clears",
     "acknowledge",
     "shelve",
@@ -50,7 +51,7 @@ Event = Literal[
     "data-fault",
 ]
 EVENTS: tuple[Event, ...] = (
-    "on-delay over", "speaks", "turns", "clears", "acknowledge", "shelve", "unshelve", "shelf over", "remove",
+    "on-delay over", "speaks", "turns", "recurs", "clears", "acknowledge", "shelve", "unshelve", "shelf over", "remove",
     "restore", "wait over", "accept", "wait", "one-off", "planned", "data-fault",
 )  # fmt: skip
 
@@ -91,6 +92,7 @@ MOVES: tuple[Move, ...] = (
     Move(NORMAL, "data-fault", "any", NORMAL, "judged afterwards to be a fault of the data"),
     Move(UNACKNOWLEDGED, "speaks", "any", UNACKNOWLEDGED, "the rule spoke again"),
     Move(UNACKNOWLEDGED, "turns", "any", UNACKNOWLEDGED, "the rule speaks of the other direction now"),
+    Move(UNACKNOWLEDGED, "recurs", "any", UNACKNOWLEDGED, "it happened again"),
     Move(UNACKNOWLEDGED, "clears", "any", RETURNED, "the condition has gone"),
     Move(UNACKNOWLEDGED, "acknowledge", "any", ACKNOWLEDGED, "acknowledged"),
     Move(UNACKNOWLEDGED, "shelve", "any", SHELVED, "shelved"),
@@ -102,6 +104,7 @@ MOVES: tuple[Move, ...] = (
     Move(UNACKNOWLEDGED, "data-fault", "any", ACKNOWLEDGED, "acknowledged as a fault of the data"),
     Move(ACKNOWLEDGED, "speaks", "any", ACKNOWLEDGED, "the rule spoke again"),
     Move(ACKNOWLEDGED, "turns", "any", UNACKNOWLEDGED, "the rule speaks of the other direction now"),
+    Move(ACKNOWLEDGED, "recurs", "any", UNACKNOWLEDGED, "it happened again"),
     Move(ACKNOWLEDGED, "clears", "any", NORMAL, "the condition has gone"),
     Move(ACKNOWLEDGED, "shelve", "any", SHELVED, "shelved"),
     Move(ACKNOWLEDGED, "remove", "any", OUT_OF_SERVICE, "taken out of service"),
@@ -113,6 +116,7 @@ MOVES: tuple[Move, ...] = (
     Move(ACKNOWLEDGED, "data-fault", "any", ACKNOWLEDGED, "judged to be a fault of the data"),
     Move(RETURNED, "speaks", "any", UNACKNOWLEDGED, "the condition is back"),
     Move(RETURNED, "turns", "any", UNACKNOWLEDGED, "the rule speaks of the other direction now"),
+    Move(RETURNED, "recurs", "any", UNACKNOWLEDGED, "it happened again"),
     Move(RETURNED, "acknowledge", "any", NORMAL, "acknowledged after it had gone"),
     Move(RETURNED, "shelve", "any", SHELVED, "shelved"),
     Move(RETURNED, "remove", "any", OUT_OF_SERVICE, "taken out of service"),
@@ -122,6 +126,7 @@ MOVES: tuple[Move, ...] = (
     Move(RETURNED, "data-fault", "any", NORMAL, "judged to be a fault of the data"),
     Move(SHELVED, "speaks", "any", SHELVED, "the rule spoke while shelved"),
     Move(SHELVED, "turns", "any", SHELVED, "the rule spoke of the other direction while shelved"),
+    Move(SHELVED, "recurs", "any", SHELVED, "it happened again while shelved"),
     Move(SHELVED, "clears", "any", SHELVED, "the condition went while shelved"),
     Move(SHELVED, "shelve", "any", SHELVED, "shelved with another end"),
     *_ends(SHELVED, "unshelve", "unshelved"),
@@ -129,6 +134,7 @@ MOVES: tuple[Move, ...] = (
     Move(SHELVED, "remove", "any", OUT_OF_SERVICE, "taken out of service"),
     Move(OUT_OF_SERVICE, "speaks", "any", OUT_OF_SERVICE, "the rule spoke while out of service"),
     Move(OUT_OF_SERVICE, "turns", "any", OUT_OF_SERVICE, "the rule spoke of the other direction while out of service"),
+    Move(OUT_OF_SERVICE, "recurs", "any", OUT_OF_SERVICE, "it happened again while out of service"),
     Move(OUT_OF_SERVICE, "clears", "any", OUT_OF_SERVICE, "the condition went while out of service"),
     *_ends(OUT_OF_SERVICE, "restore", "back in service"),
 )
@@ -147,6 +153,7 @@ _CLOSED = "it is closed, and its condition has gone"
 REFUSALS: dict[tuple[State, Event], str] = {
     (NORMAL, "speaks"): "it is closed: what the rule says opens a new alarm",
     (NORMAL, "turns"): "it is closed: what the rule says opens a new alarm",
+    (NORMAL, "recurs"): "it is closed: what the rule says opens a new alarm",
     (NORMAL, "acknowledge"): f"there is nothing to acknowledge: {_CLOSED}",
     (NORMAL, "shelve"): f"there is nothing to shelve: {_CLOSED}",
     (NORMAL, "wait"): f"there is nothing to wait for: {_CLOSED}",

@@ -35,9 +35,9 @@ def after(alarm: Alarm, *stimuli: Stimulus, t: int = T0 + MINUTE) -> Alarm:
     return alarm
 
 
-def alarm_in(state: State, *, stands: bool = True, seen: bool = False) -> Alarm:
+def alarm_in(state: State, *, stands: bool = True, seen: bool = False, momentary: bool = False) -> Alarm:
     """An alarm that came into this state by legal moves."""
-    alarm = raise_alarm(SPOKE, policy()).alarm
+    alarm = raise_alarm(SPOKE, policy(momentary=momentary)).alarm
     if state == "normal":
         return after(alarm, Acknowledge(by="ana"), Cleared())
     if state == "returned to normal unacknowledged":

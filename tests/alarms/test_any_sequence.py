@@ -42,9 +42,10 @@ class AnySequence(RuleBasedStateMachine):
         )
         self.told: set[str] = set()
 
-    @initialize(on_delay=st.sampled_from([0, HOUR]), off_delay=st.sampled_from([MINUTE, HOUR]))
-    def raised(self, on_delay: int, off_delay: int) -> None:
-        self.keep(None, raise_alarm(spoke(at=self.t), policy(on_delay=on_delay, off_delay=off_delay), self.known))
+    @initialize(on_delay=st.sampled_from([0, HOUR]), off_delay=st.sampled_from([MINUTE, HOUR]), momentary=st.booleans())
+    def raised(self, on_delay: int, off_delay: int, momentary: bool) -> None:
+        treated = policy(on_delay=on_delay, off_delay=off_delay, momentary=momentary)
+        self.keep(None, raise_alarm(spoke(at=self.t), treated, self.known))
 
     def keep(self, before: Alarm | None, outcome: Outcome) -> None:
         state = before.state if before else "normal"

@@ -9,7 +9,7 @@ from monitor.alarms.alarm import AcceptChange, AddKnown, Alarm, KeepOut, Restart
 from monitor.alarms.decisions import MEANINGS, only_this
 from monitor.alarms.known import KnownChange
 from monitor.alarms.machine import raise_alarm, reminder, step
-from monitor.alarms.priorities import DAY, HOUR, MINUTE
+from monitor.alarms.priorities import DAY, HOUR, MINUTE, POLICIES
 from monitor.alarms.states import CHOICES
 from monitor.alarms.stimuli import (
     Acknowledge,
@@ -94,6 +94,18 @@ def test_an_alarm_that_nobody_has_acknowledged_is_told_again_when_it_turns_but_n
     turned = step(alarm, Speaks(spoke=spoke(at=T0 + HOUR, direction="lighter", after=3000.0)), T0 + HOUR)
     assert [notice.kind for notice in turned.notices] == ["raised again"]
     assert (turned.alarm.direction, turned.alarm.after) == ("lighter", 3000.0)
+
+
+def test_each_single_event_is_told_even_while_the_one_before_it_stands() -> None:
+    one = spoke(rule="single event", direction=None, measure="size", after=9400.0)
+    first = raise_alarm(one, POLICIES["single event"])
+    seen = step(first.alarm, Acknowledge(by="ana"), T0 + MINUTE).alarm
+    second = step(seen, Speaks(spoke=msgspec.structs.replace(one, at=T0 + 2 * MINUTE, after=8800.0)), T0 + 2 * MINUTE)
+    assert (second.alarm.state, second.alarm.seen_by, second.alarm.after) == ("unacknowledged", None, 8800.0)
+    assert (second.alarm.raised_at, second.alarm.found_at) == (T0, T0 + 2 * MINUTE)
+    assert [notice.kind for notice in second.notices] == ["raised again"]
+    third = step(second.alarm, Speaks(spoke=msgspec.structs.replace(one, at=T0 + 3 * MINUTE)), T0 + 3 * MINUTE)
+    assert [notice.kind for notice in third.notices] == ["raised again"]
 
 
 def test_a_shelf_ends_at_its_own_moment_however_late_the_clock_is_looked_at() -> None:

@@ -70,6 +70,7 @@ def stimulus_for(event: str) -> tuple[Stimulus, int]:
     at_once: dict[str, Stimulus] = {
         "speaks": Speaks(spoke=spoke(at=NOW)),
         "turns": Speaks(spoke=spoke(at=NOW, direction="lighter")),
+        "recurs": Speaks(spoke=spoke(at=NOW)),
         "clears": Cleared(),
         "acknowledge": Acknowledge(by="bo"),
         "shelve": Shelve(by="bo", until=T0 + 2 * DAY),
@@ -89,7 +90,9 @@ def test_every_row_of_the_table_is_followed(move: Move) -> None:
         alarm = step(alarm_in("acknowledged"), Decide(by="bo", choice="wait", until=T0 + DAY), NOW).alarm
     else:
         stands = move.condition in ("any", "stands")
-        alarm = alarm_in(move.state, stands=stands, seen=move.condition == "gone, seen")
+        alarm = alarm_in(
+            move.state, stands=stands, seen=move.condition == "gone, seen", momentary=move.event == "recurs"
+        )
     stimulus, t = stimulus_for(move.event)
     outcome = step(alarm, stimulus, t)
     assert outcome.refused is None
@@ -101,8 +104,8 @@ def test_every_row_of_the_table_is_followed(move: Move) -> None:
 
 @pytest.mark.parametrize(("state", "event"), [pair for pair in REFUSALS if stimulus_for(pair[1])[0] != Ticked()])
 def test_every_refusal_is_said_in_words_and_changes_nothing(state: State, event: str) -> None:
-    if (state, event) == ("normal", "turns"):
-        event = "speaks"  # both are told alike
+    if state == "normal" and event in ("turns", "recurs"):
+        event = "speaks"  # all three are told alike
     alarm = alarm_in(state)
     outcome = step(alarm, stimulus_for(event)[0], NOW)
     assert outcome.refused == refusal(state, event)  # type: ignore[arg-type]
@@ -111,7 +114,7 @@ def test_every_refusal_is_said_in_words_and_changes_nothing(state: State, event:
 
 
 def test_nothing_becomes_acknowledged_but_by_a_person() -> None:
-    by_itself = {"on-delay over", "speaks", "turns", "clears", "shelf over", "wait over"}
+    by_itself = {"on-delay over", "speaks", "turns", "recurs", "clears", "shelf over", "wait over"}
     silent = [m for m in MOVES if m.event in by_itself and m.to == "acknowledged" and m.state != "acknowledged"]
     assert silent == []
     assert find_move("shelved", "shelf over", stands=True, seen=True) == find_move(

@@ -101,10 +101,10 @@ def _concluded(alarm: Alarm, at: int) -> str:
 def _since(alarm: Alarm, zone: str) -> str:
     """' since about 14:05 WET (13:20 to 14:40)'; without a known change the moment it was seen."""
     if alarm.rule == "single event":
-        when = short_moment(alarm.raised_at, zone, alarm.raised_at)
+        when = short_moment(alarm.found_at, zone, alarm.raised_at)
         return f" at {when}{f', {plain(alarm.cause)}' if alarm.cause else ''}"
     if alarm.changed_at is None:
-        return f", seen at {short_moment(alarm.raised_at, zone, alarm.raised_at)}"
+        return f", seen at {short_moment(alarm.found_at, zone, alarm.raised_at)}"
     text = f" since about {short_moment(alarm.changed_at, zone, alarm.raised_at)}"
     if alarm.changed_between is None:
         return text

@@ -78,6 +78,15 @@ def test_times_of_other_days_name_their_day_and_a_change_of_the_clocks_its_zones
     assert "since about 18 Sep 15:13 WEST (17 Sep 15:13 WEST to 19 Sep 15:13 WEST);" in alarm_message(days_ago, FACTS)
 
 
+def test_a_single_event_is_told_with_its_own_moment() -> None:
+    first = made("single event", measure="size", after=9400.0, direction=None, cause="above the limit")
+    again = spoke(
+        rule="single event", at=T0 + DAY, measure="size", after=8800.0, direction=None, cause="above the limit"
+    )
+    message = alarm_message(step(first, Speaks(spoke=again), T0 + DAY).alarm, FACTS)
+    assert message.startswith("north-dock: one event of 8 800 units at 22 Sep 15:13 WEST, above the limit;")
+
+
 def test_without_a_limit_or_figures_nothing_is_invented() -> None:
     facts = msgspec.structs.replace(FACTS, limit=None, planned=False)
     assert "one event in 10 000 passes 9 400 units now (before 5 200). Look" in alarm_message(made("exponent"), facts)

@@ -48,7 +48,7 @@ class Ground(msgspec.Struct, frozen=True, kw_only=True):
     words          the ground, for people
     """
 
-    budget_days: float | None
+    budget_days: float
     promised_days: float
     blocks: Blocks | None
     number: int

@@ -237,18 +237,34 @@ def sizes_run(
 
 
 def gaps_run(
-    share: float, after: float, *, prior: int, ln_threshold: float, runs: int, key: int, cap: int = _LONGEST
+    share: float,
+    after: float,
+    *,
+    prior: int,
+    ln_threshold: float,
+    runs: int,
+    key: int,
+    cap: int = _LONGEST,
+    quiet: int = 0,
 ) -> Runs:
-    """The tail-share rule on the clock of events, when the share is `after` and was `share` in the baseline."""
+    """The tail-share rule on the clock of events: the share is `share`, and `after` once `quiet` gaps have passed.
+
+    Steps and clock are counted from the change; runs that speak before have steps <= 0.
+    """
     draw = np.random.Generator(np.random.PCG64(key))
     total: Row = np.zeros(runs)
     if prior:
         total = (draw.negative_binomial(prior, share, runs) + 0.5 * prior).astype(np.float64)
+    passed = np.zeros(runs)
 
-    def values(_: int) -> Row:
-        return draw.geometric(after, runs).astype(np.float64)
+    def values(step: int) -> Row:
+        gaps = draw.geometric(after if step > quiet else share, runs).astype(np.float64)
+        if step <= quiet:
+            np.add(passed, gaps, out=passed)
+        return gaps
 
-    return _run(values, _Course(prior, total, 0.5, True), ln_threshold, cap)
+    found = _run(values, _Course(prior, total, 0.5, True), ln_threshold, cap + quiet)
+    return Runs(found.steps - quiet, found.clock - passed)
 
 
 class _Course(msgspec.Struct, frozen=True):

@@ -102,6 +102,19 @@ def test_ranks_are_uniform_from_the_first_group_on_and_groups_do_not_depend_on_s
     assert state == whole.state
 
 
+def test_the_rank_of_a_group_lies_in_its_own_slice_of_the_unit_interval():
+    # With j - 1 others, of which k are smaller, the randomised rank lies in (k/j, (k+1)/j).
+    law = groups.GroupLaw(stream="r", size=50)
+    drawn = groups.drawn_groups(law)
+    earlier = (1.0, 1.5, 2.5)
+    others = np.array([*drawn.cvs, *earlier])
+    for seed in range(30):
+        y = np.random.default_rng(seed).standard_exponential(50)
+        found = groups.step(groups.GroupState(finished=seed, cvs=earlier, longests=earlier), y, law).ranked[0]
+        below = (others < found.group.cv).sum()
+        assert below / 44 < found.cv_low < (below + 1) / 44
+
+
 def test_group_statistics_are_those_of_the_definition():
     law = groups.GroupLaw(stream="b", size=50)
     y = np.random.default_rng(2).standard_exponential(50)
@@ -203,6 +216,25 @@ def test_silence_is_scored_at_the_promised_rate_for_quiet_and_busy_streams(expec
     rng = np.random.default_rng(12)
     assert _silences(rng.poisson(expected, 20_000), expected, Past(500.0, 500.0)) < 82
     assert _silences(np.zeros(40), 1.0, Past(500.0, 500.0)) >= 1
+
+
+def test_a_silence_is_scored_by_the_formula_whole_or_in_pieces():
+    # Silent for 2.5, then events in a slot of 1 expected: n = 40 silences lasted 50 before. Second implementation.
+    state = no_events.SilenceState(Past(40.0, 50.0))
+    total = np.zeros(3)
+    for place, expected in enumerate((1.0, 1.5)):
+        done = no_events.step(state, stream="q", start_ns=place, events=0, expected=expected, clock=0.5)
+        state, total = done.state, total + done.increment.ln_p
+    thetas = np.array([3.0, 10.0, 30.0])
+    assert total == pytest.approx((1 - 1 / thetas) * 40 * np.log1p(2.5 / 50))
+    done = no_events.step(state, stream="q", start_ns=9, events=4, expected=1.0, clock=0.5)
+    silence = done.state.past.total - 50.0
+    assert 2.5 < silence < 3.5
+    assert total + done.increment.ln_p == pytest.approx((1 - 1 / thetas) * 40 * np.log1p(silence / 50) - np.log(thetas))
+    calm = no_events.SilenceState(Past(40.0, 50.0))
+    fresh = no_events.step(calm, stream="q", start_ns=3, events=1, expected=0.0, clock=1.0)
+    assert fresh.increment.ln_p == pytest.approx(-np.log(thetas))
+    assert fresh.increment.ln_q == fresh.increment.ln_p
 
 
 def test_hours_are_closed_only_when_silence_there_cannot_be_chance():

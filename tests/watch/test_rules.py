@@ -10,9 +10,10 @@ import numpy as np
 import pytest
 
 from monitor.watch import rules
-from monitor.watch.baseline import planned
+from monitor.watch.baseline import measured, planned
 from monitor.watch.level import Allowance
-from monitor.watch.slots import SlotFacts
+from monitor.watch.slots import SlotFacts, Yardstick, facts_of
+from storage.grid import cell_of, edges
 from tests.watch.streams import DAY, HOUR, YARDSTICK, power_law, spoken_by, stream_of, tally, watch_of
 
 BASE_DAYS = 21
@@ -213,3 +214,34 @@ def test_way_is_whole_exactly_at_the_threshold(watch):
     reading = rules._reading(watch.rules[0], live(14, 1)[0], None, (watch.rules[0].ln_threshold,) * 8, None)
     assert reading.way == pytest.approx(1.0)
     assert watch.rules[0].ln_threshold == pytest.approx(log(60.0 / 0.3))
+
+
+@pytest.mark.parametrize("kind", ["grid", "whole"])
+def test_grid_and_whole_baselines_are_as_silent(kind):
+    # 8 streams, 120 days, one in 12 days: at most 80 expected (about 33 come); each rule against its own part plus
+    # 3.8 standard deviations (1e-4 for another seed). Whole sizes come from the zeta law itself, xmin 10.
+    k0 = int(cell_of(np.array([100.0]))[0])
+    grid = Yardstick(xmin=float(edges(np.array([k0]))[0]), k0=k0)
+    yardstick = grid if kind == "grid" else Yardstick(xmin=10.0, counting="whole")
+    table = np.arange(10.0, 3e5)
+    below = np.cumsum(table**-2.5) / (table**-2.5).sum()
+
+    def slots(rng, name, start, days, length):
+        for at in range(start, start + days * DAY, length):
+            n = int(rng.poisson(400 * length / DAY))
+            tail = grid.xmin * np.exp(rng.standard_exponential(n) / 1.5)
+            if kind == "whole":
+                tail = table[np.searchsorted(below, rng.random(n))]
+            sizes = np.where(rng.random(n) < 0.1, tail, 1.0)
+            slot = SlotFacts(stream=name, start_ns=at, length_ns=length, hour=at // HOUR % 168, lines=n)
+            yield facts_of(sizes, np.ones(n, np.int64), slot, yardstick)
+
+    found, watch = Counter(), None
+    for seed in range(8):
+        rng = np.random.default_rng([seed, 7])
+        base = measured(list(slots(rng, f"{kind}-{seed}", 0, 14, HOUR)), yardstick=yardstick, alpha=2.5)
+        watch = rules.begin(base, 12.0)
+        found += tally(spoken_by(watch, list(slots(rng, f"{kind}-{seed}", 14 * DAY, 120, DAY))))
+    assert 10 < sum(found.values()) <= 80
+    for one in watch.rules:
+        assert found[one.rule] <= 80 * one.weight + 3.8 * np.sqrt(80 * one.weight), (one.rule, found)

@@ -41,6 +41,8 @@ class OpenFeed:
         self._source: Source = open_source(_place(plan, base), bookmarks, clock)
         self._answering = self._source if isinstance(self._source, Answering) else None
         self._troubles: list[str] = []
+        self.held = 0
+        """Bytes of lines given since the caller last set this to 0."""
 
     def poll(self, limit: int) -> Iterator[Arrived]:
         """New lines, about `limit` bytes at most."""
@@ -90,6 +92,7 @@ class OpenFeed:
 
     def _arrived(self, block: Block) -> Arrived:
         parsed = self._parsed(block)
+        self.held += len(block.data)
         return Arrived(
             feed=self.plan.name, chain=block.chain, lines=_lines(block, parsed), bookmark=block.bookmark,
             now=self._clock.now(),

@@ -16,8 +16,10 @@ from storage.store import Store
 
 BLOCK = 4 << 20
 """Bytes taken from a feed in one turn."""
-COMMIT_EVENTS = 250_000
-"""Events held between commits at most: each of the many streams costs something a commit, whatever it brought."""
+COMMIT_EVENTS = 500_000
+COMMIT_BYTES = 64 << 20
+"""What is held between commits at most; the second is of lines read. Each of the many streams costs something a
+commit, whatever it brought, so commits should be few."""
 COMMIT_SECONDS = 1.0
 AWAITED_SECONDS = 0.05
 """Between commits while a sender waits for one."""
@@ -55,7 +57,7 @@ class Loop:
         active = self._failing_store() or self._poll_feeds()
         real = self.clock.monotonic()
         due = AWAITED_SECONDS if any(feed.awaited for feed in self.feeds) else COMMIT_SECONDS
-        if self.state.uncommitted >= COMMIT_EVENTS or real - self._last_commit >= due:
+        if self._much_held() or real - self._last_commit >= due:
             self.commit()
         self._heed_requests()
         self._poll_worker()
@@ -69,6 +71,9 @@ class Loop:
             self._pending = step(self.state, Asked(request=request, act=act, now=self.clock.now()))
             if not self.commit():
                 return
+
+    def _much_held(self) -> bool:
+        return self.state.uncommitted >= COMMIT_EVENTS or sum(feed.held for feed in self.feeds) >= COMMIT_BYTES
 
     def _failing_store(self) -> bool:
         """While commits fail, nothing more is read: memory stays bounded and the positions stay true."""
@@ -106,6 +111,8 @@ class Loop:
             self.log.error(f"{error} Nothing is lost; reading stops until the store can be written.")
             return False
         self._pending = []
+        for feed in self.feeds:
+            feed.held = 0
         self._retry_after = FIRST_RETRY
         for sentence in self.store.damaged:
             self.log.error(sentence)
@@ -165,7 +172,7 @@ class Loop:
         for feed in self.feeds:
             for arrived in feed.finish():
                 step(self.state, arrived)
-                if self.state.uncommitted >= COMMIT_EVENTS:
+                if self._much_held():
                     self.commit()
             for trouble in feed.troubles():
                 self.log.warning(trouble)

@@ -67,7 +67,7 @@ def tell(story: Story, console: Console) -> None:
         over = _Over(writing, folder / "orders.db")
         if can_redraw(console):
             with StoreWatch(settings) as watch:
-                run_live(watch, console, look_of(console), None, clock=clock.now, over=over)
+                run_live(watch, console, look_of(console), None, clock=clock, over=over)
         else:
             _tell_flags(folder / "orders.db", console, over)
     _close(settings, console)

@@ -5,26 +5,43 @@ Judgements are written by hand, so that a frame can be checked figure by figure;
 
 from __future__ import annotations
 
+from math import log, log1p
 from pathlib import Path
 
 import msgspec
 import numpy as np
 
+from monitor.alarms.alarm import Spoke
+from monitor.alarms.machine import raise_alarm, step
+from monitor.alarms.priorities import POLICIES
+from monitor.alarms.stimuli import Acknowledge, Shelve, Stimulus
 from monitor.plan import STARTER
+from monitor.render.words.alarm import PlanFacts, alarm_message
 from monitor.tail.judgement import GoodnessOfFit, Judgement, Level, Limit, NearMinimum, Rival
+from monitor.watch.baseline import planned as planned_baseline
+from monitor.watch.dependence import Ground
 from monitor.watch.flags import Flag
+from monitor.watch.level import Allowance
+from monitor.watch.rules import Reading, Ruled, begin, start
+from monitor.watch.slots import Yardstick
 from storage.facts import (
+    AlarmMoved,
+    AlarmStood,
     BaselineSet,
     ChainState,
     Fact,
+    NoteWritten,
     PanePart,
     PaneSealed,
     RefitStored,
     RejectedSample,
     SettingsTaken,
     StreamState,
+    WatchBegun,
+    WatchStood,
 )
-from storage.pane import PaneBuilder, line_digest
+from storage.gathering import PaneBuilder
+from storage.pane import line_digest
 from storage.store import Store, open_store
 
 SECOND = 1_000_000_000
@@ -171,6 +188,95 @@ def east_dock() -> list[Fact]:
     ]  # fmt: skip
 
 
+AT = LAST_PANE - HOUR
+"""When the alarms below were raised: 13:00."""
+
+
+def watch_of(
+    name: str, evidence: dict[str, float] | None = None, *, measured: bool = True,
+    directions: dict[str, str] | None = None,
+) -> list[Fact]:  # fmt: skip
+    """A watch and what its rules read last. evidence: of a rule, as a share of its threshold; else a thousandth."""
+    yardstick = Yardstick(xmin=120.0, counting="measured", passage=6_000.0)
+    watch = begin(planned_baseline(name, 2.5, yardstick, Allowance(a_day=1 / 30)), 540.0)
+    begun = f"watch-{line_digest(name.encode())}"
+    ground = Ground(
+        budget_days=540.0, promised_days=450.0, blocks="days", number=40, alarms=2, days=900.0,
+        words="measured on the stream's own past (40 days resampled)",
+    )  # fmt: skip
+    readings = [
+        reading_of(ruled, name, (evidence or {}).get(ruled.rule, 0.001), (directions or {}).get(ruled.rule))
+        for ruled in watch.rules
+    ]
+    return [
+        WatchBegun(
+            id=begun, stream=name, baseline=f"plan-{name}", effective_from=NOW - 20 * 24 * HOUR,
+            watch=msgspec.json.encode(watch).decode(),
+            ground=msgspec.json.encode(ground).decode() if measured else None, known_at=NOW - 20 * 24 * HOUR,
+        ),
+        WatchStood(
+            stream=name, watch=begun, at=LAST_PANE, state=msgspec.json.encode(start(watch, LAST_PANE)).decode(),
+            readings=msgspec.json.encode(readings).decode(),
+        ),
+    ]  # fmt: skip
+
+
+def reading_of(ruled: Ruled, name: str, share: float, direction: str | None = None) -> Reading:
+    """What a rule reads when its evidence is that share of its threshold; rules without evidence read none."""
+    gathers = ruled.rule not in ("body", "single event")
+    return Reading(
+        rule=ruled.rule, stream=name, at_ns=LAST_PANE, ln_p=(), ln_q=(), ln_threshold=ruled.ln_threshold,
+        ln_statistic=ruled.ln_threshold + log(share) if gathers else None,
+        way=log1p(100 * share) / log(101) if gathers else 0.0, direction=direction,  # type: ignore[arg-type]
+    )  # fmt: skip
+
+
+def alarm(name: str, rule: str, *stimuli: Stimulus, **spoken: object) -> list[Fact]:
+    """An alarm raised at 13:00 and what was done with it since, as the engine stores it."""
+    spoke = Spoke(stream=name, rule=rule, at=AT, events=90_000, **spoken)  # type: ignore[arg-type]
+    outcomes = [raise_alarm(spoke, POLICIES[rule])]  # type: ignore[index]
+    facts = PlanFacts(timezone="Europe/Lisbon", unit="units", one_in=10_000, limit=6_000.0, planned=True)
+    worded = msgspec.structs.replace(outcomes[0].alarm, message=alarm_message(outcomes[0].alarm, facts))
+    for number, stimulus in enumerate(stimuli):
+        outcomes.append(step(worded, stimulus, AT + (number + 1) * 60 * SECOND))
+        assert outcomes[-1].refused is None
+        worded = outcomes[-1].alarm
+    moves = [change for outcome in outcomes for change in outcome.changes]
+    return [
+        AlarmStood(
+            id=worded.id, stream=name, rule=rule, state=worded.state, raised_at=AT, open=worded.is_open,
+            alarm=msgspec.json.encode(worded).decode(), known_at=AT,
+        ),
+        *(
+            AlarmMoved(
+                id=f"{worded.id}-{number}", alarm=worded.id, at=move.at, from_state=move.from_state,
+                to_state=move.to_state, cause=move.cause, by=move.by, note=move.note, known_at=move.at,
+            )
+            for number, move in enumerate(moves)
+        ),
+    ]  # fmt: skip
+
+
+def watches_and_alarms() -> list[Fact]:
+    """One dock's tail is heavier and its limit passed too often (seen by ana), one is silent, one alarm is shelved."""
+    return [
+        *watch_of("north-dock", {"exponent": 0.004}, measured=False),
+        *watch_of("east-dock"),
+        *watch_of("south-dock", {"exponent": 0.09}, directions={"exponent": "heavier", "tail share": "lighter"}),
+        *watch_of(WIDE),
+        *watch_of(EVIL),
+        *alarm(
+            "north-dock", "exponent", direction="heavier", changed_at=AT - HOUR, changed_between=(AT - 2 * HOUR, AT),
+            unit="units", measure="level", before=5_200.0, after=13_000.0,
+        ),
+        *alarm("north-dock", "level", Acknowledge(by="ana", note="dock told"), unit="units", measure="rate",
+               before=1 / 30, after=0.07, direction="heavier"),
+        *alarm(EVIL, "no events", measure="silence", before=12.0, after=3_600.0),
+        *alarm(WIDE, "single event", Shelve(by="rui", until=NOW + HOUR), unit="units", measure="size", after=7_100.0),
+        NoteWritten(id="n1", at=AT - HOUR, by="ana", text="new customer\x1b[2J at north-dock", known_at=AT),
+    ]  # fmt: skip
+
+
 def settings_fact(text: str = SETTINGS) -> SettingsTaken:
     """The settings in force."""
     return SettingsTaken(digest="cd", text=text, effective_from=0, known_at=0)
@@ -212,7 +318,7 @@ def panes(name: str) -> list[list[Fact]]:
 
 
 def warehouse(path: Path) -> Path:
-    """The store of the warehouse: two docks need a look, three are quiet, one has no judgement yet."""
+    """The store of the warehouse: two docks have alarms, one is flagged by its refits alone, two are quiet, one new."""
     with make(path) as store:
         for name in ("north-dock", "east-dock", "south-dock"):
             for facts in panes(name):
@@ -223,7 +329,7 @@ def warehouse(path: Path) -> Path:
                 stream("south-dock", age=4, late=2), first_window("south-dock"), *quiet_refits("south-dock"),
                 stream(WIDE, age=7), first_window(WIDE, 2.5), *quiet_refits(WIDE, 5, 2.512),
                 stream(EVIL, age=3700), first_window(EVIL), *quiet_refits(EVIL, 12),
-                stream("west-dock", age=3, events=312),
+                stream("west-dock", age=3, events=312), *watches_and_alarms(),
                 RejectedSample(feed="orders", chain="logs/orders.jsonl", reason="not JSON", position=17,
                                text=b"\x1b[31mbroken", known_at=NOW),
             ]

@@ -9,26 +9,31 @@ import msgspec
 from rich.console import Console
 from rich.text import Text
 
+from monitor.cli.acting import Acting
 from monitor.cli.terminal import Terminal
 from monitor.cli.watching import StoreWatch
 from monitor.errors import MonitorError
-from monitor.render.focus import Focused, focus_page
-from monitor.render.frame import Look
+from monitor.render.attention import Sorted, in_order
+from monitor.render.focus import Focused, Side, focus_page
+from monitor.render.frame import Asked, Look
 from monitor.render.help import help_page
-from monitor.render.screen import in_order, overview
-from monitor.render.seen import Seen
-from monitor.render.stream_rows import Sorted
+from monitor.render.screen import overview
+from monitor.render.seen import Seen, StreamSeen
+from monitor.service.clock import Clock, SystemClock
 from storage.errors import StoreError
 
 SECOND = 1_000_000_000
+ANSWER_LOOK = 0.1
+"""Seconds between looks for an answer that is waited for."""
 
 
 class Page(msgspec.Struct, frozen=True, kw_only=True):
-    """Where the reader is: which stream is marked, whether it is looked at closely, whether help is open."""
+    """Where the reader is: which stream is marked, if it is looked at closely and which side of it, if help is open."""
 
     selected: str | None = None
     close: bool = False
     help: bool = False
+    side: Side = "tail"
 
 
 def turned(page: Page, key: str, names: list[str], step: int) -> Page:
@@ -39,6 +44,8 @@ def turned(page: Page, key: str, names: list[str], step: int) -> Page:
         return msgspec.structs.replace(page, help=False, close=page.close and page.help)
     if page.help or not names:
         return page
+    if key == "side" and page.close:
+        return msgspec.structs.replace(page, side="watch" if page.side == "tail" else "tail")
     at = names.index(page.selected) if page.selected in names else 0
     moves = {"up": -1, "down": 1, "page up": -step, "page down": step, "first": -len(names), "last": len(names)}
     if page.close:
@@ -71,6 +78,10 @@ class _Glance:
         except (StoreError, MonitorError) as error:
             self.notice = f"Shown is the last that could be read. {error}"
 
+    def stream(self, name: str | None) -> StreamSeen | None:
+        """The stream of this name."""
+        return next((one for one in self.seen.streams if one.name == name), None)
+
     def order(self, now: int) -> list[Sorted]:
         """Streams in the order shown; made again for a new state, and each minute for the times in its words."""
         key = (self.seen, now // (60 * SECOND))
@@ -78,14 +89,18 @@ class _Glance:
             self._order_of, self._order = key, in_order(self.seen, now)
         return self._order
 
-    def lines(self, page: Page, look: Look, now: int) -> list[Text]:
+    def lines(self, page: Page, look: Look, now: int, asked: Asked | None) -> list[Text]:
         """The page, painted."""
         if page.help:
             return help_page(look)
         if self.focused is not None and page.close:
-            return focus_page(self.focused, self.seen, now, look, notice=self.notice, live=True)
-        order = self.order(now)
-        return overview(self.seen, now, look, order=order, selected=page.selected, notice=self.notice, live=True)
+            return focus_page(
+                self.focused, self.seen, now, look, notice=self.notice, live=True, side=page.side, asked=asked
+            )
+        return overview(
+            self.seen, now, look, order=self.order(now), selected=page.selected, notice=self.notice, live=True,
+            asked=asked,
+        )  # fmt: skip
 
 
 def run_live(
@@ -94,27 +109,40 @@ def run_live(
     look: Look,
     stream: str | None,
     *,
-    clock: Callable[[], int] = time.time_ns,
+    clock: Clock | None = None,
     over: Callable[[], bool] = lambda: False,
 ) -> None:
     """Show the screen until the reader quits or it is over. Raises what the first look at the store raises.
 
-    Parameters: clock, ns, on the scale of the events' time; over, asked before each look.
+    Parameters: clock, on the scale of the events' time, the machine's by default; over, asked before each look.
     """
+    clock = clock or SystemClock()
     glance = _Glance(watch)
+    acting = Acting(watch, clock)
     page = Page(selected=stream, close=stream is not None)
-    with Terminal(console) as terminal:
+    with acting, Terminal(console) as terminal:
         while not over():
-            now = clock()
+            now = clock.now()
             glance.renew(page)
             names = [one.stream.name for one in glance.order(now)]
             if page.selected not in names:
                 page = msgspec.structs.replace(page, selected=names[0] if names else None, close=False)
             look = msgspec.structs.replace(look, width=max(1, console.width), height=max(1, console.height))
-            terminal.paint(glance.lines(page, look, now))
-            # Wake just after the clock's next second, so that the time shown is never stale by more than that.
-            until = time.monotonic() + (SECOND - time.time_ns() % SECOND) / SECOND + 0.005
-            for key in terminal.keys(until):
-                if key == "quit":
+            terminal.paint(glance.lines(page, look, now, acting.asked()))
+            for key in terminal.keys(_next_look(acting.waiting)):
+                if acting.takes(key):
+                    continue
+                if key.name == "quit":
                     return
-                page = turned(page, key, names, look.height // 2)
+                if key.name == "acknowledge" and not page.help:
+                    acting.begin(glance.stream(page.selected))
+                page = turned(page, key.name, names, look.height // 2)
+
+
+def _next_look(waiting: bool) -> float:
+    """When to look again: just after the clock's next second, so that the time shown is never stale by more than that.
+
+    An answer that is waited for is looked for more often.
+    """
+    second = (SECOND - time.time_ns() % SECOND) / SECOND + 0.005
+    return time.monotonic() + (min(ANSWER_LOOK, second) if waiting else second)

@@ -1,29 +1,65 @@
-"""What `screen` and `history` share: refits decoded with the store's name in their errors, streams and times named."""
+"""What `screen` and `history` share: records decoded with the store's name in their errors, streams and times named."""
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager
 from datetime import UTC, date, datetime
 from pathlib import Path
 from zoneinfo import ZoneInfo
 
 import msgspec
 
+from monitor.alarms.alarm import Alarm
 from monitor.errors import DataError, SourceError, UsageError
 from monitor.render.safe import plain
-from monitor.render.seen import Refit, decode_refit
-from storage.facts import RefitStored
+from monitor.render.seen import Refit, WatchSeen, decode_refit
+from monitor.watch.dependence import Ground
+from monitor.watch.rules import Reading, Watch
+from storage.facts import AlarmStood, RefitStored, WatchBegun, WatchStood
+
+
+@contextmanager
+def named_damage(what: str, path: Path) -> Iterator[None]:
+    """Turns what cannot be decoded into a DataError that names the store and the record."""
+    try:
+        yield
+    except msgspec.DecodeError as error:
+        raise DataError(
+            f"{path}: {plain(what)} cannot be read ({plain(str(error))}). "
+            "The store was changed by something else, or by another version."
+        ) from None
 
 
 def decoded(stored: RefitStored, path: Path) -> Refit:
     """The refit, decoded. Raises DataError naming the store and the refit when it holds something else."""
-    try:
+    with named_damage(f"refit {stored.id}", path):
         return decode_refit(stored)
-    except msgspec.DecodeError as error:
-        raise DataError(
-            f"{path}: refit {plain(stored.id)} cannot be read ({plain(str(error))}). "
-            "The store was changed by something else, or by another version."
-        ) from None
+
+
+def decoded_alarm(stood: AlarmStood, path: Path) -> Alarm:
+    """The alarm as it stands. Raises DataError."""
+    with named_damage(f"alarm {stood.id}", path):
+        return msgspec.json.decode(stood.alarm, type=Alarm)
+
+
+def begun_watch(begun: WatchBegun, path: Path) -> WatchSeen:
+    """A watch before its first slot. Raises DataError."""
+    with named_damage(f"watch {begun.id}", path):
+        return WatchSeen(
+            watch=msgspec.json.decode(begun.watch, type=Watch),
+            ground=msgspec.json.decode(begun.ground or "null", type=Ground | None),
+            since=begun.effective_from,
+            at=begun.effective_from,
+            readings=(),
+        )
+
+
+def standing_watch(begun: WatchSeen, stood: WatchStood, path: Path) -> WatchSeen:
+    """The same watch with what its rules read last. Raises DataError."""
+    with named_damage(f"readings of {stood.stream}", path):
+        readings = msgspec.json.decode(stood.readings, type=tuple[Reading, ...])
+    return msgspec.structs.replace(begun, at=stood.at, readings=readings)
 
 
 def unknown_stream(name: str, known: Iterable[str]) -> SourceError:

@@ -14,7 +14,7 @@ import time
 import tty
 from collections.abc import Sequence
 from types import FrameType, TracebackType
-from typing import Any
+from typing import Any, NamedTuple
 
 from rich.console import Console
 from rich.text import Text
@@ -24,13 +24,23 @@ KEYS = {
     b"\x1b[C": "right", b"\x1bOC": "right", b"\x1b[D": "left", b"\x1bOD": "left", b"\x1b[5~": "page up",
     b"\x1b[6~": "page down", b"\x1b[H": "first", b"\x1b[F": "last", b"\x1b[1~": "first", b"\x1b[4~": "last",
     b"\r": "enter", b"\n": "enter", b"\x1b": "back", b"\x7f": "back", b"\x08": "back", b"b": "back", b"q": "quit",
-    b"Q": "quit", b"\x04": "quit", b"h": "help", b"?": "help",
+    b"Q": "quit", b"\x04": "quit", b"h": "help", b"?": "help", b"a": "acknowledge", b"w": "side",
 }  # fmt: skip
 WATCHED = (signal.SIGWINCH, signal.SIGTERM, signal.SIGHUP, signal.SIGTSTP)
 ESCAPE_WAIT = 0.05
 """Seconds within which the rest of a key's sequence follows its escape character."""
 
 _NO_WRAP, _WRAP = "\x1b[?7l", "\x1b[?7h"
+
+
+class Pressed(NamedTuple):
+    """A key: its name, '' for one without a meaning, and what it types where text is typed ('' for nothing).
+
+    Backspace types '\\x7f', so that it can be told from Esc, which has the same name.
+    """
+
+    name: str
+    text: str = ""
 
 
 class Terminal:
@@ -44,6 +54,7 @@ class Terminal:
         self._pipe = (-1, -1)
         self._old_signals: dict[int, Any] = {}
         self._old_wakeup = -1
+        self._begun = b""
         self.bytes_written = 0
 
     def __enter__(self) -> Terminal:
@@ -97,8 +108,8 @@ class Terminal:
         signal.signal(signal.SIGTSTP, _noted)
         self._take()
 
-    def keys(self, until: float) -> list[str]:
-        """Keys pressed, by name, waiting for the first until the monotonic time `until`.
+    def keys(self, until: float) -> list[Pressed]:
+        """Keys pressed, waiting for the first until the monotonic time `until`.
 
         'quit' also stands for the end of input and for being told to end; a resize comes as 'resize'.
         """
@@ -109,15 +120,16 @@ class Terminal:
             data = os.read(self._input, 1024)
             if data.endswith(b"\x1b") and select.select([self._input], [], [], ESCAPE_WAIT)[0]:
                 data += os.read(self._input, 1024)
-            found += keys_of(data) if data else ["quit"]
+            pressed, self._begun = pressed_of(self._begun + data)
+            found += pressed if data else [Pressed("quit")]
         return found
 
-    def _signals(self) -> list[str]:
+    def _signals(self) -> list[Pressed]:
         numbers = os.read(self._pipe[0], 1024)
         if signal.SIGTSTP in numbers:
             self._suspend()
         ended = signal.SIGTERM in numbers or signal.SIGHUP in numbers
-        return ["quit"] if ended else ["resize"]
+        return [Pressed("quit" if ended else "resize")]
 
     def paint(self, lines: Sequence[Text]) -> None:
         """Show the lines: write those that differ from what is shown already."""
@@ -150,19 +162,36 @@ def _noted(number: int, frame: FrameType | None) -> None:
     """The signal's number arrives through the wake-up pipe; nothing is done in the handler itself."""
 
 
-def keys_of(data: bytes) -> list[str]:
-    """The names of the keys in what a terminal sent; keys without a meaning are left out."""
-    found = []
+def pressed_of(data: bytes) -> tuple[list[Pressed], bytes]:
+    """The keys in what a terminal sent, and the bytes of a character that has not come to its end yet."""
+    found: list[Pressed] = []
     while data:
         length = _sequence_length(data)
-        name = KEYS.get(data[:length])
-        found += [name] if name is not None else []
+        key = data[:length]
+        if length > len(data):
+            return found, data
+        found.append(Pressed(KEYS.get(key, ""), _typed(key)))
         data = data[length:]
-    return found
+    return found, b""
+
+
+def keys_of(data: bytes) -> list[str]:
+    """The names of the keys in what a terminal sent; keys without a meaning are left out."""
+    return [key.name for key in pressed_of(data)[0] if key.name]
+
+
+def _typed(key: bytes) -> str:
+    if key in (b"\x7f", b"\x08"):
+        return "\x7f"
+    text = key.decode("utf-8", "ignore")
+    return text if text.isprintable() and not key.startswith(b"\x1b") else ""
 
 
 def _sequence_length(data: bytes) -> int:
-    """Bytes of the first key: an escape sequence as a whole, so that its letters are not taken for keys."""
+    """Bytes of the first key: an escape sequence or a character of UTF-8 as a whole, so that no part is a key."""
+    if 0xC2 <= data[0] <= 0xF4:
+        length = 2 if data[0] < 0xE0 else 3 if data[0] < 0xF0 else 4
+        return length if all(0x80 <= byte < 0xC0 for byte in data[1:length]) else 1
     if data[:2] == b"\x1bO":
         return min(3, len(data))
     if data[:2] != b"\x1b[":

@@ -15,18 +15,23 @@ from typing import Any
 
 import numpy as np
 
+from monitor.alarms.alarm import Alarm
 from monitor.cli.output import open_place, plan_of
-from monitor.cli.reading import decoded, unknown_stream
+from monitor.cli.reading import begun_watch, decoded, decoded_alarm, standing_watch, unknown_stream
 from monitor.plan import Plan
 from monitor.render.charts import TailDrawing
 from monitor.render.focus import Focused
 from monitor.render.planned import baseline_tails, fitted_tails
-from monitor.render.seen import Refit, Seen, StreamSeen, accounts
+from monitor.render.seen import Refit, Seen, StreamSeen, WatchSeen, accounts
 from monitor.render.stream_rows import STRIP
+from monitor.render.watch_lines import AlarmPast, notes_near
 from storage.errors import StoreError
 from storage.facts import BaselineSet, StreamState
 from storage.history import Reader
 from storage.store import named_errors
+
+PAST_ALARMS = 8
+"""Alarms of a stream that its page tells of at most, the open ones included."""
 
 REST = 40.0
 """Rest after each read, in times what it took: reading takes at most 1/40 of a core, however large the store."""
@@ -51,6 +56,8 @@ class StoreWatch:
         self._refits_at: tuple[Any, ...] | None = None
         self._refits: dict[str, tuple[Refit, ...]] = {}
         self._known: dict[tuple[str, int], Refit] = {}
+        self._begun_at: tuple[Any, ...] | None = None
+        self._begun: dict[str, WatchSeen] = {}
         self._plan: Plan | None = None
         self._seen: Seen | None = None
         self._drawings: dict[str, tuple[str, TailDrawing]] = {}
@@ -68,6 +75,11 @@ class StoreWatch:
         if self._reader is not None:
             self._reader.close()
             self._reader = None
+
+    @property
+    def path(self) -> Path:
+        """The store's file. Raises what opening it raises."""
+        return self._open().path
 
     def _open(self) -> Reader:
         """The reader, opened anew when the file was replaced or the last look failed."""
@@ -102,7 +114,12 @@ class StoreWatch:
     def _read(self, reader: Reader) -> Seen:
         plan = self._plan_in_force(reader)
         refits = self._last_refits(reader)
-        baselines = _in_force(reader.baselines())
+        accepted = {one.stream: one.known_at for one in reader.accepted_changes()}
+        baselines = _in_force(reader.baselines(), accepted)
+        watches = self._watches(reader)
+        alarms: dict[str, list[Alarm]] = {}
+        for stood in reader.alarms(only_open=True):
+            alarms.setdefault(stood.stream, []).append(decoded_alarm(stood, reader.path))
         open_events: Counter[str] = Counter()
         for pane in reader.open_panes():
             open_events[pane.stream] += pane.events
@@ -116,6 +133,9 @@ class StoreWatch:
                 baseline=baselines.get(state.stream),
                 open_events=open_events[state.stream],
                 waiting=waiting[state.stream],
+                alarms=tuple(alarms.get(state.stream, ())),
+                watch=watches.get(state.stream) if state.stream in baselines else None,
+                accepted=state.stream in accepted and state.stream not in baselines,
             )
 
         return Seen(
@@ -129,6 +149,19 @@ class StoreWatch:
         if self._plan is None or self._plan.digest != reader.settings_digest():
             self._plan = plan_of(reader)
         return self._plan
+
+    def _watches(self, reader: Reader) -> dict[str, WatchSeen]:
+        """Where the watch of each stream stands; what is fixed in a watch is decoded once."""
+        at = _row(reader, "select max(rowid), count(*) from watch")
+        if at != self._begun_at:
+            self._begun = {begun.id: begun_watch(begun, reader.path) for begun in reader.watches()}
+            self._begun_at = at
+        found = {}
+        for stood in reader.watch_states():
+            begun = self._begun.get(stood.watch)
+            if begun is not None:
+                found[stood.stream] = standing_watch(begun, stood, reader.path)
+        return found
 
     def _last_refits(self, reader: Reader) -> dict[str, tuple[Refit, ...]]:
         at = _row(reader, "select max(rowid), count(*) from refit")
@@ -155,11 +188,15 @@ class StoreWatch:
             with reader.snapshot():
                 drawing = self._drawing(reader, seen, stream)
                 samples = tuple(reader.rejected_samples(stream.state.feed)[-3:])
+                past, notes = _alarm_past(reader, name), reader.notes()
         except StoreError:
             self.close()
             raise
         feed = next((one for one in seen.feeds if one.feed == stream.state.feed), None)
-        return Focused(stream=stream, feed=feed, drawing=drawing, samples=samples)
+        return Focused(
+            stream=stream, feed=feed, drawing=drawing, samples=samples, past=past,
+            notes=notes_near(notes, past, stream.refits),
+        )  # fmt: skip
 
     def _drawing(self, reader: Reader, seen: Seen, stream: StreamSeen) -> TailDrawing | None:
         judged = stream.judged
@@ -192,9 +229,19 @@ def _row(reader: Reader, sql: str) -> tuple[Any, ...]:
     return row
 
 
-def _in_force(baselines: list[BaselineSet]) -> dict[str, BaselineSet]:
-    """The last baseline of each stream."""
-    return {baseline.stream: baseline for baseline in baselines}
+def _in_force(baselines: list[BaselineSet], accepted: dict[str, int]) -> dict[str, BaselineSet]:
+    """The last baseline of each stream, unless a change was accepted since it was known."""
+    last = {baseline.stream: baseline for baseline in baselines}
+    return {name: one for name, one in last.items() if one.known_at >= accepted.get(name, one.known_at)}
+
+
+def _alarm_past(reader: Reader, stream: str) -> tuple[AlarmPast, ...]:
+    """The last alarms of a stream, each with its history, newest first."""
+    found = [stood for stood in reader.alarms() if stood.stream == stream][-PAST_ALARMS:]
+    return tuple(
+        AlarmPast(alarm=decoded_alarm(stood, reader.path), moves=tuple(reader.alarm_moves(stood.id)))
+        for stood in reversed(found)
+    )
 
 
 def _identity(path: Path) -> tuple[int, int] | None:

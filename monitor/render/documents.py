@@ -6,11 +6,14 @@ from typing import Any
 
 import msgspec
 
+from monitor.render.alarm_documents import alarm_document
+from monitor.render.attention import telling_alarm, urgency
 from monitor.render.planned import baseline_level
 from monitor.render.safe import plain
-from monitor.render.seen import FeedAccount, Refit, Seen, StreamSeen
+from monitor.render.seen import FeedAccount, Refit, Seen, StreamSeen, WatchSeen
 from monitor.render.times import utc_text
-from monitor.render.words.findings import feed_findings, findings, flags_in_words
+from monitor.render.words.findings import Finding, feed_findings, findings, flags_in_words
+from monitor.render.words.watch import promise_words, unwatched_words, way_words
 from monitor.tail.judgement import as_document
 from storage.facts import BaselineSet
 
@@ -72,7 +75,7 @@ def _against_document(refit: Refit, baseline: BaselineSet | None) -> dict[str, A
 
 
 def screen_document(seen: Seen, now: int) -> dict[str, Any]:
-    """Everything a frame shows, for machines."""
+    """Everything a frame shows, for machines; the histories of alarms are told by `tailgauge alarms`."""
     zone = seen.plan.timezone
     return {
         "store": seen.store,
@@ -106,10 +109,10 @@ def _stream_document(stream: StreamSeen, zone: str, now: int) -> dict[str, Any]:
         "age_seconds": (now - state.newest) / 1e9,
         "open_events": stream.open_events,
         "waiting_windows": stream.waiting,
-        "needs_a_look": [
-            {"kind": f.kind, "words": plain(f.sentence), "detail": [plain(text) for text in f.detail]}
-            for f in findings(stream, zone, now)
-        ],
+        "alarms": [alarm_document(alarm, ()) for alarm in sorted(stream.alarms, key=urgency)],
+        "needs_a_look": [_finding_document(finding, stream) for finding in findings(stream, zone, now)],
+        "watch": None if stream.watch is None else _watch_document(stream.watch),
+        "not_watched": unwatched_words(stream) or None,
         "baseline": None if base is None else _baseline_document(base),
         "limit_size": stream.plan.limit,
         "baseline_level": None if level is None else baseline_level(stream, level.one_in),
@@ -123,6 +126,39 @@ def _stream_document(stream: StreamSeen, zone: str, now: int) -> dict[str, Any]:
             }
             for refit in stream.refits
         ],
+    }  # fmt: skip
+
+
+def _finding_document(finding: Finding, stream: StreamSeen) -> dict[str, Any]:
+    """A finding of refits: how many in a row say it (0: no judgement), and the open alarm that tells it already."""
+    telling = telling_alarm(finding, stream.alarms)
+    return {
+        "kind": finding.kind,
+        "words": plain(finding.sentence),
+        "detail": [plain(text) for text in finding.detail],
+        "refits": finding.refits,
+        "alarm": None if telling is None else telling.id,
+    }
+
+
+def _watch_document(watch: WatchSeen) -> dict[str, Any]:
+    """The promise, what each rule read last, and what is not watched. ln_statistic null: nothing gathered."""
+    ground = watch.ground
+    return {
+        "since": utc_text(watch.since),
+        "at": utc_text(watch.at),
+        "promised_days": watch.promised_days if ground is None or ground.kept else None,
+        "budget_days": watch.watch.budget_days,
+        "ground": None if ground is None else msgspec.to_builtins(ground),
+        "words": promise_words(watch),
+        "readings": [
+            {
+                "rule": one.rule, "way": one.way, "ln_statistic": one.ln_statistic, "ln_threshold": one.ln_threshold,
+                "direction": one.direction, "words": way_words(one),
+            }
+            for one in watch.readings
+        ],
+        "unwatched": [{"rule": one.rule, "why": one.why} for one in watch.watch.unwatched],
     }  # fmt: skip
 
 

@@ -1,19 +1,25 @@
-"""One stream looked at closely: its sentences, its tail drawn, its last refits, its rejected lines."""
+"""One stream looked at closely: its sentences, its tail drawn, its last refits, its watch, its rejected lines."""
 
 from __future__ import annotations
+
+from typing import Literal
 
 import msgspec
 from rich.text import Text
 
+from monitor.render.attention import Sorted, sorted_stream
 from monitor.render.charts import TailDrawing, chart_legend, tail_chart
-from monitor.render.frame import ABNORMAL, STRONG, Look, Part, cut_to, head_line, paragraph, styled
+from monitor.render.frame import ABNORMAL, STRONG, Asked, Look, Part, cut_to, foot_lines, head_line, paragraph, styled
 from monitor.render.numbers import count_text, place_of, size_text, with_bounds
+from monitor.render.sayings import alarm_saying, said
 from monitor.render.seen import FeedAccount, Seen, StreamSeen
-from monitor.render.stream_rows import Sorted, age_text, state_word
+from monitor.render.stream_rows import age_text, state_word
 from monitor.render.tables import RefitRow, history_table
 from monitor.render.times import plural
+from monitor.render.watch_lines import AlarmPast, past_lines, rule_lines, written_lines
 from monitor.render.words.common import moments_words, p_words, size_with_unit
 from monitor.render.words.findings import (
+    Finding,
     baseline_alpha,
     findings,
     level_line,
@@ -21,14 +27,23 @@ from monitor.render.words.findings import (
     quiet_words,
     rejected_words,
 )
-from storage.facts import RejectedSample
+from monitor.render.words.watch import gathered_words, unwatched_words
+from storage.facts import NoteWritten, RejectedSample
 
-KEYS = "Left, Right: other streams   Esc: back   h: help   q: quit"
+Side = Literal["tail", "watch"]
+KEYS: dict[Side, str] = {
+    "tail": "Left, Right: other streams   w: watch   a: acknowledge   Esc: back   h: help",
+    "watch": "Left, Right: other streams   w: tail   a: acknowledge   Esc: back   h: help",
+}
 LEAST_CHART = 8
 """Lines below which the drawing is left out."""
 CHART = 24
 """Lines above which it gives room to the refits."""
+COMFORTABLE_CHART = 14
+"""Lines that the drawing keeps where rules and past alarms stand on the same page."""
 LEAST_REFITS = 2
+TALL = 40
+"""From this height on the side of the watch tells alarms at length, though they stand in its list as well."""
 
 
 class Focused(msgspec.Struct, frozen=True, kw_only=True):
@@ -38,60 +53,119 @@ class Focused(msgspec.Struct, frozen=True, kw_only=True):
     feed: FeedAccount | None
     drawing: TailDrawing | None
     samples: tuple[RejectedSample, ...]
+    past: tuple[AlarmPast, ...] = ()
+    notes: tuple[NoteWritten, ...] = ()
 
 
 def focus_page(
-    focused: Focused, seen: Seen, now: int, look: Look, *, notice: str | None = None, live: bool = False
+    focused: Focused,
+    seen: Seen,
+    now: int,
+    look: Look,
+    *,
+    notice: str | None = None,
+    live: bool = False,
+    side: Side = "tail",
+    asked: Asked | None = None,
 ) -> list[Text]:
     """The page as lines: exactly look.height of them when live, else at most so many.
 
-    Sentences come first and take somewhat less than half of the height, then the drawing; the last refits get
-    the rest.
+    Sentences come first and take somewhat less than half of the height; then on the side "tail" the drawing and the
+    last refits, on the side "watch" the rules, past alarms and notes; in a tall terminal the first side has both.
     """
     zone = seen.plan.timezone
-    foot = [styled(look, Part(KEYS))] if live else []
+    foot = foot_lines(look, KEYS[side], asked) if live else []
     head = [head_line(look, f"{focused.stream.name}  ({seen.store})", now, zone)]
     head += paragraph(look, notice, style=ABNORMAL) if notice else []
     room = look.height - len(head) - len(foot)
-    said = _sentences(focused, now, look, zone)
+    rules = _watch_block(focused, look, zone, now)
+    words = _headlines(focused, now, look, zone, brief=side == "watch" and look.height < TALL)
+    if side == "tail":
+        words += _figure_lines(focused.stream, now, look, zone)
+    tall = side == "tail" and room - len(words) - len(rules) - LEAST_REFITS >= COMFORTABLE_CHART
+    if not tall and side == "tail":
+        words = [*_headlines(focused, now, look, zone), *_watch_sentence(focused.stream, look)]
+        words += _figure_lines(focused.stream, now, look, zone)
     most = max(4, room * 9 // 20)
-    said = said if len(said) <= most else _shortened(said, most, look)
-    room -= len(said)
+    words = words if len(words) <= most or tall else _shortened(words, most, look)
+    room -= len(words) + len(rules) * tall
+    if side == "watch":
+        below = rules if len(rules) <= room else _shortened(rules, room, look)
+    else:
+        below = [*(rules if tall else []), *_tail_side(focused, msgspec.structs.replace(look, height=room), zone)]
+    lines = [*head, *words, *below]
+    return cut_to(look, lines, foot) if live else lines[: look.height]
+
+
+def _watch_block(focused: Focused, look: Look, zone: str, now: int) -> list[Text]:
+    return [
+        *rule_lines(focused.stream, look, zone, now),
+        *past_lines(focused.past, look, zone, now),
+        *written_lines(focused.notes, look, zone, now),
+    ]
+
+
+def _tail_side(focused: Focused, look: Look, zone: str) -> list[Text]:
+    """The drawing, the last refits and rejected lines, in look.height lines."""
+    room = look.height
     refits = _refit_lines(focused, look, zone)
     # Drawing first in importance: it gets what a handful of refits leaves, and not more than it can use.
     for_refits = min(len(refits), max(LEAST_REFITS + 1, room - CHART))
     chart = _drawing(focused, msgspec.structs.replace(look, height=room - for_refits))
-    refits = [*refits[:1], *refits[max(1, len(refits) - max(0, room - len(chart) - 1)) :]][: room - len(chart)]
+    refits = [*refits[:1], *refits[max(1, len(refits) - max(0, room - len(chart) - 1)) :]][: max(0, room - len(chart))]
     rest = room - len(chart) - len(refits)
-    lines = [*head, *said, *chart, *refits, *_rejected(focused, look)[: max(0, rest)]]
-    return cut_to(look, lines, foot) if live else lines[: look.height]
+    return [*chart, *refits, *_rejected(focused, look)[: max(0, rest)]]
 
 
 def _shortened(lines: list[Text], room: int, look: Look) -> list[Text]:
     """As many lines as fit, and how many are missing."""
+    if room <= 0:
+        return []
     hidden = len(lines) - room + 1
     return [*lines[: room - 1], styled(look, Part(f"  ({plural(hidden, 'more line')} in a taller terminal)"))]
 
 
-def _sentences(focused: Focused, now: int, look: Look, zone: str) -> list[Text]:
-    """Headlines, then the figures, then what is behind the findings: the lower a terminal, the less of the last."""
+def _headlines(focused: Focused, now: int, look: Look, zone: str, *, brief: bool = False) -> list[Text]:
+    """What asks for a look, in a line each if brief; for a quiet stream that it is quiet."""
     stream = focused.stream
-    found = findings(stream, zone, now)
-    lines: list[Text] = []
-    for finding in found:
-        lines += paragraph(look, f"{_capital(finding.headline)}.", style=ABNORMAL, indent="  ", first="")
-    if not found:
+    one = sorted_stream(stream, zone, now)
+    depth = 0 if brief else 2 if len(one.alarms) == 1 else 1
+    lines = said(look, [alarm_saying(alarm, zone, now) for alarm in one.alarms], depth)
+    for finding in one.findings:
+        style = "" if finding.refits else ABNORMAL
+        lines += paragraph(look, _headline(finding), style=style, indent="  ", first="")
+    if not lines:
         words = quiet_words(stream, zone, now) or _steady_words(stream)
         lines += paragraph(look, f"{_capital(words)}.", style=STRONG)
+    return lines
+
+
+def _watch_sentence(stream: StreamSeen, look: Look) -> list[Text]:
+    words = unwatched_words(stream) if stream.watch is None else gathered_words(stream.watch)
+    return paragraph(look, words, indent="  ", first="")
+
+
+def _figure_lines(stream: StreamSeen, now: int, look: Look, zone: str) -> list[Text]:
+    """The figures, then what is behind the findings: the lower a terminal, the less of the last."""
+    found = findings(stream, zone, now)
     behind = [text for finding in found if finding.kind != "fit" for text in finding.detail]
     behind += [text for finding in found if finding.kind == "fit" for text in finding.detail[1:]]
+    lines: list[Text] = []
     for text in [*_figures(stream, now), *behind, *_moments(stream)]:
         lines += paragraph(look, text, indent="  ", first="")
     return lines
 
 
+def _headline(finding: Finding) -> str:
+    """'Tail heavier than planned since the refit of 14:00 WET (no alarm).'."""
+    if not finding.refits:
+        return f"{_capital(finding.headline)}."
+    count = f"{plural(finding.refits, 'refit')}, " if finding.kind == "limit" else ""
+    return f"{_capital(finding.headline)} ({count}no alarm)."
+
+
 def _steady_words(stream: StreamSeen) -> str:
-    word = state_word(Sorted(stream=stream, findings=()))
+    word = state_word(Sorted(stream=stream))
     if stream.baseline is None:
         return f"{word}: nothing to compare with yet"
     return f"{word}: the tail is as {'planned' if stream.baseline.source == 'plan' else 'its baseline'}"

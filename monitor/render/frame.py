@@ -72,6 +72,30 @@ def cut_to(look: Look, lines: Sequence[Text], foot: Sequence[Text] = ()) -> list
     return [*body, *space, *foot]
 
 
+class Asked(msgspec.Struct, frozen=True):
+    """What stands above the keys: a question or an answer, and the line that is being typed, if one is."""
+
+    text: str
+    typed: str | None = None
+
+
+def foot_lines(look: Look, keys: str, asked: Asked | None = None) -> list[Text]:
+    """The bottom edge of a live page: what is asked or answered, then the keys. A typed line shows its end."""
+    lines = paragraph(look, asked.text, style=STRONG) if asked is not None else []
+    if asked is not None and asked.typed is not None:
+        lines.append(styled(look, Part(tail_of(look.safe(f"> {asked.typed}_"), look.width), STRONG)))
+    return [*lines, styled(look, Part(keys))]
+
+
+def tail_of(text: str, width: int) -> str:
+    """The text, or as much of its end as fits, with dots before it."""
+    if width_of(text) <= width:
+        return text
+    while width_of(text) > max(0, width - 2):
+        text = text[1:]
+    return f"..{text}"
+
+
 def as_text(lines: Sequence[Text]) -> str:
     """The frame as plain text, without the empty lines at its end."""
     return "\n".join(line.plain for line in lines).rstrip("\n")

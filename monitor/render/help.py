@@ -12,18 +12,19 @@ KEYS = (
     ("Up, Down", "move between streams (also j and k)"),
     ("Enter", "look at the marked stream closely"),
     ("Left, Right", "the stream before or after, while looking closely"),
+    ("w", "while looking closely: its watch and past alarms, or its tail"),
+    ("a", "acknowledge the marked stream's first alarm, with a note"),
     ("Esc", "back to all streams (also Backspace)"),
-    ("h", "this help (also ?)"),
-    ("q", "quit"),
+    ("h, q", "this help (also ?); quit"),
 )
 MEANINGS = (
-    "A stream needs a look when its newest refit finds the tail changed, a power law ruled out, or the limit passed "
-    "too often. Refits are judged one by one: now and then luck flags one, so see whether the next agree.",
-    "alpha: how fast large sizes get rare; smaller is heavier. base: alpha planned, or of the first window.",
+    "Alarms are seldom false: the promise says how seldom. gone: its condition went by itself; seen: acknowledged; "
+    "held: a known change explains it.",
+    "(3 refits): so many refits in a row differ, without an alarm: at times by luck.",
+    "way: at 100 % a rule speaks. alpha: smaller is heavier. base: the baseline's.",
     "p: how often a true power law fits this badly. Large is good; at or below rule_out it is ruled out.",
-    "95 %: the range for the figure before it. level: the size that one event in so many passes.",
+    "95 %: the range for the figure before it. level: one event in so many passes.",
     f"last: the last refits, newest at the right: {', '.join(f'{letter} {word}' for letter, word in STRIP_LETTERS)}.",
-    "Drawing: a plus sign shows where the fit departs from the data. late: counted, but stamped too late.",
     CAUTION,
 )
 FOOT = "Esc: back   q: quit"

@@ -6,10 +6,13 @@ from collections.abc import Iterable
 
 import msgspec
 
+from monitor.alarms.alarm import Alarm
 from monitor.plan import Plan, StreamPlan
 from monitor.tail.compare import Comparison
 from monitor.tail.judgement import Judgement, Level
+from monitor.watch.dependence import Ground
 from monitor.watch.flags import Flag
+from monitor.watch.rules import Reading, Watch
 from storage.facts import BaselineSet, ChainState, RefitState, RefitStored, StreamState
 
 
@@ -44,8 +47,30 @@ class Refit(msgspec.Struct, frozen=True, kw_only=True):
         return next((flag for flag in self.flags if flag.rule == "fit"), None)
 
 
+class WatchSeen(msgspec.Struct, frozen=True, kw_only=True):
+    """The watch of a stream: its rules and promise, and what each rule read in the last slot, which ended at `at`."""
+
+    watch: Watch
+    ground: Ground | None
+    """What the promise was measured on; None where there was no past to measure on."""
+    since: int
+    at: int
+    readings: tuple[Reading, ...]
+
+    @property
+    def promised_days(self) -> float:
+        """Mean days between false alarms of this stream that are promised, at the least."""
+        return self.watch.budget_days if self.ground is None else self.ground.promised_days
+
+    @property
+    def nearest(self) -> Reading | None:
+        """The reading of the rule that is nearest to speaking; None when no rule has gathered anything."""
+        gathered = [one for one in self.readings if one.ln_statistic is not None]
+        return max(gathered, key=lambda one: one.way, default=None)
+
+
 class StreamSeen(msgspec.Struct, frozen=True, kw_only=True):
-    """Everything a frame tells of one stream. `refits` are the last ones, newest last."""
+    """Everything a frame tells of one stream. `refits` are the last ones, newest last; `alarms` are the open ones."""
 
     state: StreamState
     plan: StreamPlan
@@ -54,6 +79,10 @@ class StreamSeen(msgspec.Struct, frozen=True, kw_only=True):
     open_events: int
     waiting: int
     """Windows that are sealed and still to be judged."""
+    alarms: tuple[Alarm, ...] = ()
+    watch: WatchSeen | None = None
+    accepted: bool = False
+    """A change was accepted, and the baseline from it on is still to come."""
 
     @property
     def name(self) -> str:

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-import msgspec
 from rich.text import Text
 
+from monitor.alarms.priorities import Rule
+from monitor.render.attention import Sorted, is_new
 from monitor.render.charts import STRIP_LETTERS, refit_letter, refit_strip
 from monitor.render.frame import ABNORMAL, STRONG, Look, Part, paragraph, styled
 from monitor.render.numbers import bounds_text, count_text, estimate, place_of, size_text
@@ -14,7 +15,8 @@ from monitor.render.safe import padded
 from monitor.render.seen import StreamSeen
 from monitor.render.tables import GAP, Column, chosen
 from monitor.render.times import plural, span_short
-from monitor.render.words.findings import Finding, baseline_alpha, quiet_words
+from monitor.render.words.findings import baseline_alpha, quiet_words
+from monitor.render.words.watch import way_text
 from monitor.tail.judgement import GoodnessOfFit, Level
 
 STRIP = 24
@@ -22,19 +24,22 @@ STRIP = 24
 NARROW_STRIP, WIDE = 6, 110
 
 
-class Sorted(msgspec.Struct, frozen=True, kw_only=True):
-    """A stream with what needs a look, in the order of the screen."""
-
-    stream: StreamSeen
-    findings: tuple[Finding, ...]
+_STATE_OF: dict[Rule, str] = {"fit": "misfit", "level": "limit", "single event": "one event", "tail share": "share"}
+"""One word for the state that a rule's alarm puts its stream in, where it is not the rule's own name."""
 
 
 def state_word(one: Sorted) -> str:
-    """The state of a stream in one word or two."""
-    if one.findings:
-        kind = one.findings[0].kind
-        misfit = "doubtful" if one.stream.judged is not None and one.stream.judged.doubtful else "misfit"
-        return misfit if kind == "fit" else kind
+    """The state of a stream in a word or two: of its first alarm, else of what refits alone say."""
+    if one.alarms:
+        first = one.alarms[0]
+        which = first.direction if first.rule == "exponent" else None
+        word = which or _STATE_OF.get(first.rule, first.rule)
+        return word if is_new(first) else f"{word}, {'held' if first.held is not None else 'seen'}"
+    if one.faults:
+        return one.faults[0].kind
+    if one.flags:
+        count = max(flag.refits for flag in one.flags)
+        return "one refit" if count == 1 else f"{count} refits"
     judged = one.stream.judgement
     if one.stream.latest is None:
         return "new"
@@ -63,7 +68,7 @@ def stream_table(
             styled(
                 look,
                 Part(lead + name + GAP, strong),
-                Part(state, ABNORMAL if one.findings else strong),
+                Part(state, ABNORMAL if one.needs_a_look else strong),
                 Part(GAP + figures, strong),
             )
         )
@@ -94,6 +99,7 @@ def _columns(streams: Sequence[Sorted], now: int, look: Look) -> list[Column]:
     fits = [_fit(_gof(stream)) for stream in found]
     strip = STRIP if look.width >= WIDE else NARROW_STRIP
     strips = tuple(refit_strip(stream.refits, strip) for stream in found)
+    nearest = tuple(_nearest(stream) for stream in found)
     last = max((len(text) for text in strips), default=0)
     one_unit = len({stream.plan.unit for stream in found}) == 1
     return [
@@ -111,6 +117,7 @@ def _columns(streams: Sequence[Sorted], now: int, look: Look) -> list[Column]:
         Column(title="events", cells=tuple(count_text(stream.state.events) for stream in found), right=True, need=8),
         Column(title="late", cells=tuple(count_text(stream.state.late) for stream in found), right=True, need=10),
         Column(title="newest", cells=tuple(age_text(stream, now) for stream in found), right=True, need=4),
+        *([Column(title="nearest rule", cells=nearest, need=6)] if any(nearest) else []),
         Column(title=f"last {last}" if last > 1 else "last", cells=strips, need=5),
     ]  # fmt: skip
 
@@ -158,6 +165,12 @@ def _limit(stream: StreamSeen) -> str:
     return "" if stream.plan.limit is None else size_text(stream.plan.limit)
 
 
+def _nearest(stream: StreamSeen) -> str:
+    """The rule that is nearest to speaking, with its part of the way: 'rival 49 %'."""
+    reading = None if stream.watch is None else stream.watch.nearest
+    return "" if reading is None else f"{reading.rule} {way_text(reading)}"
+
+
 def age_text(stream: StreamSeen, now: int) -> str:
     """Age of the newest event: '12 s'; an event stamped ahead of the clock says so."""
     age = now - stream.state.newest
@@ -177,6 +190,10 @@ def note_lines(streams: Sequence[Sorted], look: Look) -> list[Text]:
         limit = limits.pop() if len(limits) == 1 else None
         text = f"level: one event in {count_text(one_in.pop())} passes it{unit}"
         notes.append(text + (f"; limit {size_text(limit)}" if limit is not None else ""))
+    if any(stream.watch is not None for stream in found):
+        notes.append("nearest rule: how much of its way to an alarm the rule that is nearest has gone")
+    if any(one.flags and not one.alarms for one in streams):
+        notes.append("state 'refits': so many refits in a row differ, without an alarm; now and then luck does that")
     seen = {refit_letter(refit) for stream in found for refit in stream.refits}
     letters = [f"{letter} {word}" for letter, word in STRIP_LETTERS if letter in seen]
     if letters:

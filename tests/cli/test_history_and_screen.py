@@ -139,8 +139,8 @@ def test_times_are_local_to_the_plan_and_dates_are_whole_days() -> None:
 def test_the_screen_prints_one_frame_without_a_terminal(store: Path, capsys: pytest.CaptureFixture[str]) -> None:
     code, out, _ = run(capsys, "screen", "--in", store)
     assert code == 0
-    assert "2 of 6 streams need a look." in out
-    assert "north-dock: tail heavier than planned" in out
+    assert "2 of 6 streams need a look: 3 alarms" in out
+    assert "north-dock: tail heavier since about 12:00 WET" in out
     assert "\x1b" not in out
     code, out, _ = run(capsys, "screen", "--in", store, "--once", "--stream", "east-dock")
     assert code == 0

@@ -19,7 +19,8 @@ from pathlib import Path
 import pytest
 
 from monitor.cli.live import Page, turned
-from monitor.cli.terminal import keys_of
+from monitor.cli.terminal import Pressed, keys_of, pressed_of
+from storage.history import open_reader
 from tests.stores import chain, make, settings_fact, stream, warehouse
 
 PATIENCE = 20.0
@@ -31,6 +32,17 @@ def test_keys_of_what_a_terminal_sends() -> None:
     assert keys_of(b"\x1b") == ["back"]
     assert keys_of(b"\x1b[1;5Az\xff") == []  # a key without a meaning is not taken apart into letters
     assert keys_of(b"\x1b[") == []
+    assert keys_of(b"aw") == ["acknowledge", "side"]
+
+
+def test_what_is_typed_and_what_comes_in_parts() -> None:
+    pressed, rest = pressed_of("bö\x7f\r\x1b[A".encode() + b"\xc3")
+    assert [key.text for key in pressed] == ["b", "ö", "\x7f", "", ""]
+    assert [key.name for key in pressed] == ["back", "", "back", "enter", "up"]
+    assert rest == b"\xc3"
+    assert pressed_of(rest + b"\xbc") == ([Pressed("", "ü")], b"")
+    # Bytes that are no text, and keys without a meaning, type nothing and are not taken apart.
+    assert pressed_of(b"\xff\xc3\x1b[1;5A\x07") == ([Pressed("")] * 4, b"")
 
 
 def test_pages_turn_with_the_keys() -> None:
@@ -42,6 +54,9 @@ def test_pages_turn_with_the_keys() -> None:
     assert (close.selected, close.close) == ("b", True)
     assert turned(close, "right", names, 2) == Page(selected="c", close=True)
     assert turned(page, "right", names, 2) == page
+    assert turned(page, "side", names, 2) == page
+    assert turned(close, "side", names, 2) == Page(selected="b", close=True, side="watch")
+    assert turned(turned(close, "side", names, 2), "side", names, 2) == close
     helped = turned(close, "help", names, 2)
     assert turned(helped, "down", names, 2) == helped
     assert turned(helped, "back", names, 2) == close
@@ -122,28 +137,78 @@ def played(place: Path) -> Iterator[Played]:
 def test_keys_move_look_closer_help_and_quit(played: Played) -> None:
     first = played.wait_for("q: quit")
     assert first.startswith("\x1b[?1049h")
-    assert "> north-dock" in first
+    assert "> \\x1b[2J[red]" in first  # the dock that has fallen silent comes first
     played.send("\x1b[B")
-    played.wait_for("> east-dock")
-    played.send("\r")
+    played.wait_for("> north-dock")
+    played.send("j\r")
+    played.wait_for("Share of events at or above a size")
+    played.send("w")
+    played.wait_for("How far each rule is on its way to an alarm")
+    played.send("w")
     played.wait_for("Share of events at or above a size")
     played.send("h")
     played.wait_for("keys and figures")
     played.send("\x1b")
     played.wait_for("Share of events at or above a size")
     played.send("b")
-    played.wait_for("2 of 6 streams need a look.")
+    played.wait_for("2 of 6 streams need a look: ")
+    played.send("q")
+    assert played.end() == 0
+
+
+def test_an_alarm_is_acknowledged_with_a_note_and_the_answer_is_shown(played: Played, place: Path) -> None:
+    played.wait_for("q: quit")
+    played.send("\x1b[B")
+    played.wait_for("> north-dock")
+    played.send("a")
+    played.wait_for("Acknowledge exponent of north-dock, with a note")
+    played.send("quit")  # letters are text now, not keys
+    played.wait_for("> quit_")
+    played.send("\x1b")
+    played.wait_for("Not sent.")
+    played.send("a")
+    played.wait_for("Acknowledge exponent of north-dock")
+    played.send("größer\x7f\x7f Küche\x1b[A\r")
+    played.wait_for("north-dock, exponent: acknowledged.")
+    played.wait_for("3 alarms, 2 acknowledged, 1 shelved")
+    with open_reader(place) as reader:
+        stood = next(one for one in reader.alarms() if (one.stream, one.rule) == ("north-dock", "exponent"))
+        last = reader.alarm_moves(stood.id)[-1]
+    assert (stood.state, last.to_state, last.note) == ("acknowledged", "acknowledged", "größ Küche")
+    played.send("a")
+    played.wait_for("north-dock has no alarm to acknowledge.")
+    played.send("q")
+    assert played.end() == 0
+
+
+def test_the_screen_goes_on_while_a_silent_daemon_is_asked(played: Played, place: Path) -> None:
+    """Another process holds the store and answers nothing: the clock ticks on, and the request counts as queued."""
+    played.wait_for("q: quit")
+    with make(place):
+        played.send("j")
+        played.wait_for("> north-dock")
+        played.send("a")
+        played.wait_for("with a note")
+        played.send("\r")
+        played.wait_for("Asking ...")
+        played.shown = ""
+        asked = time.monotonic()
+        played.wait_for("queued, the daemon has not")
+        assert time.monotonic() - asked < PATIENCE / 2
+        assert len(re.findall(r"\x1b\[1;1H", played.shown)) >= 1  # the clock's line was painted meanwhile
+        with open_reader(place) as reader:
+            assert len(reader.requests(only_open=True)) == 1
     played.send("q")
     assert played.end() == 0
 
 
 def test_a_resize_is_followed_at_once(played: Played) -> None:
-    played.wait_for("q: quit")
+    assert "decide whether the plan still holds" not in played.wait_for("q: quit")
     played.shown = ""
     played.resize(150, 40)
     os.kill(played.process.pid, signal.SIGWINCH)
     assert "\x1b[2J" in played.wait_for("\x1b[40;1H")
-    assert "luck alone would show a difference this large" in played.shown
+    assert "decide whether the plan still holds" in played.shown
     played.send("q")
     assert played.end() == 0
 
@@ -207,7 +272,7 @@ def test_without_colour_no_colour_is_sent(place: Path) -> None:
     try:
         shown = program.wait_for("q: quit")
         assert not re.search(r"\x1b\[[0-9;]*(3[0-9]|9[0-7])m", shown)
-        assert "tail heavier than planned" in shown
+        assert "tail heavier since about" in shown
         program.send("q")
         assert program.end() == 0
     finally:

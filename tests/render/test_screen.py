@@ -13,64 +13,65 @@ from rich.text import Text
 
 from monitor.cli.watching import StoreWatch
 from monitor.render.focus import Focused, focus_page
-from monitor.render.frame import ABNORMAL, Look, as_text
+from monitor.render.frame import ABNORMAL, Asked, Look, as_text
 from monitor.render.help import help_page
 from monitor.render.screen import overview
 from monitor.render.seen import Seen, StreamSeen
 from monitor.render.words import fit_word
-from tests.stores import NOW, chain, make, settings_fact, stream
+from storage.facts import AlarmMoved
+from tests.stores import HOUR, NOW, chain, make, settings_fact, stream
 
 FRAME_80 = """\
 Tailgauge  orders.db                                     1 Dec 2026 14:05:09 WET
-2 of 6 streams need a look.
+2 of 6 streams need a look: 3 alarms, 1 acknowledged, 1 shelved; 1 stream
+flagged by refits alone.
 
-north-dock: tail heavier than planned since 12:00 WET, 3 refits in a row; one
-  event in 10 000 now passes 13 000 units, planned 5 200, limit 6 000.
-north-dock: limit 6 000 units expected to be passed 2.1 times in 30 days
-  (tolerable: 1).
-east-dock: a power law does not describe the tail, since 13:00 WET, 2 refits
-  in a row; by the power law with cut-off one event in 10 000 passes 1 400
-  units, not 3 300.
+\\x1b[2J[red]dock\\u202e\\x0d\\x0anight: no events, seen at 13:00 WET; none for 1
+  hour, usually one every 12 seconds (unacknowledged)
+north-dock: tail heavier since about 12:00 WET (11:00 to 13:00); one event in
+  10 000 passes 13 000 units now (planned 5 200), above the limit of 6 000 units
+  (unacknowledged)
+north-dock: the limit of 6 000 units has been passed more often than agreed,
+  seen at 13:00 WET; now once in 14 days (agreed once in 30 days) (acknowledged
+  by ana)
+(2 refits) east-dock: a power law does not describe the tail, since 13:00 WET,..
 
-  stream          state    alpha  95 %       base      p   level  newest  last 6
-  north-dock      heavier   2.21  2.15-2.27  2.50   0.31  13 000    12 s  ===HHH
-  east-dock       misfit    2.70  2.62-2.78  2.45  0.002   3 300   1 min  ====MM
-  \\x1b[2J[red]..  steady    2.48  2.42-2.54  2.45   0.62   5 500     1 h  ======
-> south-dock      steady    2.48  2.42-2.54  2.45   0.62   5 500     4 s  ======
-  west-dock       new      not judged yet: 312 events so far
-  倉庫-十番       steady    2.51  2.45-2.57  2.50   0.62   5 000     7 s  =====
-
-
-
+  stream                   state      alpha  base      p   level  newest  last 6
+  \\x1b[2J[red]dock\\u202..  no events   2.48  2.45   0.62   5 500     1 h  ======
+  north-dock               heavier     2.21  2.50   0.31  13 000    12 s  ===HHH
+  east-dock                2 refits    2.70  2.45  0.002   3 300   1 min  ====MM
+> south-dock               steady      2.48  2.45   0.62   5 500     4 s  ======
+  west-dock                new        not judged yet: 312 events so far
+  倉庫-十番                steady      2.51  2.50   0.62   5 000     7 s  =====
 orders: 199 955 events, 17 late; 5 of 200 000 lines (0.0025 %) rejected: 3 not
   JSON, 2 zero
-Up, Down: move   Enter: look closer   h: help   q: quit"""
+Up, Down: move   Enter: look closer   a: acknowledge   h: help   q: quit"""
 
 FRAME_60 = """\
 Tailgauge  orders.db                 1 Dec 2026 14:05:09 WET
-2 of 6 streams need a look.
+2 of 6 streams need a look: 3 alarms, 1 acknowledged, 1
+shelved; 1 stream flagged by refits alone.
 
-north-dock (and 1 more): tail heavier than planned since 1..
-east-dock: a power law does not describe the tail, since 1..
+\\x1b[2J[red]dock\\u202e\\x0d\\x0anight: no events, seen at 13..
+and 2 alarms or faults more
 
-  stream      state   alpha  base     p  level  newest
-  south-dock  steady   2.48  2.45  0.62  5 500     4 s
-> west-dock   new     not judged yet: 312 events so far
-  4 streams not shown (3 above, 1 below)
+  stream     state  alpha  base  p  level  newest  last
+> west-dock  new    not judged yet: 312 events so far
+  5 streams not shown (4 above, 1 below)
 orders: 199 955 events, 17 late; 5 of 200 000 lines
-Up, Down: move   Enter: look closer   h: help   q: quit"""
+Up, Down: move   Enter: look closer   a: acknowledge   h:.."""
 
 FOCUS_80_ASCII = """\
 north-dock  (orders.db)                                  1 Dec 2026 14:05:09 WET
-Tail heavier than planned since 12:00 WET, 3 refits in a row.
-Limit 6 000 units expected to be passed 2.1 times in 30 days (tolerable: 1).
-Alpha 2.21 (2.15 to 2.27), planned 2.50; the tail starts at 120 units (as good
-  from 96 to 140) and holds 2 310 of 81 050 events.
-p 0.31 (0.27 to 0.35): good. A true power law would fit this badly 31 times in
-  100, so nothing speaks against it (large p is good).
-One event in 10 000 passes 13 000 units (10 000 to 16 000), planned 5 200,
-  limit 6 000.
-  (6 more lines in a taller terminal)
+north-dock: tail heavier since about 12:00 WET (11:00 to 13:00); one event in
+  10 000 passes 13 000 units now (planned 5 200), above the limit of 6 000 units
+  (unacknowledged)
+north-dock: the limit of 6 000 units has been passed more often than agreed,
+  seen at 13:00 WET; now once in 14 days (agreed once in 30 days) (acknowledged
+  by ana)
+Watch: exponent 7.3 % of the way to speaking, the others 2.1 % or less; not
+  watched: no events, rejects, body.
+  (12 more lines in a taller terminal)
 Share of events at or above a size: # data, + fit, b baseline, | limit
         all ###################                                   limit 6 000 |
                               #######                                         |
@@ -84,7 +85,33 @@ Share of events at or above a size: # data, + fit, b baseline, | limit
 window end (WET)  alpha  95 %          p   1 in 10 000  result
 2026-12-01 13:00   2.21  2.15-2.27  0.31  13 000 units  heavier than planned
 2026-12-01 14:00   2.21  2.15-2.27  0.31  13 000 units  heavier than planned
-Left, Right: other streams   Esc: back   h: help   q: quit"""
+Left, Right: other streams   w: watch   a: acknowledge   Esc: back   h: help"""
+
+WATCH_80 = """\
+north-dock  (orders.db)                                  1 Dec 2026 14:05:09 WET
+north-dock: tail heavier since about 12:00 WET (11:00 to 13:00); one event in..
+seen: north-dock: the limit of 6 000 units has been passed more often than agr..
+How far each rule is on its way to an alarm, 14:00 WET
+  exponent       7.3 %  #.........  alarm open, since then far from speaking
+  tail share     2.1 %  ..........  far from speaking
+  fit            2.1 %  ..........  far from speaking
+  level          2.1 %  ..........  alarm open, since then far from speaking
+  single event                      no way to show, speaks at once
+  rival          2.1 %  ..........  far from speaking
+  no events: not watched: the usual hours are not known yet
+  rejects: not watched: lines were not counted
+  body: not watched: the usual number of events is not known yet
+Promise: at most one false alarm in 540 days on average, all rules of this
+  stream together; rests on independence: a plan brings no past to measure it
+  on.
+Alarms of this stream, newest first
+  13:00 WET: exponent, heavier, unacknowledged; last: the condition outlasted
+    the on-delay, 13:00 WET
+  13:00 WET: level, heavier, acknowledged; last: acknowledged by ana ("dock
+    told"), 13:01 WET
+Notes of people
+  12:00 WET ana: new customer\\x1b[2J at north-dock
+Left, Right: other streams   w: tail   a: acknowledge   Esc: back   h: help"""
 
 
 def test_the_overview_at_80x24(watch: StoreWatch) -> None:
@@ -108,21 +135,70 @@ def test_help_fits_80x24_and_ends_with_the_caution() -> None:
     assert text.endswith("Esc: back   q: quit")
 
 
-def test_colour_only_for_what_is_abnormal(watch: StoreWatch) -> None:
-    for line in overview(watch.look(), NOW, Look(width=80, height=24), live=True):
+def test_the_watch_of_one_stream_at_80x24_in_ascii(watch: StoreWatch) -> None:
+    look = Look(width=80, height=24, ascii_only=True)
+    frame = focus_page(watch.focus("north-dock"), watch.look(), NOW, look, live=True, side="watch")
+    assert as_text(frame) == WATCH_80
+
+
+def test_colour_only_for_what_is_abnormal_and_new(watch: StoreWatch) -> None:
+    for line in overview(watch.look(), NOW, Look(width=170, height=40), live=True):
         coloured = [line.plain[span.start : span.end] for span in line.spans if span.style == ABNORMAL]
-        quiet = any(name in line.plain for name in ("south-dock", "west-dock", "倉庫"))
+        quiet = any(name in line.plain for name in ("south-dock", "west-dock", "倉庫", "east-dock"))
         assert not (quiet and coloured)
-        if line.plain.startswith(("north-dock:", "east-dock:")):
+        if line.plain.startswith(("north-dock: tail", "\\x1b[2J[red]dock\\u202e\\x0d\\x0anight: no events")):
             assert coloured == [line.plain]
+        if line.plain.startswith("north-dock: the limit"):  # acknowledged
+            assert coloured == []
 
 
 def test_a_bigger_terminal_tells_more(watch: StoreWatch) -> None:
     text = as_text(overview(watch.look(), NOW, Look(width=150, height=50)))
-    assert "luck alone would show a difference this large 2 times in 10 000" in text
+    assert "Look for what changed then, and decide whether the plan still holds." in text
+    assert "    unacknowledged; medium priority, rule exponent, raised 13:00 WET" in text
+    assert "    acknowledged by ana; high priority, rule level, raised 13:00 WET" in text
     assert "Better described by: power law with cut-off." in text
-    assert "10 000-16 000" in text
+    assert "exponent 50 %" in text
     assert "level: one event in 10 000 passes it, in units; limit 6 000" in text
+    assert "watch: 5 of 6 streams watched; false alarms at most one in 90 days on average" in text
+    close = as_text(focus_page(watch.focus("north-dock"), watch.look(), NOW, Look(width=150, height=60)))
+    assert "luck alone would show a difference this large 2 times in 10 000" in close
+    assert "how fast large sizes get rare" in close
+    assert "Share of events at or above a size" in close
+
+
+def test_what_an_alarm_tells_is_not_told_again_by_a_flag(watch: StoreWatch) -> None:
+    text = as_text(overview(watch.look(), NOW, Look(width=170, height=60)))
+    assert "heavier than planned" not in text  # the exponent's alarm tells it
+    assert "expected to be passed" not in text  # and the level's alarm this
+    assert "(2 refits) east-dock: a power law does not describe the tail" in text
+    assert "7 100" not in text  # shelved: counted only
+    assert "3 alarms, 1 acknowledged, 1 shelved; 1 stream flagged by refits alone." in text
+
+
+def test_an_old_alarm_names_the_day_that_its_times_belong_to(watch: StoreWatch) -> None:
+    text = as_text(overview(watch.look(), NOW + 24 * HOUR, Look(width=80, height=24)))
+    assert "1 Dec, north-dock: tail heavier since about 12:00 WET" in text
+
+
+@pytest.mark.parametrize("name", ["north-dock", "south-dock"])
+def test_every_reading_on_the_page_is_the_stores(watch: StoreWatch, name: str) -> None:
+    focused = watch.focus(name)
+    seen = focused.stream.watch
+    assert seen is not None
+    lines = as_text(focus_page(focused, watch.look(), NOW, Look(width=150, height=50), side="watch")).splitlines()
+    for reading in seen.readings:
+        line = next(line for line in lines if line.startswith(f"  {reading.rule}  "))
+        if reading.ln_statistic is None:
+            assert "%" not in line
+            continue
+        shown = re.search(r"([\d.]+) %  ([#.]{10})", line)
+        assert shown is not None
+        assert abs(float(shown[1]) - 100 * reading.way) <= half_a_place(shown[1])
+        assert abs(shown[2].count("#") - 10 * reading.way) <= 0.5
+        assert (reading.direction or "") in line or reading.way < 0.1
+    assert len([line for line in lines if "not watched: " in line]) == len(seen.watch.unwatched)
+    assert f"in {seen.promised_days:.0f} days on average" in " ".join(lines)
 
 
 def test_rejected_lines_are_shown_in_a_tall_terminal_and_harmless(watch: StoreWatch) -> None:
@@ -177,7 +253,10 @@ def test_no_line_is_wider_and_no_frame_higher_than_the_terminal(
     for live in (False, True):
         assert_fits(overview(seen, NOW, look, selected=name, live=live, notice="Cannot be read now."), look)
     for one in seen.streams:
-        assert_fits(focus_page(watch.focus(one.name), seen, NOW, look, live=True), look)
+        for side in ("tail", "watch"):
+            asked = Asked("Acknowledge?", "größer " * 30)
+            page = focus_page(watch.focus(one.name), seen, NOW, look, live=True, side=side, asked=asked)  # type: ignore[arg-type]
+            assert_fits(page, look)
     assert_fits(help_page(look), look)
 
 
@@ -191,6 +270,11 @@ def renamed(seen: Seen, name: str) -> Seen:
     return msgspec.structs.replace(seen, streams=(changed(seen.streams[1]), *seen.streams[2:]))
 
 
+def noted(move: AlarmMoved, name: str) -> AlarmMoved:
+    """The same row of a history with another author and note."""
+    return msgspec.structs.replace(move, by=name, note=name)
+
+
 @settings(max_examples=60, deadline=None)
 @given(st.text(st.characters(), min_size=1, max_size=90), st.integers(20, 160))
 def test_no_stream_name_breaks_a_frame(watch: StoreWatch, name: str, width: int) -> None:
@@ -199,6 +283,13 @@ def test_no_stream_name_breaks_a_frame(watch: StoreWatch, name: str, width: int)
     assert_fits(overview(seen, NOW, look, selected=name, live=True), look)
     focused = Focused(stream=seen.streams[0], feed=None, drawing=None, samples=())
     assert_fits(focus_page(focused, seen, NOW, look, live=True), look)
+    told = watch.focus("north-dock")
+    past = tuple(
+        msgspec.structs.replace(one, moves=tuple(noted(move, name) for move in one.moves)) for one in told.past
+    )
+    notes = tuple(msgspec.structs.replace(note, by=name, text=name) for note in told.notes)
+    focused = msgspec.structs.replace(told, past=past, notes=notes)
+    assert_fits(focus_page(focused, seen, NOW, look, live=True, side="watch"), look)
 
 
 def half_a_place(text: str) -> float:

@@ -17,7 +17,20 @@ from monitor.render.safe import width_of
 from monitor.render.seen import Refit, baseline_of, decode_refit
 from monitor.render.tables import Column, RefitRow, history_csv, history_table, laid_out, unit_suffix
 from storage.facts import BaselineSet
-from tests.stores import EVIL, HEAVIER, HOUR, LAST_PANE, NOW, against, first_window, gof, judged, planned, refit
+from tests.stores import (
+    EVIL,
+    HEAVIER,
+    HOUR,
+    LAST_PANE,
+    NOW,
+    WIDE,
+    against,
+    first_window,
+    gof,
+    judged,
+    planned,
+    refit,
+)
 
 HEAVY = judged(2.21, 0.06, gof(0.31, 0.27, 0.35))
 
@@ -132,6 +145,17 @@ def test_the_document_of_the_screen_is_json_with_the_same_findings(watch: StoreW
     by_name = {one["stream"]: one for one in document["streams"]}
     assert document["at"] == "2026-12-01T14:05:09Z"
     assert [one["kind"] for one in by_name["north-dock"]["needs_a_look"]] == ["heavier", "limit"]
+    alarms = by_name["north-dock"]["alarms"]
+    assert [one["rule"] for one in alarms] == ["exponent", "level"]  # not acknowledged first, whatever the priority
+    assert [one["alarm"] for one in by_name["north-dock"]["needs_a_look"]] == [one["id"] for one in alarms]
+    assert [(one["refits"], one["alarm"]) for one in by_name["east-dock"]["needs_a_look"]] == [(2, None)]
+    assert [one["state"] for one in by_name[WIDE]["alarms"]] == ["shelved"]
+    watched = by_name["south-dock"]["watch"]
+    assert watched["promised_days"] == 450.0
+    assert {one["rule"]: one["direction"] for one in watched["readings"]}["exponent"] == "heavier"
+    assert {one["rule"] for one in watched["unwatched"]} == {"no events", "rejects", "body"}
+    assert by_name["west-dock"]["watch"] is None
+    assert by_name["west-dock"]["not_watched"].startswith("Not watched yet: a baseline needs")
     assert by_name["south-dock"]["needs_a_look"] == []
     assert by_name["south-dock"]["age_seconds"] == 4.0
     assert by_name["west-dock"]["refit"] is None

@@ -42,8 +42,17 @@ def alarm_message(alarm: Alarm, facts: PlanFacts) -> str:
     """
     parts = [f"{_head(alarm, facts)}{_since(alarm, facts.timezone)}", _figures(alarm, facts)]
     first = f"{plain(alarm.stream)}: {'; '.join(part for part in parts if part)}."
+    return first + _response(alarm)
+
+
+def _response(alarm: Alarm) -> str:
     response = plain(alarm.response).strip().rstrip(".")
-    return f"{first} {response[:1].upper()}{response[1:]}." if response else first
+    return f" {response[:1].upper()}{response[1:]}." if response else ""
+
+
+def without_response(alarm: Alarm) -> str:
+    """The message without what to do, and without its full stop: what is told where there is little room."""
+    return plain(alarm.message).removesuffix(_response(alarm)).removesuffix(".")
 
 
 def notice_text(kind: NoticeKind, alarm: Alarm, at: int, facts: PlanFacts) -> str:

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Iterable, Sequence
+from itertools import takewhile
 from typing import Literal
 
 import msgspec
@@ -24,7 +25,7 @@ from monitor.render.words.common import (
     second_opinion,
     size_with_unit,
 )
-from monitor.tail.judgement import Level
+from monitor.tail.judgement import Level, Limit
 from monitor.watch.flags import Flag
 
 Kind = Literal["heavier", "limit", "fit", "lighter", "failed", "skipped", "rejected lines"]
@@ -34,12 +35,16 @@ MANY_REJECTED = 0.1
 
 
 class Finding(msgspec.Struct, frozen=True, kw_only=True):
-    """One thing that needs a look: a headline, what it means in sizes, and sentences with the figures behind it."""
+    """What refits say of a stream: a headline, what it means in sizes, and sentences with the figures behind it.
+
+    refits  the last so many refits in a row say it; 0 where it is no judgement: a refit that failed, a feed
+    """
 
     kind: Kind
     headline: str
     consequence: str = ""
     detail: tuple[str, ...] = ()
+    refits: int = 0
 
     @property
     def sentence(self) -> str:
@@ -69,14 +74,15 @@ def flags_in_words(refit: Refit, source: str | None) -> list[str]:
     return [flag_words(flag, source, doubtful=refit.doubtful) for flag in refit.flags]
 
 
-def since_when(refits: Iterable[Refit], holds: Callable[[Refit], bool], zone: str, now: int) -> str:
-    """'since 12:00 WET, 3 refits in a row'. Refits without a judgement neither break nor lengthen the row."""
-    newest_first = [refit for refit in reversed(tuple(refits)) if refit.judgement is not None]
-    run: list[Refit] = []
-    for refit in newest_first:
-        if not holds(refit):
-            break
-        run.append(refit)
+def run_of(refits: Iterable[Refit], holds: Callable[[Refit], bool]) -> list[Refit]:
+    """The last refits in a row that say it, newest first; those without a judgement neither break nor lengthen it."""
+    newest_first = (refit for refit in reversed(tuple(refits)) if refit.judgement is not None)
+    return list(takewhile(holds, newest_first))
+
+
+def since_when(refits: Sequence[Refit], run: Sequence[Refit], zone: str, now: int) -> str:
+    """'since 12:00 WET, 3 refits in a row', of the run that run_of found."""
+    newest_first = [refit for refit in refits if refit.judgement is not None]
     if not run:
         return ""
     when = short_moment(run[-1].end, zone, now)
@@ -88,11 +94,11 @@ def since_when(refits: Iterable[Refit], holds: Callable[[Refit], bool], zone: st
 
 
 def findings(stream: StreamSeen, zone: str, now: int) -> list[Finding]:
-    """Everything about a stream that needs a look, the most pressing first; empty for a quiet one."""
+    """Everything that refits say of a stream beyond the usual, the most pressing first; empty for a quiet one."""
     found = []
     latest, judged = stream.latest, stream.judged
     if judged is not None:
-        if judged.exponent_flag is not None:
+        if judged.exponent_flag is not None and not stream.accepted:
             found.append(_exponent_finding(stream, judged, judged.exponent_flag, zone, now))
         if judged.fit_flag is not None:
             found.append(_fit_finding(stream, judged, zone, now))
@@ -109,10 +115,11 @@ def _exponent_finding(stream: StreamSeen, refit: Refit, flag: Flag, zone: str, n
     def same(other: Refit) -> bool:
         return other.exponent_flag is not None and other.exponent_flag.direction == flag.direction
 
-    since = since_when(stream.refits, same, zone, now)
-    head = f"tail {flag.direction or 'different'} {than_baseline(source)} {since}"
+    run = run_of(stream.refits, same)
+    head = f"tail {flag.direction or 'different'} {than_baseline(source)} {since_when(stream.refits, run, zone, now)}"
     return Finding(
         kind=direction,
+        refits=len(run),
         headline=head,
         consequence=level_against(stream),
         detail=tuple(text for text in (_alpha_against(stream, refit, flag), *_caution(stream)) if text),
@@ -179,7 +186,8 @@ def _caution(stream: StreamSeen) -> list[str]:
 
 def _fit_finding(stream: StreamSeen, refit: Refit, zone: str, now: int) -> Finding:
     assert refit.judgement is not None
-    since = since_when(stream.refits, lambda other: other.fit_flag is not None, zone, now)
+    run = run_of(stream.refits, lambda other: other.fit_flag is not None)
+    since = since_when(stream.refits, run, zone, now)
     better = [rival.tail for rival in refit.judgement.rivals if rival.favours == "rival"]
     detail = []
     if refit.judgement.gof is not None:
@@ -190,8 +198,9 @@ def _fit_finding(stream: StreamSeen, refit: Refit, zone: str, now: int) -> Findi
         detail.append("No rival describes it clearly better. Sizes read off the power law are in doubt.")
     verb = "it is doubtful whether a power law describes" if refit.doubtful else "a power law does not describe"
     return Finding(
-        kind="fit", headline=f"{verb} the tail, {since}", consequence=_by_rival(stream), detail=tuple(detail)
-    )
+        kind="fit", headline=f"{verb} the tail, {since}", consequence=_by_rival(stream), detail=tuple(detail),
+        refits=len(run),
+    )  # fmt: skip
 
 
 def _by_rival(stream: StreamSeen) -> str:
@@ -207,10 +216,15 @@ def _by_rival(stream: StreamSeen) -> str:
 def _limit_finding(stream: StreamSeen) -> list[Finding]:
     judgement = stream.judgement
     limit = None if judgement is None else judgement.limit
-    if limit is None or limit.at_most is None or limit.expected <= limit.at_most:
+    if limit is None or not _passed_too_often(limit):
         return []
+    run = run_of(stream.refits, lambda other: other.judgement is not None and _passed_too_often(other.judgement.limit))
     text = f"limit {size_with_unit(limit.size, stream.plan.unit)} {passages_words(limit)}"
-    return [Finding(kind="limit", headline=text, detail=(f"{chance_words(limit).capitalize()}.",))]
+    return [Finding(kind="limit", headline=text, detail=(f"{chance_words(limit).capitalize()}.",), refits=len(run))]
+
+
+def _passed_too_often(limit: Limit | None) -> bool:
+    return limit is not None and limit.at_most is not None and limit.expected > limit.at_most
 
 
 def _no_result(refit: Refit, zone: str, now: int) -> Finding:

@@ -94,6 +94,8 @@ def fit_law(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> LawFit
         if not np.all(np.isfinite(gradient)) or not np.all(np.isfinite(information)):
             return None
         step = _step(gradient, information)
+        if not np.all(np.isfinite(step)):
+            return None
         for place in law.logs:
             step = step * min(1.0, _LONGEST_STEP / max(abs(float(step[place])), _LONGEST_STEP))
         promised = float(gradient @ step)
@@ -108,10 +110,11 @@ def fit_law(law: Density, theta: Floats, data: TailData, nodes: Nodes) -> LawFit
 
 
 def _step(gradient: Floats, information: Floats) -> Floats:
-    """The scoring step, solved in units of each parameter's own information."""
+    """The scoring step, solved in units of each parameter's own information; not finite where that is nought."""
     unit = np.sqrt(np.maximum(np.diag(information), 1e-300))
     scaled = information / np.outer(unit, unit) + 1e-13 * np.eye(len(unit))
-    step: Floats = np.linalg.solve(scaled, gradient / unit) / unit
+    with np.errstate(over="ignore", invalid="ignore"):  # a parameter that the data say nothing about: no step, no fit
+        step: Floats = np.linalg.solve(scaled, gradient / unit) / unit
     return step
 
 

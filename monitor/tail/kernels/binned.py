@@ -128,3 +128,27 @@ def binned_bound(ladder: Ladder, p: int, q: int, j: int, above: bool) -> Any:
         return events[j] / events[p] - exp_apart(-h) - SLACK
     h = (reach + 1.0 + width) * _log1p(events[p] / ladder.spread[q])
     return exp_apart(-h) - events[j + 1] / few - SLACK
+
+
+@kernel
+def binned_walk(ladder: Ladder, row: int, end: int, worst: Worst, limit: float) -> Any:
+    """The first of candidates row..end-1 that neither witness of `worst` shows to be farther than `limit`; `end` if
+    there is none.
+
+    Where events are many, distances are small beside what a cell holds: bounds for blocks then say nothing, but
+    neighbouring candidates still are far off at the same row, one by one.
+    """
+    place = ladder.place
+    events = ladder.events
+    over = worst.above_row
+    under = worst.below_row
+    for i in range(row, end):
+        share = 1.0 / events[i]
+        rate = _log1p(events[i] / ladder.spread[i])
+        if over > i and events[over] * share - exp_nonpositive(-rate * (place[over] - place[i])) - SLACK > limit:
+            continue
+        beyond = place[under] + 1.0 - place[i]
+        if under > i and exp_nonpositive(-rate * beyond) - events[under + 1] * share - SLACK > limit:
+            continue
+        return i
+    return end

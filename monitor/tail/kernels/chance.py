@@ -20,6 +20,13 @@ _GOLDEN = np.uint64(0x9E3779B97F4A7C15)
 _MIX_1 = np.uint64(0xBF58476D1CE4E5B9)
 _MIX_2 = np.uint64(0x94D049BB133111EB)
 _UNIT = 1.0 / 9007199254740992.0  # 2^-53
+_FEW = 128
+
+REJECTED_FROM = 10.0
+"""Binomials of at least this mean are drawn by rejection."""
+
+MIDDLE = 0.86
+"""Share of the squeeze where one uniform number is enough."""
 
 
 @helper
@@ -178,30 +185,79 @@ def _log_weight(n: float, p: float, k: float, mode: float) -> Any:
 
 
 @kernel
-def _by_rejection(state: Any, n: float, p: float) -> Any:
-    """Binomial by transformed rejection with squeeze, for n p >= 10 and p <= 1/2.
+def _accepted(n: float, p: float, k: float, log_height: float) -> Any:
+    """Does a point at this height, relative to the mode's, lie under the binomial law at k? First by two bounds."""
+    mode = np.floor((n + 1.0) * p)
+    away = abs(k - mode)
+    if away > 15.0:
+        variance = n * p * (1.0 - p)
+        margin = (away / variance) * (((away / 3.0 + 0.625) * away + 1.0 / 6.0) / variance + 0.5)
+        normal = -away * away / (2.0 * variance)
+        if log_height < normal - margin:
+            return True
+        if log_height > normal + margin:
+            return False
+    return log_height <= _log_weight(n, p, k, mode)
 
-    Algorithm BTRS of W. Hoermann, The generation of binomial random variates, Journal of Statistical
-    Computation and Simulation 46 (1993) 101-110; constants of that paper.
+
+@kernel
+def by_rejection(state: Any, n: float, p: float, v: float) -> Any:
+    """Binomial by transformed rejection with squeeze and decomposition, for n p >= REJECTED_FROM and p <= 1/2.
+
+    Algorithm BTRD of W. Hoermann, The generation of binomial random variates, Journal of Statistical
+    Computation and Simulation 46 (1993) 101-110; constants of that paper. v is a uniform number: mostly it alone
+    settles the count, under the squeeze, in the middle of the table. float64.
     """
     spread = np.sqrt(n * p * (1.0 - p))
     b = 1.15 + 2.53 * spread
     a = -0.0873 + 0.0248 * b + 0.01 * p
     c = n * p + 0.5
     sure = 0.92 - 4.2 / b
-    alpha = (2.83 + 5.1 / b) * spread
-    mode = np.floor((n + 1.0) * p)
     while True:
-        u = uniform(state) - 0.5
-        v = uniform(state)
+        u = v / sure
+        if u <= MIDDLE:
+            u -= 0.5 * MIDDLE
+            return np.floor((2.0 * a / (0.5 - abs(u)) + b) * u + c)
+        if u >= 1.0:
+            u = uniform(state) - 0.5
+        else:  # the rest of the squeeze: the two ends of u, 0.43 and more from the middle
+            u -= 0.5 + 0.5 * MIDDLE
+            u = (0.5 if u >= 0.0 else -0.5) - u
+            v = uniform(state) * sure
         us = 0.5 - abs(u)
-        k = np.floor((2.0 * a / us + b) * u + c)
-        if k < 0.0 or k > n:
-            continue
-        if us >= 0.07 and v <= sure:
-            return int64(k)
-        if logarithm(v * alpha / (a / (us * us) + b)) <= _log_weight(n, p, k, mode):
-            return int64(k)
+        if us > 0.0:
+            k = np.floor((2.0 * a / us + b) * u + c)
+            height = v * (2.83 + 5.1 / b) * spread / (a / (us * us) + b)
+            if 0.0 <= k <= n and _accepted(n, p, k, logarithm(height)):
+                return k
+        v = uniform(state)
+
+
+@helper
+def _ones(x: Any) -> Any:
+    """How many of 64 bits are set."""
+    x = x - ((x >> np.uint64(1)) & np.uint64(0x5555555555555555))
+    x = (x & np.uint64(0x3333333333333333)) + ((x >> np.uint64(2)) & np.uint64(0x3333333333333333))
+    x = (x + (x >> np.uint64(4))) & np.uint64(0x0F0F0F0F0F0F0F0F)
+    return int64((x * np.uint64(0x0101010101010101)) >> np.uint64(56))
+
+
+@kernel
+def _by_bits(state: Any, n: int, p: float) -> Any:
+    """Binomial of up to 64 trials of chance p < 1, all compared with p at once, bit after bit of its binary digits:
+    a trial is settled at the first digit in which it differs from p."""
+    digits = np.uint64(p * 18446744073709551616.0)  # 2^64
+    open_trials = ~np.uint64(0) >> np.uint64(64 - n)
+    below = np.uint64(0)
+    while open_trials != np.uint64(0) and digits != np.uint64(0):
+        bits = word(state)
+        if digits >> np.uint64(63):
+            below |= open_trials & ~bits
+            open_trials &= bits
+        else:
+            open_trials &= ~bits
+        digits = digits << np.uint64(1)
+    return _ones(below)
 
 
 @kernel
@@ -211,15 +267,20 @@ def binomial(state: Any, n: float, p: float) -> Any:
         return int64(0)
     if p >= 1.0:
         return int64(n)
+    if n <= _FEW:
+        return _by_bits(state, min(int64(n), int64(64)), p) + (_by_bits(state, int64(n) - 64, p) if n > 64 else 0)
     q = p if p <= 0.5 else 1.0 - p
     trials = np.float64(n)
-    k = int64(_by_waiting(state, trials, q)) if trials * q < 10.0 else _by_rejection(state, trials, q)
+    if trials * q < REJECTED_FROM:
+        k = int64(_by_waiting(state, trials, q))
+    else:
+        k = int64(by_rejection(state, trials, q, uniform(state)))
     return k if p <= 0.5 else int64(n - k)
 
 
 # -- draws with replacement
 @kernel
-def _pick_one_by_one(state: Any, draws: int, owner: Any, total: Any, counts: Any) -> None:
+def picked(state: Any, draws: int, owner: Any, total: Any, counts: Any) -> None:
     """Histogram of `draws` uniform picks among `total` events; owner[e] is the row of event e (empty: row e).
 
     Two 32-bit picks from each 64-bit word, without bias (D. Lemire, ACM TOMACS 29 (2019) 3).
@@ -238,40 +299,6 @@ def _pick_one_by_one(state: Any, draws: int, owner: Any, total: Any, counts: Any
             event = int64(product >> np.uint64(32))
             counts[event if same else int64(owner[event])] += 1
             done += 1
-
-
-@kernel
-def _pick_by_rows(state: Any, draws: int, weights: Any, counts: Any) -> None:
-    """The same histogram by one binomial a row: the cost is that of the rows, not of the draws."""
-    left = int64(draws)
-    weight_left = 0.0
-    for i in range(weights.size):
-        weight_left += weights[i]
-    for i in range(counts.size):
-        if left == 0:
-            return
-        c = binomial(state, left, weights[i] / weight_left)
-        counts[i] = c
-        left -= c
-        weight_left -= weights[i]
-
-
-@kernel
-def resampled(state: Any, draws: int, weights: Any, owner: Any, counts: Any) -> None:
-    """Histogram `counts` of `draws` events drawn with replacement from rows holding `weights` events.
-
-    Parameters: weights int64 (k,); owner int32 (events,) row of each event when the picks are to be made one
-    by one, of length 1 when each row holds one event, else empty: then one binomial is drawn a row.
-    """
-    counts[:] = 0
-    if draws == 0:
-        return
-    if owner.size == 1:
-        _pick_one_by_one(state, draws, owner[:0], weights.size, counts)
-    elif owner.size > 1:
-        _pick_one_by_one(state, draws, owner, owner.size, counts)
-    else:
-        _pick_by_rows(state, draws, weights, counts)
 
 
 def key_of(seed: int, purpose: int) -> Any:

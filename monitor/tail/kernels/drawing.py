@@ -3,7 +3,7 @@
 Sorted draws come from Renyi's representation: the gaps of n ordered exponentials are independent exponentials of
 means 1/n, 1/(n-1), ..., 1 (A. Renyi, Acta Mathematica Hungarica 4 (1953) 191). ln(size/xmin) of a measured tail is
 exponential; a whole size is the largest v with P(X >= v) >= exp(-E), E exponential; a cell of the grid is the floor of
-an exponential. Where cells hold many events each, their counts are binomials, one cell after another.
+an exponential. Where cells hold many events each, the tail is split among them (splitting.py).
 """
 
 from __future__ import annotations
@@ -13,9 +13,10 @@ from typing import Any
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_nonpositive, exponential, log_ratio, logarithm
-from monitor.tail.kernels.chance import binomial, exponential_draw
+from monitor.tail.kernels.chance import exponential_draw
 from monitor.tail.kernels.compiling import helper, int64, kernel
 from monitor.tail.kernels.ladder import MEASURED, WHOLE, Ladder
+from monitor.tail.kernels.splitting import split
 from monitor.tail.kernels.whole import survival
 
 _LARGEST_EXACT = 4503599627370496.0  # 2^52: beyond, neighbouring whole numbers need not be told apart
@@ -101,22 +102,25 @@ def _put(rows: Any, at: Any, base: int, place: float, count: int) -> Any:
 
 
 @kernel
-def _binned_tail(rows: Any, base: int, tail: int, recipe: Any, state: Any) -> Any:
-    """Counts of cells from xmin on, while an empty cell is rarer than a full one; the rest draw by draw."""
-    chance = 1.0 - exp_nonpositive(-recipe.rate)
-    cell = recipe.start
+def _binned_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, space: Any) -> Any:
+    """Counts of cells from xmin on, as far as they hold some events each; the rest draw by draw."""
     left = tail
     at = base
-    while left * chance >= 1.0:
-        count = binomial(state, left, chance)
-        if count > 0:
-            at = _put(rows, at, base, cell, count)
-            left -= count
-        cell += 1.0
+    if steps.cells > 0:
+        first = steps.tree.size
+        split(space.state, tail, steps.tree, space.held, space.noise)
+        for k in range(steps.cells):
+            count = space.held[first + k]
+            rows.place[at] = recipe.start + k
+            rows.events[at] = count
+            rows.spread[at] = 0.0
+            at += int64(count > 0.0)  # a cell without events is overwritten by the next
+        left = int64(space.held[first + steps.cells])
+    edge = recipe.start + steps.cells
     height = 0.0
     for r in range(left):
-        height += exponential_draw(state) / (left - r)
-        at = _put(rows, at, base, cell + np.floor(height / recipe.rate), int64(1))
+        height += exponential_draw(space.state) / (left - r)
+        at = _put(rows, at, base, edge + np.floor(height / recipe.rate), int64(1))
     settle(rows, base, at)
     return at
 
@@ -162,40 +166,38 @@ def _whole_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: A
 
 
 @kernel
-def _whole_cells_tail(rows: Any, base: int, tail: int, steps: Any, state: Any) -> Any:
-    """Counts of the grid's cells from xmin on, one binomial after another."""
-    left = tail
+def _whole_cells_tail(rows: Any, base: int, tail: int, steps: Any, space: Any) -> Any:
+    """Counts of the grid's cells from xmin on."""
     at = base
-    for k in range(steps.hazard.size):
-        if left == 0:
-            break
-        count = binomial(state, left, steps.hazard[k])
-        if count == 0:
+    first = steps.tree.size
+    split(space.state, tail, steps.tree, space.held, space.noise)
+    for k in range(steps.cells):
+        count = space.held[first + k]
+        if count == 0.0:
             continue
         rows.place[at] = steps.place[k]
         rows.beyond[at] = steps.beyond[k]
         rows.events[at] = count
         rows.spread[at] = count * steps.offset[k]
         rows.within[at] = count * steps.variance[k]
-        left -= count
         at += 1
     settle(rows, base, at)
     return at
 
 
 @kernel
-def draw_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any, scratch: Any, state: Any) -> Any:
+def draw_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any, space: Any) -> Any:
     """Fill rows base.. with `tail` draws from the fitted law; returns the row after the last."""
     if tail == 0:
         rows.events[base] = 0.0
         return base
     if recipe.law == MEASURED:
-        return _measured_tail(rows, base, tail, recipe, state)
+        return _measured_tail(rows, base, tail, recipe, space.state)
     if recipe.law == WHOLE:
-        if steps.hazard.size > 0:
-            return _whole_cells_tail(rows, base, tail, steps, state)
-        return _whole_tail(rows, base, tail, recipe, steps, law, scratch, state)
-    return _binned_tail(rows, base, tail, recipe, state)
+        if steps.cells > 0:
+            return _whole_cells_tail(rows, base, tail, steps, space)
+        return _whole_tail(rows, base, tail, recipe, steps, law, space.law_scratch, space.state)
+    return _binned_tail(rows, base, tail, recipe, steps, space)
 
 
 @kernel

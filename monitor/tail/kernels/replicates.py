@@ -15,11 +15,12 @@ from typing import Any
 
 import numpy as np
 
-from monitor.tail.kernels.chance import binomial, resampled, start
+from monitor.tail.kernels.chance import binomial, start
 from monitor.tail.kernels.compiling import int64, kernel
 from monitor.tail.kernels.drawing import anchor, draw_body, draw_tail, part
 from monitor.tail.kernels.ladder import WHOLE, Ladder, Scratch, last_candidate
 from monitor.tail.kernels.scanning import distance_at, nearest, rate_of
+from monitor.tail.kernels.splitting import resampled
 from monitor.tail.kernels.whole import prepared
 
 
@@ -69,7 +70,7 @@ def replicates(recipe: Any, sources: Any, key: Any, first: int, space: Any, kept
     for r in range(kept.distance.size):
         start(space.state, key, first + r)
         tail = binomial(space.state, recipe.n, recipe.share)
-        top = draw_tail(rows, base, tail, recipe, sources.steps, law, space.law_scratch, space.state)
+        top = draw_tail(rows, base, tail, recipe, sources.steps, law, space)
         begin = base
         if recipe.decide and not recipe.given:
             last = last_candidate(rows.events[base : top + 1], recipe.least)
@@ -77,7 +78,7 @@ def replicates(recipe: Any, sources: Any, key: Any, first: int, space: Any, kept
                 kept.distance[r] = 0.0
                 continue
         if recipe.share == 0.0 or not recipe.given:
-            resampled(space.state, recipe.n - tail, body.counts, body.owner, space.counts)
+            resampled(space.state, recipe.n - tail, body, space.held, space.noise, space.counts)
             begin = draw_body(rows, base, top, space.counts, body, space.origin)
         if recipe.given:
             _judge_given(part(rows, anchor(rows, begin, top, recipe.start), top), recipe, kept, r, scratch)

@@ -15,7 +15,9 @@ class Body(NamedTuple):
     place, beyond     float64 (b,)  as in a Ladder; beyond only for whole sizes, else empty
     offset, variance  float64 (b,)  whole sizes: mean of ln(size/place) in the row, and its variance; else empty
     counts            int64 (b,)    events in each row
-    owner             int32         row of each event, for picks one by one; see chance.resampled
+    owner             int32         (events,) row of each event where picks are made one by one, of length 1 where each
+                                    row holds one event, else empty: then the draws are split by the tree
+    tree              float64       see splitting.tree_of; empty where picks are made one by one
     """
 
     place: Any
@@ -24,18 +26,22 @@ class Body(NamedTuple):
     variance: Any
     counts: Any
     owner: Any
+    tree: Any
 
 
 class Steps(NamedTuple):
-    """The fitted law of whole sizes, row by row from xmin on; all empty for measured sizes.
+    """The fitted law, row by row from xmin on; all empty for measured sizes that are not on the grid.
 
-    survival  float64 (k,)  exact sizes: P(X >= xmin + i)
-    hazard    float64 (k,)  on the grid: P(X in the i-th cell | X in it or above), 1 in the last
-    place, beyond, offset, variance  float64 (k,)  on the grid: as in Body
+    survival  float64 (k,)  exact whole sizes: P(X >= xmin + i)
+    tree      float64 (m,)  on the grid: splits the tail among its cells (splitting.tree_of); measured sizes: among the
+                            first `cells` and all further ones together
+    cells     cells that the tree leads to
+    place, beyond, offset, variance  float64 (cells,)  whole sizes on the grid: as in Body
     """
 
     survival: Any
-    hazard: Any
+    tree: Any
+    cells: int
     place: Any
     beyond: Any
     offset: Any
@@ -98,6 +104,7 @@ class Space(NamedTuple):
 
     rows         Ladder of (body + recipe.rows + 3) empty rows; the tail begins at row body + 1
     counts       int64 (body,)      events drawn in each row of the body
+    held, noise  float64        nodes of the larger tree; see splitting.split
     origin       int64 (body + 2,)  the body's row that each row below the tail came from
     state        uint64 (4,)        the generator
     scratch      Scratch of the scan;  law_scratch  Scratch of the fitted law
@@ -105,21 +112,26 @@ class Space(NamedTuple):
 
     rows: Ladder
     counts: Any
+    held: Any
+    noise: Any
     origin: Any
     state: Any
     scratch: Scratch
     law_scratch: Scratch
 
 
-def new_space(recipe: Recipe, body: Body) -> Space:
+def new_space(recipe: Recipe, sources: Sources) -> Space:
     """Space for replicates of `recipe`."""
-    size = body.counts.size
+    size = sources.body.counts.size
+    nodes = max(sources.body.tree.size, sources.steps.tree.size, 1)
     most = size + recipe.rows + 3
     whole = most if recipe.law == WHOLE else 0
     rows = Ladder(recipe.law, np.empty(most), np.empty(whole), np.empty(most + 1), np.empty(most), np.empty(whole))
     return Space(
         rows=rows,
         counts=np.zeros(size, np.int64),
+        held=np.zeros(2 * nodes),
+        noise=np.zeros(nodes),
         origin=np.full(size + 2, -1, np.int64),
         state=np.empty(4, np.uint64),
         scratch=new_scratch(most),

@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import logarithm
-from monitor.tail.kernels.binned import binned_bound, binned_deviations, binned_rate
+from monitor.tail.kernels.binned import binned_bound, binned_deviations, binned_rate, binned_walk
 from monitor.tail.kernels.compiling import helper, int64, kernel
 from monitor.tail.kernels.ladder import (
     BINNED,
@@ -35,6 +35,9 @@ from monitor.tail.kernels.ladder import (
 )
 from monitor.tail.kernels.measured import measured_bound, measured_deviations
 from monitor.tail.kernels.whole import whole_bound, whole_deviations, whole_rate
+
+_WALK = 32
+"""Cells tried one by one before a block of them is tried again."""
 
 
 @kernel
@@ -138,7 +141,13 @@ def nearest(ladder: Ladder, last: int, least_far: float, hint: int, first_hit: b
     worst = Worst(0.0, int64(-1), 0.0, int64(-1))
     while row <= last:
         q = min(row + length - 1, last)
-        if refused(ladder, row, q, worst, best.distance, scratch):
+        if ladder.law == BINNED and length == 1:
+            end = min(row + _WALK, last + 1)
+            row = binned_walk(ladder, row, end, worst, best.distance)
+            if row == end:
+                length = int64(2)
+                continue
+        elif refused(ladder, row, q, worst, best.distance, scratch):
             row = q + 1
             length *= 2
             continue

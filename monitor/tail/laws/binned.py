@@ -9,9 +9,15 @@ import numpy as np
 
 from monitor.tail.kernels.drawing import settle
 from monitor.tail.kernels.ladder import BINNED, Ladder
-from monitor.tail.laws.law import NOTHING, Floats, Law, Rungs
+from monitor.tail.kernels.replicating import Steps
+from monitor.tail.kernels.splitting import fill_geometric, tree_of
+from monitor.tail.laws.law import NO_STEPS, NOTHING, Floats, Law, Rungs
 from monitor.tail.tail_fit import TailFit
 from storage.grid import CELL_WIDTH, HIGHEST_CELL, LOWEST_CELL, cell_of, edges
+
+
+# Cells that hold fewer events than this are drawn event by event.
+_CROWDED = 4.0
 
 
 class Binned(Law):
@@ -49,6 +55,17 @@ class Binned(Law):
         """Log-likelihood of the exponent at a row, up to a constant."""
         n, spread = float(ladder.events[row]), float(ladder.spread[row])
         return lambda alpha: n * log(-expm1(-(alpha - 1.0) * CELL_WIDTH)) - (alpha - 1.0) * CELL_WIDTH * spread
+
+    def steps(self, fit: TailFit) -> Steps:
+        """A tree over the cells that hold some events each."""
+        rate = (fit.alpha - 1.0) * CELL_WIDTH
+        crowd = fit.n_tail * -expm1(-rate) / _CROWDED
+        if crowd < 2.0:
+            return NO_STEPS
+        cells = max(int(log(crowd) / rate), 1)
+        chances = np.empty(cells + 1)
+        fill_geometric(rate, chances)
+        return Steps(NOTHING, tree_of(chances), cells, NOTHING, NOTHING, NOTHING, NOTHING)
 
     def most_rows(self, fit: TailFit, events: int) -> int:
         """Rows that a tail of so many events may fill: a cell beyond has a chance of exp(-45)."""

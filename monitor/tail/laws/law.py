@@ -16,6 +16,7 @@ from monitor.tail.kernels.ladder import Ladder, last_candidate, new_scratch
 from monitor.tail.kernels.replicates import replicates
 from monitor.tail.kernels.replicating import Body, Kept, Recipe, Sources, Space, Steps, new_kept, new_space
 from monitor.tail.kernels.scanning import distance_at, near, nearest, rate_of
+from monitor.tail.kernels.splitting import NO_TREE, tree_of
 from monitor.tail.sample import Sample
 from monitor.tail.tail_fit import NoTail, TailFit
 from storage.grid import cell_of
@@ -191,7 +192,7 @@ class Law(ABC):
             try:
                 space = spaces.pop()
             except IndexError:
-                space = new_space(recipe, body)
+                space = new_space(recipe, sources)
             replicates(recipe._replace(decide=decide), sources, key, begin, space, kept)
             spaces.append(space)
             return Chunk(
@@ -229,19 +230,21 @@ class Law(ABC):
 def body_of(
     place: Floats, counts: Floats, *, beyond: Floats = NOTHING, offset: Floats = NOTHING, variance: Floats = NOTHING
 ) -> Body:
-    """Rows to be drawn from with replacement, with the cheaper way of drawing chosen (see chance.resampled)."""
+    """Rows to be drawn from with replacement, with the cheaper way of drawing chosen (see splitting.resampled)."""
     held = counts.astype(np.int64)
     total = int(held.sum())
+    tree = NO_TREE
     if held.size and total == held.size:
         owner = np.zeros(1, np.int32)
     elif held.size and total <= _EVENTS_A_ROW * held.size:
         owner = np.repeat(np.arange(held.size, dtype=np.int32), held)
     else:
         owner = np.zeros(0, np.int32)
-    return Body(np.ascontiguousarray(place), beyond, offset, variance, held, owner)
+        tree = tree_of(held.astype(np.float64))
+    return Body(np.ascontiguousarray(place), beyond, offset, variance, held, owner, tree)
 
 
-NO_STEPS = Steps(NOTHING, NOTHING, NOTHING, NOTHING, NOTHING, NOTHING)
+NO_STEPS = Steps(NOTHING, NO_TREE, 0, NOTHING, NOTHING, NOTHING, NOTHING)
 
 NO_SPREAD = NoTail(reason="the sizes at and above the given xmin are all the same, so that they show no tail")
 

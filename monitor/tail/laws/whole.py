@@ -13,8 +13,9 @@ from numpy.typing import NDArray
 from monitor.tail.kernels.drawing import settle
 from monitor.tail.kernels.ladder import WHOLE, Ladder, new_scratch
 from monitor.tail.kernels.replicating import Body, Steps
+from monitor.tail.kernels.splitting import tree_of
 from monitor.tail.kernels.whole import fill_survivals, log_normaliser, spread_of_logs
-from monitor.tail.laws.law import NOTHING, Floats, Law, Rungs, body_of
+from monitor.tail.laws.law import NO_STEPS, NOTHING, Floats, Law, Rungs, body_of
 from monitor.tail.sample import Sample
 from monitor.tail.tail_fit import TailFit
 from storage.grid import CELLS_PER_DECADE, cell_of, edges
@@ -109,17 +110,14 @@ class Whole(Law):
         """Survivals of the fitted law, at every integer of a table or at every cell."""
         if self.sample.cells is None:
             values = fit.xmin + np.arange(_TABLE, dtype=np.float64)
-            return Steps(_survivals(fit.alpha, fit.xmin, values), NOTHING, NOTHING, NOTHING, NOTHING, NOTHING)
+            return NO_STEPS._replace(survival=_survivals(fit.alpha, fit.xmin, values))
         assert fit.start_cell is not None
         cells = _cells()
         filled = np.flatnonzero(cells.beyond > cells.place)
         rows = cells.at(filled[filled >= fit.start_cell])
-        survival = _survivals(fit.alpha, fit.xmin, np.append(rows.place, rows.beyond[-1]))
-        alive = survival[:-1] > 0.0
-        hazard = np.ones(rows.place.size)
-        hazard[alive] = 1.0 - survival[1:][alive] / survival[:-1][alive]
-        hazard[-1] = 1.0
-        return Steps(NOTHING, np.clip(hazard, 0.0, 1.0), rows.place, rows.beyond, rows.offset, rows.variance)
+        chances = -np.diff(_survivals(fit.alpha, fit.xmin, rows.place), append=0.0)  # the last cell takes all beyond
+        tree = tree_of(np.maximum(chances, 0.0))
+        return Steps(NOTHING, tree, rows.place.size, rows.place, rows.beyond, rows.offset, rows.variance)
 
 
 def _survivals(alpha: float, xmin: float, values: Floats) -> Floats:

@@ -268,12 +268,14 @@ class AlarmMoved(Fact, frozen=True, kw_only=True):
 
 
 class NoticeQueued(Fact, frozen=True, kw_only=True):
-    """Something that is to be told about an alarm."""
+    """Something that is to be told about an alarm; `data` is the JSON that is sent, the same at every try."""
 
     id: str
     alarm: str
+    stream: str
     kind: str
     at: int
+    data: str
     known_at: int
 
 

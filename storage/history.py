@@ -15,6 +15,7 @@ from urllib.parse import quote
 import msgspec
 from sqlite_utils import Database
 
+from storage.errands import ErrandStood
 from storage.errors import StoreCorrupt
 from storage.facts import (
     AlarmMoved,
@@ -263,6 +264,16 @@ class Reader:
         return [
             NoticeQueued(**{**_without(row, "at_ns"), "at": row["at_ns"]})
             for row in self._rows("select * from notice order by at_ns, id")
+        ]
+
+    def errands(self, *, only_waiting: bool = False) -> list[ErrandStood]:
+        """Which notice is on its way to whom, or has arrived, in the order they are tried."""
+        return [
+            ErrandStood(**{**_without(row, "at_ns"), "at": row["at_ns"]})
+            for row in self._rows(
+                "select * from errand where ? = 0 or state = 'waiting' order by at_ns, notice, receiver",
+                int(only_waiting),
+            )
         ]
 
     def notes(self) -> list[NoteWritten]:

@@ -11,10 +11,9 @@ from __future__ import annotations
 
 import struct
 import zlib
-from collections.abc import Callable, Iterable, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Iterable
+from dataclasses import dataclass
 from hashlib import blake2b
-from itertools import pairwise
 from typing import TypeVar
 
 import msgspec
@@ -53,7 +52,8 @@ class LargeEvent(msgspec.Struct, frozen=True, array_like=True):
         return (-self.size, self.time, self.digest)
 
 
-def _rank(event: LargeEvent) -> tuple[float, int, str]:
+def rank_of(event: LargeEvent) -> tuple[float, int, str]:
+    """The event's rank, where there are many to be sorted."""
     return (-event.size, event.time, event.digest)
 
 
@@ -91,7 +91,7 @@ class Pane:
 EMPTY = Pane(np.empty(0), np.empty(0, np.int64), None, 0, float("nan"), float("nan"), ())
 
 
-def _counted(keys: NDArray[Key], counts: NDArray[np.int64]) -> tuple[NDArray[Key], NDArray[np.int64]]:
+def counted(keys: NDArray[Key], counts: NDArray[np.int64]) -> tuple[NDArray[Key], NDArray[np.int64]]:
     """Distinct keys ascending with their summed counts (integers, hence exact in any order)."""
     order = np.argsort(keys, kind="stable")
     keys, counts = keys[order], counts[order]
@@ -120,160 +120,20 @@ def add(panes: Iterable[Pane], distinct: int) -> Pane:
     late = sum(pane.late for pane in parts)
     smallest = min(pane.smallest for pane in parts)
     largest = max(pane.largest for pane in parts)
-    events = sorted((event for pane in parts for event in pane.largest_events), key=_rank)
+    events = sorted((event for pane in parts for event in pane.largest_events), key=rank_of)
     cells: NDArray[np.int64] | None = None
     if all(pane.cells is None for pane in parts):
-        sizes, counts = _counted(
+        sizes, counts = counted(
             np.concatenate([pane.sizes for pane in parts]), np.concatenate([pane.counts for pane in parts])
         )
         if sizes.size > distinct:
-            cells, counts = _counted(cell_of(sizes), counts)
+            cells, counts = counted(cell_of(sizes), counts)
     else:
         rounded = [_rounded(pane) for pane in parts]
-        cells, counts = _counted(np.concatenate([r[0] for r in rounded]), np.concatenate([r[1] for r in rounded]))
+        cells, counts = counted(np.concatenate([r[0] for r in rounded]), np.concatenate([r[1] for r in rounded]))
     if cells is not None:
         sizes = edges(cells)
     return Pane(sizes, counts, cells, late, smallest, largest, tuple(events[:LARGEST_KEPT]))
-
-
-@dataclass(slots=True)
-class PaneBuilder:
-    """Gathers the events of one pane; `build` makes the additive part of what came since the last `build`.
-
-    The ranks of the largest events are remembered over all parts: an event that is not among the largest of the
-    pane so far cannot be in the end, and need not be described.
-    """
-
-    chunks: list[NDArray[np.float64]] = field(default_factory=list)
-    late: int = 0
-    events: list[LargeEvent] = field(default_factory=list)
-    _top: list[tuple[float, int]] = field(default_factory=list)  # (-size, time) of the largest, in this order
-
-    @property
-    def bar(self) -> float:
-        """Sizes below this cannot be among the largest any more."""
-        return -self._top[-1][0] if len(self._top) == LARGEST_KEPT else 0.0
-
-    def add(
-        self,
-        sizes: NDArray[np.float64],
-        times: NDArray[np.int64],
-        late: int,
-        describe: Callable[[int], tuple[str, str]],
-    ) -> None:
-        """Take events in.
-
-        Parameters: sizes float64 (m,); times int64 (m,), effective, ns; late, how many of them were late;
-        describe(i) gives (digest, place) of event i, asked only for those that may be among the largest.
-        """
-        self.count(sizes, late)
-        self.consider(sizes, times, describe)
-
-    def count(self, sizes: NDArray[np.float64], late: int) -> None:
-        """Take events in; those among them that may be the largest are to be brought to `consider`."""
-        self.chunks.append(sizes)
-        self.late += late
-
-    def consider(
-        self, sizes: NDArray[np.float64], times: NDArray[np.int64], describe: Callable[[int], tuple[str, str]]
-    ) -> None:
-        """Keep by name what is among the largest. Parameters as of `add`."""
-        able = _largest_candidates(sizes, times, self.bar)
-        ranks = list(zip((-sizes[able]).tolist(), times[able].tolist(), strict=True))
-        room = LARGEST_KEPT - len(self._top)
-        if len(ranks) <= room:
-            self._top = sorted([*self._top, *ranks])
-        else:
-            able, ranks = self._best_of(able, ranks)
-        for i, (negative, time) in zip(able, ranks, strict=True):
-            digest, place = describe(i)
-            self.events.append(LargeEvent(-negative, time, digest, place))
-
-    def _best_of(self, able: list[int], ranks: list[tuple[float, int]]) -> tuple[list[int], list[tuple[float, int]]]:
-        """Those of some events, and their ranks, that are among the largest, ties with the last one included."""
-        self._top = sorted([*self._top, *ranks])[:LARGEST_KEPT]
-        last = self._top[-1]
-        kept = [k for k, rank in enumerate(ranks) if rank <= last]
-        return [able[k] for k in kept], [ranks[k] for k in kept]
-
-    def build(self, distinct: int) -> Pane:
-        """The pane of all events taken in since the last time."""
-        return build_panes([self], distinct)[0]
-
-    def _named(self) -> tuple[LargeEvent, ...]:
-        """The events to be kept by name, and none of them a second time."""
-        able = [event for event in self.events if (-event.size, event.time) <= self._top[-1]]
-        self.events = []
-        return tuple(sorted(able, key=_rank)[:LARGEST_KEPT])
-
-
-def build_panes(builders: Sequence[PaneBuilder], distinct: int) -> list[Pane]:
-    """What `build` of each gives, many at once."""
-    sizes = [np.concatenate(builder.chunks) if builder.chunks else np.empty(0) for builder in builders]
-    few = [i for i, held in enumerate(sizes) if held.size < _FEWEST_ALONE]
-    counted: list[tuple[NDArray[np.float64], NDArray[np.int64]]] = [_NOTHING] * len(sizes)
-    for i, held in zip(few, _counted_together([sizes[i] for i in few]), strict=True):
-        counted[i] = held
-    for i, held_sizes in enumerate(sizes):
-        if held_sizes.size >= _FEWEST_ALONE:
-            held_sizes.sort()
-            counted[i] = _runs(held_sizes)
-    return [_built(builder, *held, distinct) for builder, held in zip(builders, counted, strict=True)]
-
-
-_FEWEST_ALONE = 2048  # events that are worth a call of their own
-_NOTHING = (np.empty(0), np.empty(0, np.int64))
-
-
-def _counted_together(
-    parts: Sequence[NDArray[np.float64]],
-) -> list[tuple[NDArray[np.float64], NDArray[np.int64]]]:
-    """Distinct sizes, ascending, and their counts in each part; by two sorts for all of them."""
-    lengths = np.array([part.size for part in parts], np.int64)
-    if not lengths.sum():
-        return [_NOTHING] * len(parts)
-    sizes, owner = np.concatenate(parts), np.repeat(np.arange(lengths.size), lengths)
-    order = np.argsort(sizes)
-    order = order[np.argsort(owner[order], kind="stable")]
-    sizes, owner = sizes[order], owner[order]
-    first = np.flatnonzero(np.concatenate(([True], (sizes[1:] != sizes[:-1]) | (owner[1:] != owner[:-1]))))
-    counts = np.diff(first, append=sizes.size)
-    sizes = sizes[first]
-    cuts = np.searchsorted(owner[first], np.arange(lengths.size + 1)).tolist()
-    return [(sizes[low:high], counts[low:high]) for low, high in pairwise(cuts)]
-
-
-def _runs(ordered: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
-    """Distinct values of ascending ones, and their counts."""
-    first = np.flatnonzero(np.concatenate(([True], ordered[1:] != ordered[:-1])))
-    return ordered[first], np.diff(first, append=ordered.size)
-
-
-def _built(builder: PaneBuilder, sizes: NDArray[np.float64], counts: NDArray[np.int64], distinct: int) -> Pane:
-    if not sizes.size:
-        return EMPTY
-    late, builder.late, builder.chunks = builder.late, 0, []
-    smallest, largest, named = float(sizes[0]), float(sizes[-1]), builder._named()
-    if sizes.size <= distinct:
-        return Pane(sizes, counts, None, late, smallest, largest, named)
-    cells, counts = _counted(cell_of(sizes), counts)
-    return Pane(edges(cells), counts, cells, late, smallest, largest, named)
-
-
-def _largest_candidates(sizes: NDArray[np.float64], times: NDArray[np.int64], bar: float) -> list[int]:
-    """Indices of the events that can be among the largest kept: the top by (size, time), with all ties."""
-    if sizes.size <= LARGEST_KEPT and not bar:
-        return list(range(sizes.size))
-    able = np.flatnonzero(sizes >= bar)
-    if able.size > LARGEST_KEPT:
-        cut = np.partition(sizes[able], able.size - LARGEST_KEPT)[able.size - LARGEST_KEPT]
-        able = able[sizes[able] >= cut]
-    if able.size > LARGEST_KEPT:  # many events of one size: the earliest of them
-        order = np.lexsort((times[able], -sizes[able]))
-        last = able[order[LARGEST_KEPT - 1]]
-        able = able[(sizes[able] > sizes[last]) | (times[able] <= times[last])]
-    found: list[int] = able.tolist()
-    return found
 
 
 def line_digest(line: bytes) -> str:

@@ -84,8 +84,13 @@ def m001_first_tables(db: Database) -> None:
             to_state text not null, cause text not null, by text, note text, known_at integer not null) strict""",
         "create index alarm_change_of on alarm_change (alarm, at_ns)",
         """create table notice (
-            id text primary key, alarm text not null, kind text not null, at_ns integer not null,
-            known_at integer not null) strict""",
+            id text primary key, alarm text not null, stream text not null, kind text not null, at_ns integer not null,
+            data text not null, known_at integer not null) strict""",
+        """create table errand (
+            notice text not null, receiver text not null, alarm text not null, at_ns integer not null,
+            due integer not null, state text not null, tries integer not null, first_try integer, ended_at integer,
+            detail text, known_at integer not null, primary key (notice, receiver)) strict""",
+        "create index errand_waiting on errand (state, at_ns)",
         """create table note (
             id text primary key, at_ns integer not null, by text not null, text text not null,
             known_at integer not null) strict""",

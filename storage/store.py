@@ -19,6 +19,7 @@ import msgspec
 from sqlite_utils import Database
 
 from storage import pane as panes
+from storage.errands import ErrandStood
 from storage.errors import (
     StoreBusy,
     StoreCorrupt,
@@ -209,6 +210,7 @@ class Store:
             (AlarmStood, self._put_alarms),
             (AlarmMoved, self._put_moves),
             (NoticeQueued, self._put_notices),
+            (ErrandStood, self._put_errands),
             (NoteWritten, self._put_notes),
             (KnownAdded, self._put_known),
             (ChangeAccepted, self._put_accepted),
@@ -369,6 +371,10 @@ class Store:
     def _put_notices(self, facts: list[NoticeQueued]) -> None:
         self.db["notice"].insert_all((_renamed(fact, at="at_ns") for fact in facts), ignore=True)
 
+    def _put_errands(self, facts: list[ErrandStood]) -> None:
+        for fact in facts:  # one after the other: the last state of an errand counts
+            self.db["errand"].insert(_renamed(fact, at="at_ns"), replace=True)
+
     def _put_notes(self, facts: list[NoteWritten]) -> None:
         self.db["note"].insert_all((_renamed(fact, at="at_ns") for fact in facts), replace=True)
 
@@ -380,12 +386,24 @@ class Store:
     def _put_accepted(self, facts: list[ChangeAccepted]) -> None:
         self.db["accepted_change"].insert_all((msgspec.structs.asdict(fact) for fact in facts), replace=True)
 
-    def open_requests(self) -> list[tuple[str, str]]:
-        """(id, act) of what people asked for and nobody answered yet, oldest first."""
+    def open_requests(self) -> list[tuple[str, str, str | None]]:
+        """(id, act, alarm as it stands or None) of what people asked for and nobody answered yet, oldest first."""
         with named_errors(self.path):
             return list(
-                self.db.execute("select id, act from request where done is null order by made_at, rowid").fetchall()
+                self.db.execute(
+                    "select request.id, act, alarm.alarm from request"
+                    " left join alarm on alarm.id = json_extract(act, '$.alarm')"
+                    " where done is null order by made_at, request.rowid"
+                ).fetchall()
             )
+
+    def notice(self, notice: str) -> tuple[str, str, int, str] | None:
+        """(stream, kind, at, data) of a notice, None when it is not there."""
+        with named_errors(self.path):
+            found: tuple[str, str, int, str] | None = self.db.execute(
+                "select stream, kind, at_ns, data from notice where id = ?", [notice]
+            ).fetchone()
+        return found
 
     def _put_answers(self, facts: list[RequestAnswered]) -> None:
         for fact in facts:

@@ -5,6 +5,7 @@ The machine itself is monitor.alarms; here its inputs are made of what the watch
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from math import exp
 from typing import Literal
 
@@ -14,9 +15,11 @@ from monitor.alarms.alarm import (
     AcceptChange,
     AddKnown,
     Alarm,
+    AlarmChange,
     Consequence,
     KeepOut,
     Measure,
+    Notice,
     Outcome,
     RestartRule,
     Spoke,
@@ -24,10 +27,10 @@ from monitor.alarms.alarm import (
 from monitor.alarms.decisions import only_this
 from monitor.alarms.known import KnownChange
 from monitor.alarms.machine import raise_alarm, step
-from monitor.alarms.priorities import policy_for
 from monitor.alarms.states import Choice
 from monitor.alarms.stimuli import (
     Acknowledge,
+    Cleared,
     Decide,
     Measured,
     Note,
@@ -39,10 +42,12 @@ from monitor.alarms.stimuli import (
     Ticked,
     Unshelve,
 )
+from monitor.engine.errands import errands_for, reminders
 from monitor.engine.natural import natural_id
 from monitor.engine.state import Posted, State
 from monitor.engine.watching import Told, Watched
 from monitor.plan import StreamPlan
+from monitor.render.alarm_documents import notice_data
 from monitor.render.words.alarm import PlanFacts, alarm_message
 from monitor.watch.rules import Detector, Watch
 from storage.facts import (
@@ -74,12 +79,8 @@ class Act(msgspec.Struct, frozen=True, kw_only=True):
 
 
 def known_of(state: State) -> tuple[KnownChange, ...]:
-    """The known changes of the settings and of people, as the machine takes them."""
-    planned = [
-        KnownChange(start=one.start, end=one.end, streams=one.streams, reason=one.reason, effect=one.effect)
-        for one in state.plan.known
-    ]
-    return (*planned, *state.declared)
+    """The known changes of the settings, of calendars and of people."""
+    return (*state.plan.known, *state.declared)
 
 
 def heed(state: State, stream: str, found: Watched, now: int) -> list[Fact]:
@@ -90,7 +91,7 @@ def heed(state: State, stream: str, found: Watched, now: int) -> list[Fact]:
         spoke = _spoke(state, state.watches[stream], told)
         held = state.alarms.get((stream, spoke.rule))
         if held is None:
-            outcome = _worded(state, raise_alarm(spoke, policy_for(spoke.rule), known))
+            outcome = _worded(state, raise_alarm(spoke, state.plan.policies[spoke.rule], known))
         else:
             outcome = _worded(state, step(held, Speaks(spoke=spoke), spoke.at, known))
         facts += _taken(state, held, outcome, now)
@@ -105,17 +106,48 @@ def heed(state: State, stream: str, found: Watched, now: int) -> list[Fact]:
     return facts
 
 
-def _worded(state: State, outcome: Outcome) -> Outcome:
-    """The outcome with the alarm's message, made of what is known when the rule speaks."""
-    alarm = outcome.alarm
+def queued(state: State, notice: Notice, alarm: Alarm, changes: tuple[AlarmChange, ...], now: int) -> list[Fact]:
+    """A notice with what will be sent, and its errands to those who want to hear of it."""
+    data = msgspec.json.encode(notice_data(notice, alarm, changes, _plan_facts(state, alarm))).decode()
+    facts: list[Fact] = [
+        NoticeQueued(
+            id=notice.id, alarm=notice.alarm, stream=alarm.stream, kind=notice.kind, at=notice.at, data=data,
+            known_at=now,
+        )
+    ]  # fmt: skip
+    return facts + list(errands_for(notice, alarm, state.plan.receivers, now))
+
+
+def _plan_facts(state: State, alarm: Alarm) -> PlanFacts:
     plan = state.plan.stream(alarm.stream, state.streams[alarm.stream].unit)
     held = state.baselines.get(alarm.stream)
-    facts = PlanFacts(
+    return PlanFacts(
         timezone=state.plan.timezone, unit=plan.unit, one_in=plan.one_in[-1], limit=plan.limit,
         planned=held is not None and held.source == "plan",
     )  # fmt: skip
-    worded = msgspec.structs.replace(alarm, message=alarm_message(alarm, facts))
+
+
+def _worded(state: State, outcome: Outcome) -> Outcome:
+    """The outcome with the alarm's message, made of what is known when the rule speaks."""
+    alarm = outcome.alarm
+    worded = msgspec.structs.replace(alarm, message=alarm_message(alarm, _plan_facts(state, alarm)))
     return msgspec.structs.replace(outcome, alarm=worded)
+
+
+def remind(state: State, told: Mapping[tuple[str, str], int], now: int) -> list[Fact]:
+    """Reminders that are due. told: (alarm, receiver) -> when it was last delivered; pairs on their way left out."""
+    facts: list[Fact] = []
+    for due in reminders(state.alarms.values(), state.plan.receivers, told, now):
+        alarm = next(one for one in state.alarms.values() if one.id == due.notice.alarm)
+        data = msgspec.json.encode(notice_data(due.notice, alarm, (), _plan_facts(state, alarm))).decode()
+        facts.append(
+            NoticeQueued(
+                id=due.notice.id, alarm=alarm.id, stream=alarm.stream, kind=due.notice.kind, at=due.notice.at,
+                data=data, known_at=now,
+            )
+        )  # fmt: skip
+        facts.append(due.errand)
+    return facts
 
 
 def pass_time(state: State, now: int) -> list[Fact]:
@@ -129,14 +161,17 @@ def pass_time(state: State, now: int) -> list[Fact]:
     return facts
 
 
-def asked(state: State, request: str, act: Act, now: int) -> list[Fact]:
-    """Carry out what a person asks for, or say why not; the answer is a fact beside what it did."""
+def asked(state: State, request: str, act: Act, closed: Alarm | None, now: int) -> list[Fact]:
+    """Carry out what a person asks for, or say why not; the answer is a fact beside what it did.
+
+    Parameters: closed, the alarm as the store holds it, for acts on one that is no longer open.
+    """
     if act.act == "note" and act.alarm is None:
         note = NoteWritten(id=request, at=act.at if act.at is not None else now, by=act.by, text=act.note, known_at=now)
         return [note, RequestAnswered(id=request, done=True, answer="noted", known_at=now)]
-    held = next((alarm for alarm in state.alarms.values() if alarm.id == act.alarm), None)
+    held = next((alarm for alarm in state.alarms.values() if alarm.id == act.alarm), closed)
     if held is None:
-        answer = "there is no such alarm, or it is closed already"
+        answer = "there is no such alarm"
         return [RequestAnswered(id=request, done=False, answer=answer, known_at=now)]
     outcome = step(held, _stimulus(act, now), now, known_of(state))
     facts = _taken(state, held, outcome, now)
@@ -167,10 +202,12 @@ def _taken(state: State, before: Alarm | None, outcome: Outcome, now: int) -> li
     """The outcome as facts; the state follows it."""
     alarm = outcome.alarm
     key = (alarm.stream, alarm.rule)
-    if alarm.is_open:
-        state.alarms[key] = alarm
-    else:
-        state.alarms.pop(key, None)
+    other = state.alarms.get(key)
+    if other is None or other.id == alarm.id:  # an act on a closed alarm leaves a newer open one alone
+        if alarm.is_open:
+            state.alarms[key] = alarm
+        else:
+            state.alarms.pop(key, None)
     posted = state.watches.get(alarm.stream)
     if posted is not None:
         standing = tuple(
@@ -193,10 +230,8 @@ def _taken(state: State, before: Alarm | None, outcome: Outcome, now: int) -> li
         )
         for change in outcome.changes
     ]  # fmt: skip
-    facts += [
-        NoticeQueued(id=notice.id, alarm=notice.alarm, kind=notice.kind, at=notice.at, known_at=now)
-        for notice in outcome.notices
-    ]
+    for notice in outcome.notices:
+        facts += queued(state, notice, alarm, outcome.changes, now)
     for consequence in outcome.consequences:
         facts += _carried_out(state, alarm.id, consequence, now)
     return facts
@@ -209,12 +244,11 @@ def _carried_out(state: State, alarm: str, consequence: Consequence, now: int) -
             state.since[consequence.stream] = consequence.since
             state.baselines.pop(consequence.stream, None)
             state.watches.pop(consequence.stream, None)
-            return [
-                ChangeAccepted(
-                    id=natural_id("accepted", alarm), stream=consequence.stream, since=consequence.since,
-                    by=consequence.by, note=consequence.note, known_at=now,
-                )
-            ]  # fmt: skip
+            accepted = ChangeAccepted(
+                id=natural_id("accepted", alarm), stream=consequence.stream, since=consequence.since,
+                by=consequence.by, note=consequence.note, known_at=now,
+            )  # fmt: skip
+            return [accepted, *_let_go(state, consequence.stream, now)]
         case RestartRule():
             return _restarted(state, consequence.stream, consequence.rule)
         case AddKnown():
@@ -225,6 +259,14 @@ def _carried_out(state: State, alarm: str, consequence: Consequence, now: int) -
                 reason=consequence.note or "data at fault", effect="not in baseline",
             )  # fmt: skip
             return [_declared(state, change, consequence.by, now)]
+
+
+def _let_go(state: State, stream: str, now: int) -> list[Fact]:
+    """The stream's other alarms compare with what no longer counts: their conditions are gone with it."""
+    facts: list[Fact] = []
+    for held in [alarm for alarm in state.alarms.values() if alarm.stream == stream and alarm.standing]:
+        facts += _taken(state, held, step(held, Cleared(), now, known_of(state)), now)
+    return facts
 
 
 def _declared(state: State, change: KnownChange, by: str, now: int) -> KnownAdded:

@@ -12,7 +12,7 @@ from monitor.engine.grouping import Groups, groups_of
 from monitor.engine.state import Chain, State, Stream, WaitingEvent
 from monitor.engine.stimuli import Arrived, ChainSeen, Lines
 from storage.facts import RejectedSample
-from storage.pane import PaneBuilder
+from storage.gathering import PaneBuilder
 
 TOO_MANY = "one stream too many"
 """Reason under which a line is counted that would open a stream beyond the settings' max_streams."""
@@ -200,7 +200,7 @@ def _consider(
     cuts = np.searchsorted(able, groups.firsts)
     counts = np.diff(cuts, append=able.size)
     sizes, times = sizes[able], times[able]
-    places = (able if groups.order is None else groups.order[able]).tolist()
+    places = able if groups.order is None else groups.order[able]
     for i, low, high in zip(
         np.flatnonzero(counts).tolist(), cuts[counts > 0].tolist(), (cuts + counts)[counts > 0].tolist(), strict=True
     ):
@@ -212,11 +212,11 @@ class _Describe:
 
     __slots__ = ("_describe", "_places")
 
-    def __init__(self, describe: Callable[[int], tuple[str, str]], places: list[int]) -> None:
+    def __init__(self, describe: Callable[[int], tuple[str, str]], places: NDArray[np.int64]) -> None:
         self._describe, self._places = describe, places
 
     def __call__(self, i: int) -> tuple[str, str]:
-        return self._describe(self._places[i])
+        return self._describe(int(self._places[i]))
 
 
 def _streams(state: State, chain: Chain, lines: Lines, groups: Groups, firsts: NDArray[np.int64]) -> list[Stream]:

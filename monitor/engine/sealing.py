@@ -10,7 +10,7 @@ from __future__ import annotations
 from monitor.engine.intake import AHEAD
 from monitor.engine.state import Chain, FeedSet, State
 from storage.facts import Advance, Fact, PanePart, PaneSealed, RefitJob
-from storage.pane import build_panes
+from storage.gathering import build_panes
 
 END_OF_TIME = 2**62
 """The floor of chains that have ended for good; later than any stamp that can be parsed."""

@@ -12,7 +12,7 @@ from monitor.alarms.known import KnownChange
 from monitor.plan import Plan
 from monitor.watch.rules import RuleName, Watch, WatchState
 from storage.facts import BaselineSet, ChainState, RefitJob, RejectedSample, StreamState
-from storage.pane import PaneBuilder
+from storage.gathering import PaneBuilder
 
 FeedSet = frozenset[str]
 

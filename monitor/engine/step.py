@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import msgspec
 
+from monitor.alarms.alarm import Alarm
 from monitor.engine import alarming, intake, posts, refits, retention, sealing
 from monitor.engine.state import State
 from monitor.engine.stimuli import Arrived, Asked, ChainSeen, CommitDue, Ended, Judged, Stimulus
@@ -56,7 +57,8 @@ def _asked(state: State, stimulus: Asked) -> list[Fact]:
     except msgspec.DecodeError as error:
         answer = f"not understood: {error}"
         return [RequestAnswered(id=stimulus.request, done=False, answer=answer, known_at=stimulus.now)]
-    return alarming.asked(state, stimulus.request, act, stimulus.now)
+    alarm = None if stimulus.alarm is None else msgspec.json.decode(stimulus.alarm, type=Alarm)
+    return alarming.asked(state, stimulus.request, act, alarm, stimulus.now)
 
 
 def _silence(state: State, sealed: set[str], now: int) -> list[Fact]:

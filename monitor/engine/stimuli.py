@@ -104,10 +104,11 @@ class Judged:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Asked:
-    """A person asks for something: `act` is JSON of monitor.engine.alarming.Act."""
+    """A person asks for something: `act` is JSON of monitor.engine.alarming.Act, `alarm` that of its alarm, if any."""
 
     request: str
     act: str
+    alarm: str | None
     now: int
 
 

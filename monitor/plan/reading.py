@@ -201,7 +201,6 @@ def _plan(name: str, table: SettingsTable, text: str) -> Plan:
         calendars=_calendars(name, table.known),
         receivers=receivers(name, table.notify, zone),
         policies=policies(name, table.alarm),
-        not_yet=_not_yet(table),
         text=text,
         digest=blake2b(text.encode(), digest_size=16).hexdigest(),
     )
@@ -379,13 +378,3 @@ def _with_effects(name: str, tables: list[KnownTable]) -> Iterator[tuple[str, Kn
         if effect is None:
             raise SettingsError(f'{name}: known[{index}].effect: "{given.effect}" is none of {", ".join(EFFECTS)}.')
         yield f"known[{index}]", given, effect
-
-
-def _not_yet(table: SettingsTable) -> tuple[str, ...]:
-    """Keys that are understood and checked but have no effect in this version."""
-    keys = []
-    if table.known:
-        keys.append("known")
-    keys += [f"notify.{name}" for name in table.notify]
-    keys += [f"alarm.{name}" for name in table.alarm]
-    return tuple(keys)

@@ -101,8 +101,6 @@ class Plan(msgspec.Struct, frozen=True, kw_only=True):
     receivers: tuple[Receiver, ...]
     policies: dict[Rule, Policy]
     """How the alarms of each rule are treated."""
-    not_yet: tuple[str, ...]
-    """Keys that are read and checked, but that this version does not act on."""
     text: str
     digest: str
 

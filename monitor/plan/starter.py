@@ -40,6 +40,20 @@ one_in = 10000                         # tell the size passed once in so many ev
 # keep_refits = "2000d"                # older refits are deleted; else kept for good
 timezone = "UTC"                       # for reading stamps without a zone, and for what people see
 
+false_alarm_every = "90d"              # at most one false alarm in so long on average, all streams and rules together
+
+# [[known]]                            # planned changes: alarms are raised and shown, their notices wait
+# from = 2026-11-27                    # or: calendar = "closures.ics" (iCalendar) instead of from, to and reason
+# to = 2026-11-30
+# streams = "*"
+# reason = "autumn promotion"
+# effect = "hold notices"              # or "not in baseline", "new baseline after"
+
+# [notify.desk]                        # gets each notice as a CloudEvents 1.0 JSON document
+# command = ["./page-the-desk"]        # on its standard input; or: post = "https://...", or syslog = "udp://..."
+# streams = ["north-*"]
+# repeat_after = "4h"                  # reminded while nobody has acknowledged
+
 # [stream."north-dock".plan]           # what was planned on, if it is known: compared from the first window on
 # alpha = 2.5
 # xmin = 120

@@ -46,7 +46,8 @@ def carry_out(path: Path, plan: Plan, act: Act, clock: Clock) -> Answer:
     with store:
         with open_reader(path) as reader:
             state = restore(plan, store.identity.distinct, remembered(reader), clock.now())
-        store.commit(step(state, Asked(request=request, act=text, now=clock.now())))
+        for waiting, wanted, alarm in store.open_requests():
+            store.commit(step(state, Asked(request=waiting, act=wanted, alarm=alarm, now=clock.now())))
     return _answer(path, request) or Answer(
         outcome="queued", words="it is in the store, and will be decided when a daemon runs"
     )

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from monitor.engine import refits
+from monitor.engine import alarming, refits
 from monitor.engine.state import State
 from monitor.engine.step import committed, step
 from monitor.engine.stimuli import Asked, CommitDue, Ended, Judged
 from monitor.service.clock import Clock
 from monitor.service.feeds import OpenFeed
 from monitor.service.log import Log
+from monitor.service.telling import Telling
 from monitor.service.worker import Worker
 from storage.errors import StoreError
 from storage.facts import BaselineSet, ChainState, Fact, Forget, RefitStored
@@ -27,6 +28,8 @@ HURRY_SECONDS = 0.5
 """After an answer the sender's next batch is probably on its way."""
 PAGES_GIVEN_BACK = 2000
 """Free pages returned to the file system after a deletion; what is left is returned after the next."""
+REMIND_SECONDS = 5.0
+"""Between looks for reminders that are due."""
 FIRST_RETRY, LAST_RETRY = 1.0, 60.0
 """Seconds between tries of a commit that failed, doubling."""
 
@@ -51,6 +54,9 @@ class Loop:
         self._started = clock.monotonic()
         self._told_compiling = False
         self._compiled = False
+        self.telling: Telling | None = None
+        """Notices on their way, where the settings name receivers."""
+        self._remind_at = 0.0
 
     def turn(self) -> bool:
         """One round. Returns True when lines came in, False when there was nothing to read."""
@@ -61,14 +67,26 @@ class Loop:
             self.commit()
         self._heed_requests()
         self._poll_worker()
+        self._tell_receivers()
         return active
+
+    def _tell_receivers(self) -> None:
+        """Move notices on; every change of an errand is committed before the next."""
+        if self._pending or self.telling is None:
+            return
+        self._pending = self.telling.turn()
+        if not self._pending and self.clock.monotonic() >= self._remind_at:
+            self._remind_at = self.clock.monotonic() + REMIND_SECONDS
+            self._pending = alarming.remind(self.state, self.telling.told, self.clock.now())
+        if self._pending:
+            self.commit()
 
     def _heed_requests(self) -> None:
         """What people asked for through the store, each answered in a commit of its own."""
         if self._pending:
             return
-        for request, act in self.store.open_requests():
-            self._pending = step(self.state, Asked(request=request, act=act, now=self.clock.now()))
+        for request, act, alarm in self.store.open_requests():
+            self._pending = step(self.state, Asked(request=request, act=act, alarm=alarm, now=self.clock.now()))
             if not self.commit():
                 return
 
@@ -123,6 +141,9 @@ class Loop:
             self._answer(fact)
         if any(isinstance(fact, Forget) for fact in facts):
             self.store.give_back_space(PAGES_GIVEN_BACK)
+        if self.telling is not None:
+            self._pending = self.telling.heard(facts)
+            return self.commit() if self._pending else True
         return True
 
     def _answer(self, fact: Fact) -> None:

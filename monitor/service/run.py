@@ -17,11 +17,13 @@ from monitor.engine.state import State
 from monitor.errors import MonitorError, SettingsError
 from monitor.plan import Plan, read_plan
 from monitor.plan.spans import span_text
+from monitor.service.calendars import with_calendars
 from monitor.service.clock import Clock
 from monitor.service.feeds import OpenFeed, must_exist
 from monitor.service.log import Log
 from monitor.service.loop import Loop
 from monitor.service.notify import ServiceManager
+from monitor.service.telling import Telling
 from monitor.service.worker import Worker
 from storage.errors import StoreFull
 from storage.facts import SettingsTaken
@@ -109,11 +111,17 @@ class _Around:
 def _watch(plan: Plan, asked: Asked, around: _Around) -> Plan | None:
     """Run on one plan. Returns the plan to go on with after SIGHUP, None at the end."""
     store, clock, log = around.store, around.clock, around.log
+    plan = with_calendars(plan, asked.base, clock.now(), log)
+    if asked.finish:
+        plan = msgspec.structs.replace(plan, receivers=())  # old logs are judged, but nobody is called about them
     state = _remember(plan, store, clock, log)
     feeds = _open_feeds(plan, asked.base, state, clock)
     if any(feed.listen is not None for feed in plan.feeds):
         store.make_durable()
     loop = Loop(state, store, feeds, around.worker, clock=clock, log=log)
+    if plan.receivers:
+        with open_reader(store.path) as reader:
+            loop.telling = Telling(plan, store, reader, asked.base, clock=clock, log=log)
     log.info(f"watching {', '.join(feed.name for feed in plan.feeds)} into {store.path}")
     around.manager.tell(f"READY=1\nSTATUS=watching into {store.path}")
     following: Plan | None = None
@@ -126,6 +134,8 @@ def _watch(plan: Plan, asked: Asked, around: _Around) -> Plan | None:
     finally:
         for feed in feeds:
             feed.close()
+        if loop.telling is not None:
+            loop.telling.stop()
     if loop.failing:
         raise StoreFull(f"{store.path}: the last commit failed. What was read since the one before is read again.")
     return following
@@ -201,8 +211,6 @@ def _remember(plan: Plan, store: Store, clock: Clock, log: Log) -> State:
             ]
         )  # fmt: skip
         log.info("settings taken" if known is None else "settings changed; they count from the next refit on")
-    for key in plan.not_yet:
-        log.warning(f"{key} in the settings is understood, but this version does not act on it")
     return state
 
 

@@ -53,7 +53,6 @@ def test_everything_of_a_full_file_is_understood() -> None:
     assert plan.everywhere.limit_at_most is not None
     assert plan.everywhere.limit_at_most.period == 30 * DAY
     assert plan.known[0].start == 1_795_737_600 * SECOND  # 2026-11-27 00:00 in Lisbon, which is UTC in winter
-    assert plan.not_yet == ("known", "notify.desk")
     assert plan.everywhere.false_alarm_every == 90 * DAY
 
 

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import json
+import os
 import random
 from pathlib import Path
 from typing import Any
 
 import pytest
 
+from storage.history import open_reader
 from tests.service.daemon import Daemon, command, export, lines_read, wait_for
 
 SETTINGS = """
@@ -160,3 +162,29 @@ def test_a_rehearsal_raises_the_same_alarms_and_touches_nothing(watched: Path, t
     assert spoke == sorted(spoke)  # a longer budget never speaks earlier
     missing = command("rehearse", "t.toml", "nowhere.jsonl", folder=tmp_path)
     assert missing.returncode == 66
+
+
+def test_receivers_get_each_notice_as_a_cloud_event(watched: Path, tmp_path: Path) -> None:
+    """The daemon on the same log, live: the command is given the alarm on its standard input, once."""
+    told = tmp_path / "told"
+    told.mkdir()
+    script = tmp_path / "tell"
+    script.write_text(f"#!/bin/sh\ncat > {told}/$$.json\n")
+    script.chmod(0o700)
+    notify = '[notify.desk]\ncommand = ["./tell"]\nrules = ["exponent"]\n'
+    (tmp_path / "t.toml").write_text(SETTINGS + notify)
+    (tmp_path / "orders.jsonl").write_bytes((watched / "orders.jsonl").read_bytes())
+    os.utime(tmp_path / "orders.jsonl", (0, 0))  # long silent: the file does not hold the clock back
+    with Daemon(tmp_path) as daemon:
+        wait_for(lambda: any(path.stat().st_size for path in told.iterdir()), seconds=120)
+        assert daemon.stop() == 0
+    events = [json.loads(path.read_text()) for path in told.iterdir()]
+    assert [event["specversion"] for event in events] == ["1.0"]
+    (event,) = events
+    assert event["subject"] == "north"
+    alarm = event["data"]["alarm"]
+    assert (alarm["id"], alarm["rule"]) == (alarms(watched)[0]["id"], "exponent")
+    assert event["data"]["text"] == alarm["message"]
+    with open_reader(tmp_path / "orders.db") as reader:
+        states = [(one.receiver, one.state, one.tries) for one in reader.errands()]
+    assert ("desk", "delivered", 1) in states

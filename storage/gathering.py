@@ -176,7 +176,7 @@ def _largest(
     last = np.minimum(firsts[:-1] + LARGEST_KEPT, firsts[1:]) - 1
     least = np.where(last >= firsts[:-1], sizes[order[np.maximum(last, 0)]], np.inf)
     order = order[sizes[order] >= least[owners[order]]]
-    if order.size <= count * LARGEST_KEPT:
+    if order.size <= 2 * count * LARGEST_KEPT:
         return order
     # Many events of one size: the earliest of them.
     order = np.lexsort((times, -sizes, owners))

@@ -27,8 +27,8 @@ from monitor.service.clock import SystemClock
 from monitor.service.log import Log
 from monitor.service.loop import Loop
 from monitor.service.run import _open_feeds, _remember
+from storage.gathering import PaneBuilder
 from storage.history import open_reader
-from storage.pane import PaneBuilder
 from storage.store import open_store
 from tests.benchmarks.intake import one_line
 
@@ -43,7 +43,7 @@ size = "units"
 time = "placed_at"
 stream = "dock"
 [watch]
-pane = "1h"
+pane = "1d"
 window = "7d"
 max_streams = 20000
 """

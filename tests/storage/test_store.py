@@ -23,8 +23,9 @@ from storage.facts import (
     RejectedSample,
     StreamState,
 )
+from storage.gathering import PaneBuilder
 from storage.history import open_reader
-from storage.pane import PaneBuilder, digest
+from storage.pane import digest
 from storage.schema import VERSION
 from storage.store import PARTS_BEFORE_COMPACTION, SAMPLES_KEPT, Store, open_store
 

@@ -12,7 +12,8 @@ from monitor.tail.judgement import Judgement, Options
 from monitor.tail.sample import Sample
 from monitor.watch import rules
 from storage.facts import StoredPane
-from storage.pane import PaneBuilder, add, digest
+from storage.gathering import PaneBuilder
+from storage.pane import add, digest
 
 HOUR = 3_600_000_000_000
 ORDER = WatchOrder(

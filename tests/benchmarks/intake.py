@@ -19,7 +19,7 @@ import time
 from collections.abc import Callable
 from pathlib import Path
 
-from monitor.parse import LineFormat, Parser, compile_parser
+from monitor.parse import LineFormat, Parser, compile_parser, warm_parsers
 from monitor.sources import FollowFiles, open_source
 
 ROUNDS = 5
@@ -117,6 +117,7 @@ def follow(data: bytes, folder: Path) -> Callable[[], None]:
 
 def main(n: int, folder: Path) -> None:
     """Measure and print the table."""
+    warm_parsers()
     clean = block_of("json", n, 0)
     runs: dict[str, tuple[Callable[[], None], int]] = {"bare json.loads": (bare(clean), n)}
     runs["count newlines"] = (newlines(clean), n)
@@ -125,7 +126,10 @@ def main(n: int, folder: Path) -> None:
         for label, bad in (("clean", 0.0), ("1 % bad", 0.01)):
             data = block_of(name, n, bad)
             header = data.split(b"\n", 1)[0] if name == "csv" else None
-            runs[f"{name}, {label}"] = (parse_all(compile_parser(format_), blocks(data), header), n)
+            plain, compiled = compile_parser(format_), compile_parser(format_, compiled=True)
+            runs[f"{name}, {label}"] = (parse_all(plain, blocks(data), header), n)
+            if name not in ("number", "pattern"):
+                runs[f"{name}, {label}, compiled"] = (parse_all(compiled, blocks(data), header), n)
     best = dict.fromkeys(runs, float("inf"))
     for _ in range(ROUNDS):
         for name, (run, _) in runs.items():
@@ -134,7 +138,7 @@ def main(n: int, folder: Path) -> None:
             best[name] = min(best[name], time.process_time() - start)
     yardstick = best["bare json.loads"]
     for name, seconds in best.items():
-        print(f"{name:<20} {seconds / n * 1e9:8.0f} ns a line   {yardstick / seconds:7.1f} x json.loads")
+        print(f"{name:<28} {seconds / n * 1e9:8.0f} ns a line   {yardstick / seconds:7.1f} x json.loads")
 
 
 if __name__ == "__main__":

@@ -15,19 +15,18 @@ from pathlib import Path
 from rich.console import Console
 
 from demo.settings import SETTINGS
-from demo.summary import summary
+from demo.summary import announced, summary
 from demo.warehouse import DAY, OPENING, script
 from demo.writer import LOG
 from monitor.cli.live import run_live
 from monitor.cli.screen import can_redraw, look_of, one_frame, still_look
 from monitor.cli.watching import StoreWatch
 from monitor.errors import OutputError
-from monitor.render.seen import decode_refit
+from monitor.render.safe import plain
 from monitor.render.times import moment_text
-from monitor.render.words.findings import flag_words
 from monitor.service.clock import ScaledClock
 from monitor.tail.judge import compile_everything
-from storage.history import Reader, open_reader
+from storage.history import open_reader
 
 FULL_SECONDS, FAST_SECONDS = 90.0, 20.0
 DAYS = 10.0
@@ -69,7 +68,7 @@ def tell(story: Story, console: Console) -> None:
             with StoreWatch(settings) as watch:
                 run_live(watch, console, look_of(console), None, clock=clock, over=over)
         else:
-            _tell_flags(folder / "orders.db", console, over)
+            _tell_alarms(folder / "orders.db", console, over)
     _close(settings, console)
 
 
@@ -167,24 +166,19 @@ def _written(folder: Path) -> int | None:
         return None
 
 
-def _tell_flags(store: Path, console: Console, over: Callable[[], bool]) -> None:
-    """Without a terminal to paint on: one line for each first flag of a stream and rule, when it is stored."""
-    told: set[tuple[str, str]] = set()
-    while not over():
+def _tell_alarms(store: Path, console: Console, over: Callable[[], bool]) -> None:
+    """Without a terminal to paint on: each alarm's message, when it is raised."""
+    told: set[str] = set()
+    going_on = True
+    while going_on:
+        going_on = not over()  # what is stored by the end is told as well
         with open_reader(store) as reader:
-            for line in _fresh_flags(reader, told):
-                console.print(line, markup=False, highlight=False)
+            for alarm in announced(reader):
+                if alarm.id not in told:
+                    told.add(alarm.id)
+                    line = f"{moment_text(alarm.raised_at, 'UTC')}  {plain(alarm.message)}"
+                    console.print(line, markup=False, highlight=False)
         time.sleep(0.5)
-
-
-def _fresh_flags(reader: Reader, told: set[tuple[str, str]]) -> Iterator[str]:
-    for stored in reader.refits(last=20):
-        refit = decode_refit(stored)
-        for flag in refit.flags:
-            if (stored.stream, flag.rule) not in told:
-                told.add((stored.stream, flag.rule))
-                source = next((held.source for held in reader.baselines(stored.stream)), None)
-                yield f"{moment_text(refit.end, 'UTC')}  {stored.stream}: {flag_words(flag, source)}"
 
 
 def _close(settings: Path, console: Console) -> None:
@@ -197,5 +191,5 @@ def _close(settings: Path, console: Console) -> None:
         for line in summary(reader, script(DAYS), _written(folder)):
             console.print(line, markup=False, highlight=False)
     console.print("Look further:", markup=False)
-    for command in ("screen", "history --last 5", "screen --stream north"):
+    for command in ("screen", "alarms", "history --last 5", "screen --stream north"):
         console.print(f"  tailgauge {command} --in {settings}", markup=False, highlight=False, soft_wrap=True)

@@ -13,6 +13,8 @@ from math import log
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.alarms.priorities import Rule
+
 HOUR = 3_600_000_000_000
 DAY = 24 * HOUR
 OPENING = int(datetime(2026, 3, 2, tzinfo=UTC).timestamp()) * 1_000_000_000
@@ -42,14 +44,18 @@ class Dock:
 
 @dataclass(frozen=True, slots=True)
 class Change:
-    """Something that happens to a dock at a moment (ns), and what it is in words."""
+    """Something that happens to a dock at a moment (ns), and what it is in words.
+
+    named_by  the rules whose alarms say what happened; shift, of alpha, where that is what happened
+    """
 
     dock: str
     at: int
     words: str
     alpha: float | None = None
     split_above: float | None = None
-    rule: str = "exponent"
+    named_by: tuple[Rule, ...] = ("exponent",)
+    shift: float | None = None
 
 
 DOCKS = (
@@ -66,10 +72,12 @@ def script(days: float) -> tuple[Change, ...]:
         Change(
             "north", OPENING + round(0.55 * days * 24) * HOUR,
             "heavier orders: a new customer moves the exponent from 2.8 to 2.35", alpha=2.35,
+            shift=2.35 - 2.8,
         ),
         Change(
             "south", OPENING + round(0.65 * days * 24) * HOUR,
-            f"a new rule splits every order above {SPLIT_ABOVE:g} kg", split_above=SPLIT_ABOVE, rule="fit",
+            f"a new rule splits every order above {SPLIT_ABOVE:g} kg", split_above=SPLIT_ABOVE,
+            named_by=("fit", "rival"),
         ),
     )  # fmt: skip
 

@@ -231,21 +231,21 @@ def reading_of(ruled: Ruled, name: str, share: float, direction: str | None = No
     )  # fmt: skip
 
 
-def alarm(name: str, rule: str, *stimuli: Stimulus, **spoken: object) -> list[Fact]:
-    """An alarm raised at 13:00 and what was done with it since, as the engine stores it."""
-    spoke = Spoke(stream=name, rule=rule, at=AT, events=90_000, **spoken)  # type: ignore[arg-type]
+def alarm(name: str, rule: str, *stimuli: Stimulus, at: int = AT, **spoken: object) -> list[Fact]:
+    """An alarm and what was done with it since, a minute apart, as the engine stores it."""
+    spoke = Spoke(stream=name, rule=rule, at=at, events=90_000, **spoken)  # type: ignore[arg-type]
     outcomes = [raise_alarm(spoke, POLICIES[rule])]  # type: ignore[index]
     facts = PlanFacts(timezone="Europe/Lisbon", unit="units", one_in=10_000, limit=6_000.0, planned=True)
     worded = msgspec.structs.replace(outcomes[0].alarm, message=alarm_message(outcomes[0].alarm, facts))
     for number, stimulus in enumerate(stimuli):
-        outcomes.append(step(worded, stimulus, AT + (number + 1) * 60 * SECOND))
+        outcomes.append(step(worded, stimulus, at + (number + 1) * 60 * SECOND))
         assert outcomes[-1].refused is None
         worded = outcomes[-1].alarm
     moves = [change for outcome in outcomes for change in outcome.changes]
     return [
         AlarmStood(
-            id=worded.id, stream=name, rule=rule, state=worded.state, raised_at=AT, open=worded.is_open,
-            alarm=msgspec.json.encode(worded).decode(), known_at=AT,
+            id=worded.id, stream=name, rule=rule, state=worded.state, raised_at=at, open=worded.is_open,
+            alarm=msgspec.json.encode(worded).decode(), known_at=at,
         ),
         *(
             AlarmMoved(

@@ -10,6 +10,8 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from msgspec.structs import replace
+
 from monitor.tail import level
 from monitor.tail.empirical import empirical_levels
 from monitor.tail.gof import Bootstrap, Cancelled, Interrupted, Progress
@@ -20,11 +22,16 @@ from monitor.tail.sample import Sample
 from monitor.tail.scan import law_of, why_no_tail
 from monitor.tail.shape import misfit_warning, moment_warnings, shape_warnings
 from monitor.tail.tail_fit import Draws, NoTail, TailFit
+from monitor.tail.wording import counted, grouped
 
 if TYPE_CHECKING:
     from monitor.tail.laws.law import Law
 
 __all__ = ["Interrupted", "Judged", "compile_everything", "judge", "judge_with_draws"]
+
+
+MOST_EXACT = 10_000_000
+"""A replicate of exact sizes draws every event: of more events than this the sizes go onto the grid first."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,6 +74,10 @@ def judge_with_draws(
     cancelled: Callable[[], bool] | None = None,
 ) -> Judged:
     """The same judgement with the bootstrap's refits beside it; no refits without a tail or without replicates."""
+    if sample.cells is None and sample.n > MOST_EXACT and why_no_tail(sample, options) is None:
+        judged = judge_with_draws(sample.on_grid(), options, progress=progress, cancelled=cancelled)
+        said = f"{counted(sample.n)} are more than the {grouped(MOST_EXACT)} that are judged by their exact sizes"
+        return Judged(replace(judged.judgement, assumed=(*judged.judgement.assumed, said)), judged.draws)
     refusal = why_no_tail(sample, options)
     if refusal is not None:
         return Judged(_without_tail(sample, options, refusal), None)
@@ -166,7 +177,7 @@ def _assumed(sample: Sample, options: Options, fit: TailFit, evidence: _Evidence
     if sample.cells is not None:
         said.append("sizes are rounded down to a grid of 512 cells per factor of ten, about 0.45 % apart")
     if fit.chosen:
-        said.append(f"a tail holds at least {options.min_tail} events; its lower end is the nearest in KS distance")
+        said.append(f"a tail holds at least {counted(options.min_tail)}; its lower end is the nearest in KS distance")
     elif sample.cells is not None and fit.xmin != options.xmin:
         said.append(f"the lower end of the tail is given, and begins with its cell of the grid at {fit.xmin:.6g}")
     else:
@@ -186,11 +197,11 @@ def _interval_source(draws: Draws | None, chosen: bool) -> str:
         return "no replicates: the interval of alpha takes the lower end of the tail as known"
     if draws.source == "data":
         return (
-            f"intervals come from {draws.alpha.size} samples drawn from the data themselves, since the power law is "
-            "not plausible"
+            f"intervals come from {counted(draws.alpha.size, 'sample')} drawn from the data themselves, since the "
+            "power law is not plausible"
         )
     own = ", each choosing its own tail" if chosen else ""
-    return f"intervals come from {draws.alpha.size} replicates of the fitted power law{own}"
+    return f"intervals come from {counted(draws.alpha.size, 'replicate')} of the fitted power law{own}"
 
 
 def _fit_warnings(fit: TailFit, alpha_interval: Interval, gof: GoodnessOfFit | None) -> list[str]:
@@ -206,16 +217,17 @@ def _fit_warnings(fit: TailFit, alpha_interval: Interval, gof: GoodnessOfFit | N
         low, high = gof.p_interval
         said.append(
             f"doubtful: p could lie on either side of {gof.rule_out:g} ({low:.3f} to {high:.3f} after "
-            f"{gof.replicates} replicates)"
+            f"{counted(gof.replicates, 'replicate')})"
         )
     return said
 
 
-def compile_everything() -> None:
+def compile_everything(*, whole: bool = True) -> None:
     """Run every compiled loop once on a small sample, so that no later judgement waits for the compiler.
 
-    The first time on a machine this takes seconds; after that the loops come from the cache on disk.
+    The first time on a machine this takes seconds; after that the loops come from the cache on disk. With whole=False
+    what only whole sizes need is left until they are judged.
     """
     from monitor.tail.warm import warm
 
-    warm()
+    warm(whole=whole)

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from storage.grid import edges
+from storage.grid import cell_of, edges
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,6 +33,14 @@ class Sample:
     def resolution(self) -> str:
         """'exact' or 'grid'."""
         return "exact" if self.cells is None else "grid"
+
+    def on_grid(self) -> Sample:
+        """The same events on the grid."""
+        if self.cells is not None:
+            return self
+        cells = cell_of(self.sizes)
+        first = np.flatnonzero(np.diff(cells, prepend=cells[0] - 1))
+        return Sample.of_cells(cells[first], np.add.reduceat(self.counts, first))
 
     @classmethod
     def of_sizes(cls, sizes: NDArray[np.float64]) -> Sample:

@@ -13,6 +13,7 @@ import numpy as np
 from monitor.tail.judgement import Options
 from monitor.tail.sample import Sample
 from monitor.tail.tail_fit import NoTail, TailFit
+from monitor.tail.wording import are, counted, grouped
 
 if TYPE_CHECKING:
     from monitor.tail.laws.law import Law
@@ -58,13 +59,15 @@ def why_no_tail(sample: Sample, options: Options) -> NoTail | None:
     if not np.isfinite(sample.sizes[-1]) or not sample.sizes[0] > 0.0:  # ascending: the ends tell
         return NoTail(reason=f"a size must be a positive number; the smallest here is {sample.sizes[0]:g}")
     if n < options.min_tail:
-        return NoTail(reason=f"{n} events are fewer than the {options.min_tail} that a tail must hold")
+        return NoTail(reason=f"{counted(n)} {are(n)} fewer than the {grouped(options.min_tail)} that a tail must hold")
     if distinct == 1:
-        return NoTail(reason=f"all {n} sizes are {_size(sample.sizes[0])}: there is no tail to speak of")
+        whose = f"all {grouped(n)} sizes are" if n > 1 else "the only size is"
+        return NoTail(reason=f"{whose} {_size(sample.sizes[0])}: there is no tail to speak of")
     if distinct == 2:
         low, high = sample.sizes
         return NoTail(
-            reason=f"the {n} sizes take only two values, {_size(low)} and {_size(high)}: a tail needs at least three"
+            reason=f"the {grouped(n)} sizes take only two values, {_size(low)} and {_size(high)}: a tail needs at "
+            "least three"
         )
     if options.counting == "whole":
         return _why_not_whole(sample)

@@ -15,6 +15,7 @@ from scipy.special import betainc, pdtrc
 
 from monitor.tail.judgement import Interval
 from monitor.tail.sample import Sample
+from monitor.tail.wording import counted, grouped
 from storage.grid import CELL_WIDTH
 
 _PILE_ODDS = 1e-6
@@ -64,8 +65,8 @@ def misfit_warning(n_tail: int, ks_distance: float, p: float, *, rule_out: float
     if p > rule_out or ks_distance >= 0.02:
         return None
     return (
-        f"p is {p:.2g}, but with {n_tail:,} tail events even a slight departure shows: the fitted share of events "
-        f"above a size is nowhere more than {_percent(ks_distance)} of the tail off"
+        f"p is {p:.2g}, but with {counted(n_tail, 'tail event')} even a slight departure shows: the fitted share of "
+        f"events above a size is nowhere more than {_percent(ks_distance)} of the tail off"
     )
 
 
@@ -94,7 +95,10 @@ def _pile_up(sample: Sample, xmin: float) -> str | None:
     if len(sizes) < 3 or counts[-1] < _LEAST_PILE:
         return None
     pile, top = int(counts[-1]), float(sizes[-1])
-    slope = float(counts.sum() / np.sum(counts * (np.log(sizes) - log(sizes[0]))))
+    spread = float(np.sum(counts * (np.log(sizes) - log(sizes[0]))))
+    if spread <= 0.0:  # sizes that differ in their last digits alone have no slope
+        return None
+    slope = float(counts.sum()) / spread
     step = float(np.diff(sizes[-_TOP_SIZES:]).min())
     if sample.cells is not None:
         step = max(step, top * float(np.expm1(CELL_WIDTH)))
@@ -106,8 +110,8 @@ def _pile_up(sample: Sample, xmin: float) -> str | None:
     if odds > log(_PILE_ODDS) or pile < 3 * expected or float(pdtrc(pile - 1, max(expected, 1.0))) > _PILE_ODDS:
         return None
     return (
-        f"{pile:,} of {int(counts.sum()):,} tail events have the largest size, {top:.6g}: it looks like a cap (a "
-        "time-out or a limit); what would lie beyond it cannot be seen, and levels above it are not to be trusted"
+        f"{grouped(pile)} of {grouped(int(counts.sum()))} tail events have the largest size, {top:.6g}: it looks like "
+        "a cap (a time-out or a limit); what would lie beyond it cannot be seen, and levels above it are not to be trusted"
     )
 
 
@@ -134,7 +138,7 @@ def _rounding(sample: Sample, xmin: float) -> str | None:
     odds = step / 10.0 ** (np.ceil(log10(step) - 1e-9) - 1)
     telling = len(units.multiples) * log(odds) >= log(1 / _ROUND_ODDS)
     if step != 1 and step >= _COARSE * xmin and telling:
-        return _rounded_words(f"all {int(units.counts.sum()):,} tail events", step, xmin)
+        return _rounded_words(f"all {grouped(int(units.counts.sum()))} tail events", step, xmin)
     return _heaped(_Units(units.multiples // common, units.counts, step), xmin)
 
 
@@ -167,7 +171,7 @@ def _heaped(units: _Units, xmin: float) -> str | None:
         distinct = int((far & (units.multiples % step == 0)).sum())
         chance = min(2 / step, 0.4)
         if distinct >= 5 and float(betainc(hits, events - hits + 1, chance)) < _ROUND_ODDS:
-            whose = f"{hits / events:.0%} of the {events:,} events above {_FAR * step * units.unit:.6g}"
+            whose = f"{hits / events:.0%} of the {grouped(events)} events above {_FAR * step * units.unit:.6g}"
             return _rounded_words(whose, step * units.unit, xmin)
     return None
 

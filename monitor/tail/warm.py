@@ -11,18 +11,19 @@ from monitor.tail.scan import law_of
 from monitor.tail.tail_fit import NoTail
 
 
-def warm() -> None:
+def warm(*, whole: bool) -> None:
     """Fit and bootstrap one small sample under each law; see judge.compile_everything."""
     numbers = np.arange(1, 41)
     sizes = np.floor(400.0 / numbers)
     measured = Sample.of_sizes(sizes + 0.5)
-    whole = Sample.of_sizes(sizes)
     grid = Sample.of_cells(numbers * 20, numbers[::-1].astype(np.int64))
     for sample, options in (
         (measured, Options(replicates=2, min_tail=5, stop_early=False)),
-        (whole, Options(counting="whole", replicates=2, min_tail=5, stop_early=False)),
+        (Sample.of_sizes(sizes), Options(counting="whole", replicates=2, min_tail=5, stop_early=False)),
         (grid, Options(replicates=2, min_tail=5, stop_early=False)),
     ):
+        if options.counting == "whole" and not whole:
+            continue
         law = law_of(sample, options)
         fit = law.fit()
         if not isinstance(fit, NoTail):

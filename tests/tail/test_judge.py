@@ -114,13 +114,18 @@ def test_it_can_be_cancelled(sizes):
         ([], Options(), "no events"),
         ([5.0] * 100, Options(), "all 100 sizes are 5"),
         ([1.0, 2.0] * 50, Options(), "take only two values, 1 and 2"),
-        ([1.0, 2.0, 3.0], Options(), "3 events are fewer than the 10"),
+        ([1.0, 2.0, 3.0], Options(), "^3 events are fewer than the 10 "),
+        ([1.0], Options(), "^1 event is fewer than the 10 "),
+        ([5.0], Options(min_tail=1), "^the only size is 5: "),
+        ([5.0] * 2000, Options(), "^all 2 000 sizes are 5: "),
+        ([1.0, 2.0, 3.0], Options(min_tail=3000), "^3 events are fewer than the 3 000 "),
+        (list(range(1, 40)), Options(xmin=39.0), "^only 1 event is at or above the given xmin of 39,"),
         ([0.0, 1.0, 2.0, 3.0] * 9, Options(), "must be a positive number"),
         ([-4.0, 1.0, 2.0, 3.0] * 9, Options(), "must be a positive number; the smallest here is -4"),
         ([1.0, 2.0, 3.0, 2.0**54] * 9, WHOLE, "beyond 2\\^53"),
         ([1.0, 2.5, 3.0, 4.0] * 9, WHOLE, "2.5 is not a whole number"),
         (list(range(1, 40)), Options(xmin=35.0), "only 5 events are at or above the given xmin of 35"),
-        (list(range(1, 40)), Options(xmin=1e9), "only 0 events"),
+        (list(range(1, 40)), Options(xmin=1e9), "^no event is at or above"),
         ([1.0, 2.0] + [3.0] * 20, Options(xmin=3.0), "all the same"),
         ([*range(1, 15), 99.0] + [99.0] * 40, Options(min_tail=55), None),
         ([1.0, 2.0, 3.0] + [4.0] * 9, Options(min_tail=12), None),
@@ -144,6 +149,7 @@ EXTREME = {
     "subnormal": lambda rng: 5e-324 * np.arange(1, 60),
     "near the largest double": lambda rng: 1.7e308 * (1 - 1e-3 * np.arange(60) / 60),
     "one giant": lambda rng: np.append(rng.pareto(1.5, 500) + 1, 1e300),
+    "a pile of one size": lambda rng: np.concatenate([np.full(2000, 0.3), 0.3 * (1 + 1.2e-16 * np.arange(40))]),
     "integers beyond 2^53": lambda rng: 2.0**53 + 4 * np.arange(50),
 }
 
@@ -157,6 +163,50 @@ def test_extreme_sizes_give_an_answer_without_a_warning(kind, where):
         judged = judge(sample, options)
         assert judged.reason or judged.alpha > 1
         json.dumps(as_document(judged), allow_nan=False)
+
+
+@pytest.mark.parametrize("counting", ["measured", "whole"])
+def test_a_million_ties_give_an_answer_without_a_warning(counting):
+    """The rivals' fits have hardly anything to go by in the twelve largest, all but alike."""
+    sample = Sample.of_sizes(EXTREME["a million ties"](None))
+    judged = judge(sample, Options(replicates=20, counting=counting))
+    assert judged.alpha > 1
+    json.dumps(as_document(judged), allow_nan=False)
+
+
+@pytest.mark.parametrize("counting", ["measured", "whole"])
+def test_thousands_of_millions_of_events_at_few_sizes_go_onto_the_grid(counting):
+    """Each replicate of exact sizes would draw as many events, one by one."""
+    sizes = np.arange(300.0, 800.0)
+    counts = np.floor(1e13 * sizes**-2.5).astype(np.int64)
+    judged = judge(Sample(sizes, counts), Options(replicates=20, counting=counting))
+    assert (judged.n, judged.resolution) == (counts.sum(), "grid")
+    assert any("are judged by their exact sizes" in sentence for sentence in judged.assumed)
+
+
+def said_of(sizes, **options):
+    return judge(Sample.of_sizes(sizes), Options(rivals=False, **options)).warnings
+
+
+def test_a_cap_and_rounding_are_told_once_in_the_warnings():
+    x = (np.random.default_rng(5).pareto(1.5, 5000) + 1) * 1000
+    assert sum("looks like a cap" in sentence for sentence in said_of(np.minimum(x, 30_000), replicates=50)) == 1
+    (told,) = [sentence for sentence in said_of(np.round(x / 200) * 200, replicates=50) if "multiples" in sentence]
+    assert "multiples of 200" in told
+    assert re.match(r"all \d+ tail events are multiples", told)
+
+
+def test_without_a_tail_the_cap_is_told_all_the_same():
+    judged = judge(Sample(np.array([1.0, 2.0, 3.0]), np.array([5, 5, 400])), Options(xmin=3.0))
+    assert judged.alpha is None
+    assert sum("looks like a cap" in sentence for sentence in judged.warnings) == 1
+
+
+def test_an_infinite_mean_is_told_once():
+    x = np.random.default_rng(6).pareto(0.6, 3000) + 1
+    said = said_of(x, replicates=250)
+    assert sum("mean of this tail" in sentence for sentence in said) == 1
+    assert not any("variance" in sentence for sentence in said)
 
 
 def test_everything_compiles():

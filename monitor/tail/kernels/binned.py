@@ -20,7 +20,7 @@ from __future__ import annotations
 from typing import Any
 
 from monitor.tail.kernels.arithmetic import exp_apart, exp_nonpositive, log_one_plus, logarithm
-from monitor.tail.kernels.compiling import kernel
+from monitor.tail.kernels.compiling import inner
 from monitor.tail.kernels.ladder import PROBES, Ladder, Scratch, Worst, distance_of, noted
 
 SLACK = 1e-12
@@ -30,7 +30,7 @@ _STRIDE = 32
 """Rows looked at together; scratch.grid has room for more."""
 
 
-@kernel
+@inner
 def _log1p(x: float) -> Any:
     """ln(1 + x) for x >= 0."""
     if x < 0.4:
@@ -38,13 +38,13 @@ def _log1p(x: float) -> Any:
     return logarithm(1.0 + x)
 
 
-@kernel
+@inner
 def binned_rate(ladder: Ladder, row: int) -> Any:
     """g of candidate `row`: exponent less one, per cell."""
     return _log1p(ladder.events[row] / ladder.spread[row])
 
 
-@kernel
+@inner
 def _look(ladder: Ladder, row: int, j: int, rate: float, worst: Worst) -> Any:
     """`worst` after comparing data and model at the edges of row j."""
     share = 1.0 / ladder.events[row]
@@ -53,7 +53,7 @@ def _look(ladder: Ladder, row: int, j: int, rate: float, worst: Worst) -> Any:
     return noted(worst, j, ladder.events[j] * share - at, beyond - ladder.events[j + 1] * share)
 
 
-@kernel
+@inner
 def binned_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`.
 
@@ -75,7 +75,7 @@ def binned_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -
     return _all_looked_at(ladder, row, rate, worst, stop, scratch)
 
 
-@kernel
+@inner
 def _all_looked_at(ladder: Ladder, row: int, rate: float, worst: Worst, stop: float, scratch: Scratch) -> Any:
     """`worst` after a walk over the rows in strides; a stride is skipped where its ends show that nothing in it
     can be worse, by the same argument as in measured.py."""
@@ -108,7 +108,7 @@ def _all_looked_at(ladder: Ladder, row: int, rate: float, worst: Worst, stop: fl
     return worst
 
 
-@kernel
+@inner
 def binned_bound(ladder: Ladder, p: int, q: int, j: int, above: bool) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     events = ladder.events
@@ -130,7 +130,7 @@ def binned_bound(ladder: Ladder, p: int, q: int, j: int, above: bool) -> Any:
     return exp_apart(-h) - events[j + 1] / few - SLACK
 
 
-@kernel
+@inner
 def binned_walk(ladder: Ladder, row: int, end: int, worst: Worst, limit: float) -> Any:
     """The first of candidates row..end-1 that neither witness of `worst` shows to be farther than `limit`; `end` if
     there is none.

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_one_plus, log_ratio, logarithm
-from monitor.tail.kernels.compiling import helper, int64, kernel
+from monitor.tail.kernels.compiling import helper, inner, int64, kernel
 
 _GOLDEN = np.uint64(0x9E3779B97F4A7C15)
 _MIX_1 = np.uint64(0xBF58476D1CE4E5B9)
@@ -98,7 +98,7 @@ def _tables() -> tuple[NDArray[np.float64], NDArray[np.float64]]:
 _EDGES, _HEIGHTS = _tables()
 
 
-@kernel
+@inner
 def _exponential_rare(state: Any, layer: Any, x: float) -> Any:
     """The one draw in a hundred that the layer's rectangle does not settle; below 0: draw again."""
     height = _HEIGHTS[layer] + (_HEIGHTS[layer + 1] - _HEIGHTS[layer]) * uniform(state)
@@ -134,7 +134,7 @@ def _log1m(p: float) -> Any:
     return logarithm(1.0 - p)
 
 
-@kernel
+@inner
 def _by_waiting(state: Any, n: float, p: float) -> Any:
     """Binomial by waiting times: failures before each success are geometric. About n p + 1 draws."""
     scale = -1.0 / _log1m(p)
@@ -164,14 +164,14 @@ _STIRLING = np.array(
 )  # fmt: skip
 
 
-@kernel
+@inner
 def _signed_log_ratio(a: float, b: float) -> Any:
     if a >= b:
         return log_ratio(a, b)
     return -log_ratio(b, a)
 
 
-@kernel
+@inner
 def _log_weight(n: float, p: float, k: float, mode: float) -> Any:
     """ln of the binomial probability of k over that of the mode."""
     odds = p / (1.0 - p)
@@ -184,7 +184,7 @@ def _log_weight(n: float, p: float, k: float, mode: float) -> Any:
     )
 
 
-@kernel
+@inner
 def _accepted(n: float, p: float, k: float, log_height: float) -> Any:
     """Does a point at this height, relative to the mode's, lie under the binomial law at k? First by two bounds."""
     mode = np.floor((n + 1.0) * p)
@@ -200,7 +200,7 @@ def _accepted(n: float, p: float, k: float, log_height: float) -> Any:
     return log_height <= _log_weight(n, p, k, mode)
 
 
-@kernel
+@inner
 def by_rejection(state: Any, n: float, p: float, v: float) -> Any:
     """Binomial by transformed rejection with squeeze and decomposition, for n p >= REJECTED_FROM and p <= 1/2.
 
@@ -242,7 +242,7 @@ def _ones(x: Any) -> Any:
     return int64((x * np.uint64(0x0101010101010101)) >> np.uint64(56))
 
 
-@kernel
+@inner
 def _by_bits(state: Any, n: int, p: float) -> Any:
     """Binomial of up to 64 trials of chance p < 1, all compared with p at once, bit after bit of its binary digits:
     a trial is settled at the first digit in which it differs from p."""
@@ -279,7 +279,7 @@ def binomial(state: Any, n: float, p: float) -> Any:
 
 
 # -- draws with replacement
-@kernel
+@inner
 def picked(state: Any, draws: int, owner: Any, total: Any, counts: Any) -> None:
     """Histogram of `draws` uniform picks among `total` events; owner[e] is the row of event e (empty: row e).
 

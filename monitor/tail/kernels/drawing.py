@@ -14,7 +14,7 @@ import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_nonpositive, exponential, log_ratio, logarithm
 from monitor.tail.kernels.chance import exponential_draw
-from monitor.tail.kernels.compiling import helper, int64, kernel
+from monitor.tail.kernels.compiling import helper, inner, int64, kernel
 from monitor.tail.kernels.ladder import MEASURED, WHOLE, Ladder
 from monitor.tail.kernels.splitting import split
 from monitor.tail.kernels.whole import survival
@@ -29,7 +29,7 @@ def gap(law: Any, above: float, here: float) -> Any:
     return log_ratio(above, here) if law == WHOLE else above - here
 
 
-@kernel
+@inner
 def part(rows: Any, begin: int, end: int) -> Any:
     """Rows begin..end-1 as a ladder of their own."""
     whole = rows.law == WHOLE
@@ -65,7 +65,7 @@ def settle(rows: Any, begin: int, end: int) -> None:
             rows.within[i] = inside
 
 
-@kernel
+@inner
 def _measured_tail(rows: Any, base: int, tail: int, recipe: Any, state: Any) -> Any:
     """`tail` ordered draws above xmin in rows base.. ; returns the row after the last."""
     y = rows.place
@@ -101,7 +101,7 @@ def _put(rows: Any, at: Any, base: int, place: float, count: int) -> Any:
     return at + 1
 
 
-@kernel
+@inner
 def _binned_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, space: Any) -> Any:
     """Counts of cells from xmin on, as far as they hold some events each; the rest draw by draw."""
     left = tail
@@ -125,7 +125,7 @@ def _binned_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, space
     return at
 
 
-@kernel
+@inner
 def _far_whole(law: Any, chance: float, guess: float, scratch: Any) -> Any:
     """The largest v with P(X >= v) >= chance, from a guess that is hardly ever more than one off."""
     v = guess
@@ -138,7 +138,7 @@ def _far_whole(law: Any, chance: float, guess: float, scratch: Any) -> Any:
     return v
 
 
-@kernel
+@inner
 def _whole_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any, scratch: Any, state: Any) -> Any:
     """`tail` ordered draws from the zeta law, equal ones in one row."""
     table = steps.survival
@@ -165,7 +165,7 @@ def _whole_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: A
     return at
 
 
-@kernel
+@inner
 def _whole_cells_tail(rows: Any, base: int, tail: int, steps: Any, space: Any) -> Any:
     """Counts of the grid's cells from xmin on."""
     at = base
@@ -185,7 +185,7 @@ def _whole_cells_tail(rows: Any, base: int, tail: int, steps: Any, space: Any) -
     return at
 
 
-@kernel
+@inner
 def draw_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any, space: Any) -> Any:
     """Fill rows base.. with `tail` draws from the fitted law; returns the row after the last."""
     if tail == 0:
@@ -200,7 +200,7 @@ def draw_tail(rows: Any, base: int, tail: int, recipe: Any, steps: Any, law: Any
     return _binned_tail(rows, base, tail, recipe, steps, space)
 
 
-@kernel
+@inner
 def draw_body(rows: Any, base: int, top: int, counts: Any, body: Any, origin: Any) -> Any:
     """Put the body's rows that `counts` hit below the tail (rows base..top-1), walking down; returns the first."""
     whole = rows.law == WHOLE
@@ -230,7 +230,7 @@ def draw_body(rows: Any, base: int, top: int, counts: Any, body: Any, origin: An
     return at
 
 
-@kernel
+@inner
 def anchor(rows: Any, begin: int, end: int, place: float) -> Any:
     """Put a given xmin, holding no event, below the first row at or above it; returns the row it is in."""
     row = begin

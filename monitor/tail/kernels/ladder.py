@@ -7,7 +7,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exponential, logarithm
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.compiling import helper, inner, kernel
 
 PROBES = 8
 """Witnesses remembered: rows at which recent candidates were far off."""
@@ -136,7 +136,7 @@ def better(best: Best, row: int, distance: float) -> Any:
     return distance < best.distance or (distance == best.distance and row < best.row)
 
 
-@kernel
+@inner
 def row_with(events: Any, last: int, wanted: float) -> Any:
     """Smallest row in 0..last with at most `wanted` events at or above it; `last` if there is none."""
     low = 0
@@ -150,7 +150,7 @@ def row_with(events: Any, last: int, wanted: float) -> Any:
     return low
 
 
-@kernel
+@inner
 def start_row(events: Any, last: int, g: int) -> Any:
     """The g-th of STARTS + 1 candidates spread geometrically in their numbers of events."""
     high = logarithm(events[0])
@@ -158,7 +158,7 @@ def start_row(events: Any, last: int, g: int) -> Any:
     return row_with(events, last, exponential(high + (low - high) * g / STARTS) * (1.0 + 1e-12))
 
 
-@kernel
+@inner
 def neighbour_row(events: Any, last: int, row: int, step: float) -> Any:
     """The candidate whose tail holds exp(step) times as many events."""
     return row_with(events, last, exponential(logarithm(events[row]) + step))

@@ -26,7 +26,7 @@ from typing import Any
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_nonpositive, log_in_place
-from monitor.tail.kernels.compiling import helper, int64, kernel
+from monitor.tail.kernels.compiling import helper, inner, int64, kernel
 from monitor.tail.kernels.ladder import PROBES, Ladder, Scratch, Worst, distance_of, noted
 
 SLACK = 1e-12
@@ -71,7 +71,7 @@ def _look(ladder: Ladder, row: int, j: int, worst: Worst) -> Any:
     return noted(worst, j, events[j] * share - model, model - events[j + 1] * share)
 
 
-@kernel
+@inner
 def _probed(ladder: Ladder, row: int, probes: Any) -> Any:
     """Largest deviations at the remembered witnesses and at 16 rows spread over the tail."""
     rows = ladder.place.size
@@ -86,7 +86,7 @@ def _probed(ladder: Ladder, row: int, probes: Any) -> Any:
     return worst
 
 
-@kernel
+@inner
 def _searched(ladder: Ladder, row: int, worst: Worst, ends: Any, scratch: Scratch) -> Any:
     """`worst` after searching the stretch between two rows; ends = (left, right, model at left, model at right)."""
     events = ladder.events
@@ -117,7 +117,7 @@ def _searched(ladder: Ladder, row: int, worst: Worst, ends: Any, scratch: Scratc
     return worst
 
 
-@kernel
+@inner
 def measured_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`; above it, only
     so much is certain that the distance passes `stop`."""

@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 
 from monitor.tail.kernels.chance import binomial, start
-from monitor.tail.kernels.compiling import int64, kernel
+from monitor.tail.kernels.compiling import inner, int64, kernel
 from monitor.tail.kernels.drawing import anchor, draw_body, draw_tail, part
 from monitor.tail.kernels.ladder import WHOLE, Ladder, Scratch, last_candidate
 from monitor.tail.kernels.scanning import distance_at, nearest, rate_of
@@ -24,7 +24,7 @@ from monitor.tail.kernels.splitting import resampled
 from monitor.tail.kernels.whole import prepared
 
 
-@kernel
+@inner
 def _keep_nothing(kept: Any, r: int) -> None:
     """A replicate without candidates is infinitely far."""
     kept.distance[r] = np.inf
@@ -34,7 +34,7 @@ def _keep_nothing(kept: Any, r: int) -> None:
     kept.events[r] = 0.0
 
 
-@kernel
+@inner
 def _keep(kept: Any, r: int, ladder: Ladder, row: int, distance: float, origin: Any) -> None:
     kept.distance[r] = distance
     kept.rate[r] = rate_of(ladder, row)
@@ -43,7 +43,7 @@ def _keep(kept: Any, r: int, ladder: Ladder, row: int, distance: float, origin: 
     kept.events[r] = ladder.events[row]
 
 
-@kernel
+@inner
 def _judge_given(ladder: Ladder, recipe: Any, kept: Any, r: int, scratch: Scratch) -> None:
     """The tail at a given xmin, the ladder's first row; nothing else is a candidate."""
     if ladder.events[0] < max(recipe.least, 2) or ladder.spread[0] <= 0.0:

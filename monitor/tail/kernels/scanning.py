@@ -15,7 +15,7 @@ import numpy as np
 
 from monitor.tail.kernels.arithmetic import logarithm
 from monitor.tail.kernels.binned import binned_bound, binned_deviations, binned_rate, binned_walk
-from monitor.tail.kernels.compiling import helper, int64, kernel
+from monitor.tail.kernels.compiling import helper, inner, int64, kernel
 from monitor.tail.kernels.ladder import (
     BINNED,
     MEASURED,
@@ -50,7 +50,7 @@ def rate_of(ladder: Ladder, row: int) -> Any:
     return whole_rate(ladder, row)
 
 
-@kernel
+@inner
 def deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`; above it, only
     so much is certain that the distance passes `stop`."""
@@ -80,7 +80,7 @@ def refused(ladder: Ladder, p: int, q: int, worst: Worst, limit: float, scratch:
     return False
 
 
-@kernel
+@inner
 def _first_guesses(ladder: Ladder, last: int, best: Best, hint: int, first_hit: bool, scratch: Scratch) -> Any:
     """A good candidate soon: the hint, a few spread over all tails, then a search around the best of them."""
     events = ladder.events
@@ -164,7 +164,7 @@ def nearest(ladder: Ladder, last: int, least_far: float, hint: int, first_hit: b
     return best
 
 
-@kernel
+@inner
 def _edge(ladder: Ladder, last: int, limit: float, scratch: Scratch) -> Any:
     """Last candidate no farther than `limit`, walking down from the top; -1 if there is none."""
     row = last

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from monitor.tail.kernels.arithmetic import exp_nonpositive
 from monitor.tail.kernels.chance import MIDDLE, REJECTED_FROM, binomial, by_rejection, picked, uniform
-from monitor.tail.kernels.compiling import int64, kernel
+from monitor.tail.kernels.compiling import inner, int64, kernel
 
 NO_TREE: NDArray[np.float64] = np.zeros(0)
 
@@ -55,7 +55,7 @@ def fill_geometric(rate: float, out: Any) -> None:
     out[out.size - 1] = here
 
 
-@kernel
+@inner
 def _foreseen(here: Any, shares: Any, noise: Any) -> None:
     """Left halves of a level's nodes wherever one uniform number settles them, -1 elsewhere; written over `noise`.
 
@@ -98,7 +98,7 @@ def split(state: Any, total: int, tree: Any, held: Any, noise: Any) -> None:
         first = end
 
 
-@kernel
+@inner
 def _unforeseen(state: Any, n: float, p: float, v: float) -> Any:
     """The left half of a node that the uniform number v alone does not settle."""
     q = min(p, 1.0 - p)

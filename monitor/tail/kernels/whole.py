@@ -24,7 +24,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_ratio, logarithm
-from monitor.tail.kernels.compiling import int64, kernel
+from monitor.tail.kernels.compiling import inner, int64, kernel
 from monitor.tail.kernels.ladder import PROBES, Ladder, Scratch, Worst, distance_of, noted
 from monitor.tail.kernels.zeta import (
     NEGLIGIBLE,
@@ -55,7 +55,7 @@ class Zeta(NamedTuple):
     series_from: float
 
 
-@kernel
+@inner
 def whole_rate(ladder: Ladder, row: int) -> Any:
     """Exponent less one of candidate `row`."""
     held = ladder.events[row]
@@ -94,7 +94,7 @@ def survival(law: Zeta, v: float, scratch: Scratch) -> Any:
     return scratch.terms[int64(k)] * law.scale
 
 
-@kernel
+@inner
 def _look(ladder: Ladder, row: int, j: int, law: Zeta, worst: Worst, scratch: Scratch) -> Any:
     """(worst after comparing data and model at row j, survival at its lowest size, survival beyond it)."""
     share = 1.0 / ladder.events[row]
@@ -107,7 +107,7 @@ def _look(ladder: Ladder, row: int, j: int, law: Zeta, worst: Worst, scratch: Sc
     )
 
 
-@kernel
+@inner
 def _searched(ladder: Ladder, row: int, law: Zeta, worst: Worst, stop: float, scratch: Scratch, depth: int) -> Any:
     """`worst` after searching all stretches on the stack: between rows l and r the deviations are at most
     W_{l+1}/W_i - P(X >= u_r) and P(X >= u'_l) - W_r/W_i."""
@@ -137,7 +137,7 @@ def _searched(ladder: Ladder, row: int, law: Zeta, worst: Worst, stop: float, sc
     return worst
 
 
-@kernel
+@inner
 def whole_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) -> Any:
     """Largest deviations of candidate `row` (a Worst): exact if the distance is at most `stop`."""
     rows = ladder.place.size
@@ -171,7 +171,7 @@ def whole_deviations(ladder: Ladder, row: int, stop: float, scratch: Scratch) ->
     return _searched(ladder, row, law, worst, stop, scratch, depth)
 
 
-@kernel
+@inner
 def _survival_ratio(s: float, v: float, start: float, series: Any) -> Any:
     """zeta(s, v) / zeta(s, start) for v >= start; NaN where s is."""
     fill_series(s, series)
@@ -179,7 +179,7 @@ def _survival_ratio(s: float, v: float, start: float, series: Any) -> Any:
     return exp_apart(-s * log_ratio(v, start)) * scaled_zeta(s, v, series) / lower
 
 
-@kernel
+@inner
 def whole_bound(ladder: Ladder, p: int, q: int, j: int, above: bool, series: Any) -> Any:
     """Lower bound of the distances of candidates p..q by witness j > q, from above or from below (see top)."""
     events = ladder.events

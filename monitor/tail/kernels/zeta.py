@@ -12,7 +12,7 @@ from __future__ import annotations
 from typing import Any, NamedTuple
 
 from monitor.tail.kernels.arithmetic import exp_apart, log_one_plus, log_ratio, logarithm
-from monitor.tail.kernels.compiling import helper, kernel
+from monitor.tail.kernels.compiling import helper, inner, kernel
 
 NEGLIGIBLE = 1e-18
 """A term this small, and with it all that follow, does not change a sum that begins with 1."""
@@ -70,7 +70,7 @@ def scaled_zeta(s: float, q: float, series: Any) -> Any:
     return total + exp_apart(-s * log_ratio(q + k, q)) * by_series(series, q + k)
 
 
-@kernel
+@inner
 def _remainder(s: float, w: float) -> Any:
     """The series with its first and second derivative in s."""
     inverse = 1.0 / (s - 1.0)

@@ -15,7 +15,6 @@ from monitor.tail.laws.law import NO_STEPS, NOTHING, Floats, Law, Rungs
 from monitor.tail.tail_fit import TailFit
 from storage.grid import CELL_WIDTH, HIGHEST_CELL, LOWEST_CELL, cell_of, edges
 
-
 # Cells that hold fewer events than this are drawn event by event.
 _CROWDED = 4.0
 

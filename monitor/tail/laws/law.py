@@ -19,6 +19,7 @@ from monitor.tail.kernels.scanning import distance_at, near, nearest, rate_of
 from monitor.tail.kernels.splitting import NO_TREE, tree_of
 from monitor.tail.sample import Sample
 from monitor.tail.tail_fit import NoTail, TailFit
+from monitor.tail.wording import are, counted, grouped
 from storage.grid import cell_of
 
 Floats = NDArray[np.float64]
@@ -251,15 +252,16 @@ NO_SPREAD = NoTail(reason="the sizes at and above the given xmin are all the sam
 
 def too_few(n_tail: int, least: int, xmin: float) -> NoTail:
     """The answer when the tail at a given xmin is too small."""
+    whose = f"only {counted(n_tail)} {are(n_tail)}" if n_tail else "no event is"
     return NoTail(
-        reason=f"only {n_tail} events are at or above the given xmin of {xmin:g}, fewer than the {least} a tail must "
-        "hold: give a smaller xmin, or a smaller least tail"
+        reason=f"{whose} at or above the given xmin of {xmin:g}, fewer than the {grouped(least)} a tail must hold: "
+        "give a smaller xmin, or a smaller least tail"
     )
 
 
 def no_candidate(sample: Sample, options: Options) -> NoTail:
     """The answer when no size has enough events at or above it."""
     return NoTail(
-        reason=f"no size has {options.min_tail} events at or above it and a larger size beyond: {sample.n} events of "
-        f"{sample.sizes.size} different sizes leave no candidate tail"
+        reason=f"no size has {counted(options.min_tail)} at or above it and a larger size beyond: "
+        f"{counted(sample.n)} of {grouped(sample.sizes.size)} different sizes leave no candidate tail"
     )

@@ -69,8 +69,8 @@ def padded(text: str, width: int, dots: str = "..", *, right: bool = False) -> s
     return space + text if right else text + space
 
 
-# A space between digits belongs to a number ("10 000") and is no place to break a line.
-_BREAKS = re.compile(r"(?<![0-9]) +| +(?![0-9])")
+# A space between digits ("10 000"), or before a per cent sign, belongs to a number and is no place to break a line.
+_BREAKS = re.compile(r"(?<![0-9]) +| +(?![0-9%])")
 
 
 def wrapped(text: str, width: int, *, indent: str = "", first: str | None = None) -> list[str]:

@@ -66,7 +66,7 @@ def _rule_line(reading: Reading, look: Look, *, alarm: bool) -> Text:
     """'  exponent      49 %  #####.....  half way, towards heavier'."""
     words = way_words(reading)
     if alarm:
-        words = f"alarm open, since then {words}"
+        words = "alarm open" if reading.ln_statistic is None else f"alarm open, since then {words}"
     if look.width >= _ROOM_FOR_WHAT:
         words = f"{padded(LOOKS_AT[reading.rule], 34)}  {words}"
     bar = way_bar(reading.way) if reading.ln_statistic is not None else ""

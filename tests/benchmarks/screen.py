@@ -16,22 +16,35 @@ from collections.abc import Callable
 from pathlib import Path
 
 from monitor.cli.watching import StoreWatch
+from monitor.render.attention import in_order
 from monitor.render.focus import focus_page
 from monitor.render.frame import Look
-from monitor.render.screen import in_order, overview
-from tests.stores import NOW, chain, first_window, make, quiet_refits, settings_fact, stream, warehouse
+from monitor.render.screen import overview
+from tests.stores import (
+    NOW,
+    alarm,
+    chain,
+    first_window,
+    make,
+    quiet_refits,
+    settings_fact,
+    stream,
+    warehouse,
+    watch_of,
+)
 
 ROUNDS = 7
 SMALL, LARGE = Look(width=80, height=24), Look(width=200, height=50)
 
 
 def store_of(path: Path, streams: int) -> Path:
-    """A store with so many quiet streams of 24 refits each."""
+    """A store with so many quiet streams of 24 refits each, all watched; every tenth has an open alarm."""
     with make(path) as store:
         store.commit([settings_fact(), chain()])
         for i in range(streams):
             name = f"dock-{i:04d}"
-            store.commit([stream(name), first_window(name), *quiet_refits(name, 24)])
+            alarms = alarm(name, "body") if i % 10 == 0 else []
+            store.commit([stream(name), first_window(name), *quiet_refits(name, 24), *watch_of(name), *alarms])
     return path
 
 
@@ -73,6 +86,7 @@ def main() -> None:
             (f"one frame of {streams} streams at 80x24", frame(many, SMALL)),
             (f"one frame of {streams} streams at 200x50", frame(many, LARGE)),
             ("one stream closely at 200x50", lambda: focus_page(close, docks.look(), NOW, LARGE, live=True)),
+            ("its watch at 80x24", lambda: focus_page(close, docks.look(), NOW, SMALL, live=True, side="watch")),
             (f"a look at {streams} streams that did not change", many.look),
             ("reading 5 streams that did", lambda: read_anew(few)),
             (f"reading {streams} streams that did, their refits not", lambda: read_anew(many)),

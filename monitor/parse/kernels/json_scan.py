@@ -121,7 +121,7 @@ def _field_of(mask: Any) -> Any:
     return f
 
 
-@helper
+@part
 def _string(p: Any, field: Any, desk: Any) -> Any:
     """Place of the closing quote of the string whose first byte is at p, -1 in doubt; keeps where a field's is."""
     q = next_mark(p)
@@ -136,7 +136,7 @@ def _string(p: Any, field: Any, desk: Any) -> Any:
     return q
 
 
-@helper
+@part
 def _number(p: Any, field: Any, desk: Any) -> Any:
     """End of the number at p, -1 in doubt; keeps what a field needs of it."""
     out = desk + OUT + 24 * field

@@ -29,7 +29,7 @@ _LAST_SECOND = 7_289_568_000  # 2201-01-01, as monitor.parse.stamps has it
 _MOST_WHOLE = 9_007_199_254_740_992  # 2^53: whole numbers up to here are exact doubles
 
 
-@helper
+@part
 def json_number(p: Any, floats: Any, out: Any) -> Any:
     """End of a number without exponent at p, -1 in doubt; the number to out.
 
@@ -111,7 +111,7 @@ def past_number(p: Any) -> Any:
     return p
 
 
-@helper
+@part
 def _two(p: Any) -> Any:
     """Two digits as a number; -1 when they are none."""
     tens, units = byte(p) - 48, byte(p + 1) - 48
@@ -250,7 +250,7 @@ def _offset(p: Any, q: Any) -> Any:
     return offset if byte(p) == 43 else -offset
 
 
-@helper
+@part
 def _rfc3339(p: Any, q: Any, local_is_utc: Any, desk: Any) -> Any:
     """stamp, for the form of RFC 3339; at least 19 bytes."""
     if byte(p + 16) != 58:
@@ -359,7 +359,7 @@ def name_code(p: Any, q: Any, names: Any, known: Any, desk: Any) -> Any:
         slot = (slot + 1) & (slots - 1)
 
 
-@helper
+@part
 def _same(p: Any, q: Any, other: Any) -> Any:
     """Whether the bytes between p and q stand at `other` too."""
     while q - p >= 8:

@@ -121,7 +121,7 @@ def _csv_line(p: Any, desk: Any) -> Any:
         p += 1
 
 
-@helper
+@part
 def _closing_quote(p: Any, delimiter: Any) -> Any:
     """Place of the first quote at or behind p, -1 when the line ends before it."""
     p = next_separator(p, delimiter)
@@ -173,7 +173,7 @@ def _pairs_line(p: Any, desk: Any) -> Any:
             return p if found == kept(desk + EVERYTHING) else np.int64(-1)
 
 
-@helper
+@part
 def _pair_mark(p: Any) -> Any:
     """Place of the first space, tab, newline, quote or equals sign at or behind p."""
     p = next_pair_mark(p)
@@ -243,7 +243,7 @@ def _log_line(p: Any, desk: Any) -> Any:
     return next_newline(q)
 
 
-@helper
+@part
 def _split_request(start: Any, end: Any, places: Any) -> Any:
     """The places of method, path and protocol; whether the request between start and end has these three words."""
     first = next_gap(start)

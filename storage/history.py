@@ -38,7 +38,7 @@ from storage.facts import (
     WatchStood,
 )
 from storage.pane import Pane, add, decode
-from storage.store import check_file, named_errors
+from storage.store import check_file, check_identity, named_errors
 from storage.window import Window, sum_window
 
 
@@ -373,12 +373,23 @@ def open_reader(path: Path) -> Reader:
     check_file(path)
     address = f"file:{quote(str(path.resolve()))}?mode=ro"
     with named_errors(path):
+        connection = _connected(address)
         try:
-            connection = sqlite3.connect(address, uri=True, isolation_level=None, timeout=10.0)
-            connection.execute("select count(*) from sqlite_schema").fetchone()
-        except sqlite3.OperationalError:
-            if path.with_name(path.name + "-wal").exists():
-                raise
-            connection = sqlite3.connect(address + "&immutable=1", uri=True, isolation_level=None)
-            connection.execute("select count(*) from sqlite_schema").fetchone()
+            try:
+                check_identity(connection, path)
+                connection.execute("select count(*) from sqlite_schema").fetchone()
+            except sqlite3.OperationalError:
+                if path.with_name(path.name + "-wal").exists():
+                    raise
+                # A place that cannot be written: nobody else writes there either.
+                connection.close()
+                connection = _connected(address + "&immutable=1")
+                check_identity(connection, path)
+        except BaseException:
+            connection.close()
+            raise
     return Reader(Database(connection, execute_plugins=False), path)
+
+
+def _connected(address: str) -> sqlite3.Connection:
+    return sqlite3.connect(address, uri=True, isolation_level=None, timeout=10.0)

@@ -9,6 +9,7 @@ from __future__ import annotations
 import fcntl
 import os
 import sqlite3
+import stat
 from collections import Counter
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
@@ -72,26 +73,43 @@ class StoreIdentity(msgspec.Struct, frozen=True, kw_only=True):
 
 
 def check_file(path: Path) -> None:
-    """Refuse what is not a store of ours, without touching it.
+    """Refuse what cannot be a store of ours, by what the file system tells alone.
 
-    Raises StoreMissing, StoreForeign, StoreNewer, StoreRefused or StoreCorrupt, each naming the file.
+    The file is not opened: closing it again would drop the locks that SQLite holds on it in this process (POSIX
+    advisory locks belong to the process, not to the descriptor), and another process would then take our log for an
+    orphan's and delete it.
+    Raises StoreMissing, StoreForeign or StoreRefused, each naming the file.
     """
     try:
-        with path.open("rb") as file:
-            head = file.read(100)
+        status = path.stat()
     except FileNotFoundError:
         raise StoreMissing(f"{path}: there is no store here. `tailgauge run SETTINGS` makes one.") from None
-    except (PermissionError, IsADirectoryError) as error:
-        raise StoreRefused(f"{path}: cannot be opened ({error.strerror}).") from None
-    if not head:
+    except OSError as error:
+        raise StoreRefused(f"{path}: cannot be looked at ({error.strerror}).") from None
+    if not stat.S_ISREG(status.st_mode):
+        raise StoreRefused(f"{path}: is not a file. Name the store's file.")
+    if not os.access(path, os.R_OK):
+        raise StoreRefused(f"{path}: cannot be opened (permission denied).")
+    if status.st_size == 0:
         raise StoreForeign(f"{path}: the file is empty, not a store. Move it away, or name another file.")
-    if not head.startswith(b"SQLite format 3\0"):
-        raise StoreForeign(f"{path}: this is not a Tailgauge store. Name another file; this one was left as it is.")
-    if len(head) < 100:
-        raise StoreCorrupt(f"{path}: the file is cut off within its header. Restore it from a backup.")
-    if int.from_bytes(head[68:72], "big") != APPLICATION_ID:
+
+
+def check_identity(connection: sqlite3.Connection, path: Path) -> None:
+    """Refuse a file that is not ours, or of a later version, without changing it.
+
+    Raises StoreForeign or StoreNewer, naming the file.
+    """
+    try:
+        application = connection.execute("pragma application_id").fetchone()[0]
+        version = connection.execute("pragma user_version").fetchone()[0]
+    except sqlite3.OperationalError:
+        raise  # busy, unreadable: told by named_errors
+    except sqlite3.DatabaseError:
+        raise StoreForeign(
+            f"{path}: this is not a Tailgauge store. Name another file; this one was left as it is."
+        ) from None
+    if application != APPLICATION_ID:
         raise StoreForeign(f"{path}: an SQLite file of another program. Name another file; this one was left as it is.")
-    version = int.from_bytes(head[60:64], "big")
     if version > VERSION:
         raise StoreNewer(
             f"{path}: written by a later Tailgauge (schema {version}, this one knows {VERSION}). Use that version."
@@ -128,6 +146,11 @@ class Store:
         """Sentences about damaged parts that were set aside; the caller tells them and empties the list."""
         with named_errors(path):
             connection = sqlite3.connect(str(path), isolation_level=None, timeout=10.0)
+            try:
+                check_identity(connection, path)
+            except BaseException:
+                connection.close()
+                raise
             self.db = Database(connection, execute_plugins=False)
             connection.execute("pragma journal_mode = wal")
             connection.execute("pragma synchronous = normal")

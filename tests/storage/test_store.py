@@ -5,6 +5,8 @@ from __future__ import annotations
 import os
 import shutil
 import sqlite3
+import subprocess
+import sys
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -190,7 +192,7 @@ def test_a_death_at_any_statement_leaves_whole_commits(tmp_path: Path) -> None:
     [
         (b"", StoreForeign, "empty"),
         (b"units\n1\n2\n", StoreForeign, "not a Tailgauge store"),
-        (b"SQLite format 3\0" + b"\0" * 20, StoreCorrupt, "cut off"),
+        (b"SQLite format 3\0" + b"\0" * 20, StoreForeign, "not a Tailgauge store"),
     ],
 )
 def test_strange_files_are_refused_and_left_alone(path: Path, content: bytes, error: type, words: str) -> None:
@@ -346,3 +348,21 @@ def test_the_last_refits_of_a_stream_are_the_newest_ones(path: Path) -> None:
         assert [r.id for r in reader.refits(last=1)] == ["a3", "b3"]
         assert [r.id for r in reader.refits("b", start=2, end=2)] == ["b2"]
         assert reader.refits("c") == []
+
+
+def test_another_process_does_not_take_the_log_of_an_open_store_for_an_orphan(store: Store, path: Path) -> None:
+    """A reader of our own process, opened and closed, must not drop the store's locks (POSIX locks are the process's):
+    else the next process that closes the store deletes the log under the writer, and commits are lost."""
+    store.commit(step(1))
+    with open_reader(path) as reader:
+        assert reader.streams()
+    code = (
+        "import sqlite3, sys; c = sqlite3.connect(sys.argv[1]); c.execute('select count(*) from pane_part').fetchone();"
+        "c.close()"
+    )
+    subprocess.run([sys.executable, "-c", code, str(path)], check=True)
+    assert path.with_name(path.name + "-wal").exists()
+    store.commit(step(2))
+    counted = code.replace("c.close()", "print(c.execute('select count(*) from pane_part').fetchone())")
+    found = subprocess.run([sys.executable, "-c", counted, str(path)], check=True, capture_output=True, text=True)
+    assert found.stdout.strip() == "(2,)"

@@ -75,9 +75,9 @@ class PaneBuilder:
             places, sizes, times = able.tolist(), sizes[able], times[able]
         ranks = list(zip((-sizes).tolist(), times.tolist(), strict=True))
         if ranks and (len(self._top) < LARGEST_KEPT or min(ranks) <= self._top[-1]):
-            self._enter(ranks, [(describe, i) for i in places])
+            self._enter(ranks, lambda k: describe(places[k]))
 
-    def _enter(self, ranks: list[tuple[float, int]], describes: Sequence[tuple[Describe, int]]) -> None:
+    def _enter(self, ranks: list[tuple[float, int]], describe: Describe) -> None:
         """Describe those among some events that are among the largest so far."""
         if not ranks:
             return
@@ -85,18 +85,18 @@ class PaneBuilder:
         last = self._top[-1]
         if len(self._top) == LARGEST_KEPT:
             self.bar = -last[0]
-        for rank, (describe, i) in zip(ranks, describes, strict=True):
+        for k, rank in enumerate(ranks):
             if rank <= last:
-                digest, place = describe(i)
+                digest, place = describe(k)
                 self._events.append(LargeEvent(-rank[0], rank[1], digest, place))
 
     def build(self, distinct: int) -> Pane:
         """The pane of all events taken in since the last time."""
         return build_panes([self], distinct)[0]
 
-    def name(self, ranks: list[tuple[float, int]], describes: Sequence[tuple[Describe, int]]) -> tuple[LargeEvent, ...]:
+    def name(self, ranks: list[tuple[float, int]], describe: Describe) -> tuple[LargeEvent, ...]:
         """The largest events of this part; given are the largest of those that were only remembered."""
-        self._enter(ranks, describes)
+        self._enter(ranks, describe)
         able = [event for event in self._events if (-event.size, event.time) <= self._top[-1]]
         self._able, self._events = [], []
         return tuple(sorted(able, key=rank_of)[:LARGEST_KEPT])
@@ -150,21 +150,29 @@ def _named_together(builders: Sequence[PaneBuilder]) -> list[tuple[LargeEvent, .
     """The events of each builder that are kept by name; found by two sorts for all of them."""
     batches = [(owner, able) for owner, builder in enumerate(builders) for able in builder._able]
     if not batches:
-        return [builder.name([], []) for builder in builders]
+        return [builder.name([], _nothing) for builder in builders]
     sizes = np.concatenate([able.sizes for _, able in batches])
     times = np.concatenate([able.times for _, able in batches])
     lengths = np.array([able.sizes.size for _, able in batches], np.int64)
     owners = np.repeat(np.array([owner for owner, _ in batches], np.int64), lengths)
     kept = _largest(sizes, times, owners, len(builders))
     batch = np.repeat(np.arange(lengths.size), lengths)[kept]
-    places = (kept - (np.cumsum(lengths) - lengths)[batch]).tolist()
-    describes = [(batches[b][1].describe, i) for b, i in zip(batch.tolist(), places, strict=True)]
+    places = kept - (np.cumsum(lengths) - lengths)[batch]
+
+    def describe(k: int) -> tuple[str, str]:
+        _, able = batches[int(batch[k])]
+        return able.describe(int(places[k]))
+
     ranks = list(zip((-sizes[kept]).tolist(), times[kept].tolist(), strict=True))
     cuts = np.searchsorted(owners[kept], np.arange(len(builders) + 1)).tolist()
     return [
-        builder.name(ranks[low:high], describes[low:high])
+        builder.name(ranks[low:high], lambda k, low=low: describe(low + k))  # type: ignore[misc]
         for builder, (low, high) in zip(builders, pairwise(cuts), strict=True)
     ]
+
+
+def _nothing(k: int) -> tuple[str, str]:
+    raise IndexError(k)
 
 
 def _largest(

@@ -28,9 +28,13 @@ ANSWER_LOOK = 0.1
 
 
 class Page(msgspec.Struct, frozen=True, kw_only=True):
-    """Where the reader is: which stream is marked, if it is looked at closely and which side of it, if help is open."""
+    """Where the reader is: which stream is marked, if it is looked at closely and which side of it, if help is open.
+
+    chosen  the reader moved the mark; until then it stays on the first stream, whichever that is
+    """
 
     selected: str | None = None
+    chosen: bool = False
     close: bool = False
     help: bool = False
     side: Side = "tail"
@@ -52,7 +56,8 @@ def turned(page: Page, key: str, names: list[str], step: int) -> Page:
         moves |= {"left": -1, "right": 1}
     if key in moves:
         at = max(0, min(at + moves[key], len(names) - 1))
-    return msgspec.structs.replace(page, selected=names[at], close=page.close or key == "enter")
+    chosen = page.chosen or key in moves or key == "enter"
+    return msgspec.structs.replace(page, selected=names[at], chosen=chosen, close=page.close or key == "enter")
 
 
 class _Glance:
@@ -119,14 +124,16 @@ def run_live(
     clock = clock or SystemClock()
     glance = _Glance(watch)
     acting = Acting(watch, clock)
-    page = Page(selected=stream, close=stream is not None)
+    page = Page(selected=stream, chosen=stream is not None, close=stream is not None)
     with acting, Terminal(console) as terminal:
         while not over():
             now = clock.now()
             glance.renew(page)
             names = [one.stream.name for one in glance.order(now)]
             if page.selected not in names:
-                page = msgspec.structs.replace(page, selected=names[0] if names else None, close=False)
+                page = msgspec.structs.replace(page, chosen=False, close=False)
+            if not page.chosen:
+                page = msgspec.structs.replace(page, selected=names[0] if names else None)
             look = msgspec.structs.replace(look, width=max(1, console.width), height=max(1, console.height))
             terminal.paint(glance.lines(page, look, now, acting.asked()))
             for key in terminal.keys(_next_look(acting.waiting)):

@@ -22,7 +22,7 @@ from storage.facts import AlarmMoved, NoteWritten
 NEAR = 7 * DAY
 """Notes from so long before what is shown on are near it."""
 NOTES = 5
-_RULE_CELLS, _PERCENT_CELLS = 12, 6
+_RULE_CELLS, _PERCENT_CELLS = 12, 9
 _ROOM_FOR_WHAT = 110
 
 

@@ -48,14 +48,15 @@ def test_what_is_typed_and_what_comes_in_parts() -> None:
 def test_pages_turn_with_the_keys() -> None:
     names = ["a", "b", "c"]
     page = turned(Page(selected="a"), "down", names, 2)
-    assert page.selected == "b"
+    assert (page.selected, page.chosen) == ("b", True)
+    assert not turned(Page(selected="a"), "help", names, 2).chosen
     assert turned(page, "page down", names, 2).selected == "c"
     close = turned(page, "enter", names, 2)
     assert (close.selected, close.close) == ("b", True)
-    assert turned(close, "right", names, 2) == Page(selected="c", close=True)
+    assert turned(close, "right", names, 2) == Page(selected="c", chosen=True, close=True)
     assert turned(page, "right", names, 2) == page
     assert turned(page, "side", names, 2) == page
-    assert turned(close, "side", names, 2) == Page(selected="b", close=True, side="watch")
+    assert turned(close, "side", names, 2) == Page(selected="b", chosen=True, close=True, side="watch")
     assert turned(turned(close, "side", names, 2), "side", names, 2) == close
     helped = turned(close, "help", names, 2)
     assert turned(helped, "down", names, 2) == helped

@@ -18,7 +18,7 @@ from monitor.render.screen import overview
 from monitor.render.seen import Seen
 from monitor.render.stream_rows import state_word
 from monitor.render.words.findings import Finding
-from monitor.render.words.watch import promise_words, unwatched_words, way_bar, way_words
+from monitor.render.words.watch import promise_words, unwatched_words, way_bar, way_percent, way_words
 from monitor.watch.rules import Reading
 from storage.facts import AlarmStood, ChangeAccepted, Fact
 from tests.stores import (
@@ -173,6 +173,13 @@ def test_the_way_in_cells_and_words(way: float, bar: str, words: str) -> None:
         direction="heavier",
     )  # fmt: skip
     assert (way_bar(way), way_words(reading)) == (bar, words)
+
+
+@pytest.mark.parametrize(
+    ("way", "words"), [(0.0, "under 1 %"), (0.0099, "under 1 %"), (0.4949, "49 %"), (0.999, "99 %"), (1.0, "100 %")]
+)
+def test_the_way_in_per_cent(way: float, words: str) -> None:
+    assert way_percent(way) == words
 
 
 @pytest.mark.parametrize("change", ["update alarm set alarm = '{}'", "update watch set watch = '[1]'",

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from monitor.alarms.priorities import Rule
 from monitor.plan.spans import DAY
-from monitor.render.numbers import count_text, percent
+from monitor.render.numbers import count_text
 from monitor.render.safe import plain
 from monitor.render.seen import Seen, StreamSeen, WatchSeen
 from monitor.render.times import plural
@@ -48,7 +48,14 @@ def way_words(reading: Reading) -> str:
 
 def way_text(reading: Reading) -> str:
     """'49 %', empty for a rule that gathers nothing."""
-    return "" if reading.ln_statistic is None else percent(reading.way)
+    return "" if reading.ln_statistic is None else way_percent(reading.way)
+
+
+def way_percent(way: float) -> str:
+    """Whole per cents: '49 %'; 'under 1 %'; only a rule that speaks is at '100 %'."""
+    if way >= 1:
+        return "100 %"
+    return f"{min(99, round(100 * way))} %" if way >= 0.01 else "under 1 %"
 
 
 def days_words(days: float) -> str:
@@ -101,9 +108,11 @@ def gathered_words(watch: WatchSeen) -> str:
         text = "Watch: nothing gathered yet"
     else:
         others = [one.way for one in watch.readings if one.ln_statistic is not None and one is not nearest]
-        text = f"Watch: {nearest.rule} {percent(nearest.way)} of the way to speaking"
+        text = f"Watch: {nearest.rule} {way_percent(nearest.way)} of the way to speaking"
         which = nearest.direction if nearest.way >= _SAYS_WHICH_WAY and nearest.rule != "level" else None
         text += f" (towards {which})" if which else ""
-        text += f", the others {percent(max(others))} or less" if others else ""
+        if others:
+            most = way_percent(max(others))
+            text += f", the others {most if most.startswith('under') else f'{most} or less'}"
     missing = ", ".join(one.rule for one in watch.watch.unwatched)
     return f"{text}; not watched: {missing}." if missing else f"{text}."

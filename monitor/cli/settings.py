@@ -47,8 +47,6 @@ def _lines(plan: Plan) -> list[str]:
         lines.append(f"           {pattern}: {', '.join(_change_words(k, v) for k, v in sorted(changes.items()))}")
     for change in plan.known:
         lines.append(f"known      {change.streams}: {change.reason} ({change.effect})")
-    for key in plan.not_yet:
-        lines.append(f"note       {key} is understood, but this version does not act on it")
     return lines
 
 

@@ -65,6 +65,8 @@ SHAPES = [
     ' {{ "units" : {number} , "dock":\t"{name}","x":[1,-2.5e3,{{"units":3}},[],{{}}],"at":"{stamp}" }} ',
     '{{"a":{{"b":{{"units":{number},"dock":"{name}","n":{n}}},"at":"{stamp}","x":"{text}"}},"y":{n}}}',
     '{{"a":{{"b":{{"units":{number},"dock":"{name}"}},"at":"{stamp}"}},"a":{n}}}',
+    '{{"a":{{"b":{{"units":{number},"dock":"{name}"}},"at":"{stamp}"}},"a":{{"x":{n}}}}}',
+    '{{"order":{{"units":{number}}},"dock":"{name}","at":"{stamp}","order":{{}}}}',
     '{{"a":1,"a":{{"b":{{"units":{number},"dock":"{name}"}},"at":"{stamp}"}}}}',
     '{{"units":{number},"dock":"{name}","at":"{stamp}","units":{number},"{text}":{n}}}',
     '{{"n":{n},"dock":{n},"units":{number},"at":{n},"n2":"{name}","z":true,"f":false,"0":null}}',

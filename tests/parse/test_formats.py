@@ -210,5 +210,5 @@ def test_a_line_too_long_for_a_pattern_is_not_matched() -> None:
 
 @pytest.mark.parametrize("field", ['a"b', "a\x07", "order.a\tb"])
 def test_a_field_that_no_record_can_name_is_refused_in_words(field: str) -> None:
-    with pytest.raises(FormatError, match="size: .* holds a quote, a backslash or a control character"):
+    with pytest.raises(FormatError, match=r"size: .* holds a quote, a backslash or a control character"):
         compile_parser(LineFormat(lines="json", size=field))

@@ -25,6 +25,7 @@ from monitor.tail.tails import Floats, Tails, order_limits, size_of
 from monitor.tail.top_share import top_share_of
 
 _Z = 1.959963984540054  # 97.5 % point of the normal distribution
+_WIDEST = 700.0  # half an interval of a logarithm: beyond, doubles end
 TOP_FRACTION = 0.2
 
 
@@ -135,6 +136,7 @@ def _chance_of_passing(sample: Sample, fit: TailFit, draws: Draws | None, size: 
         return seen.share, (seen.low, seen.high)
     if draws is None or len(draws.alpha) < 39:
         half = _Z * sqrt(((log(size) - log(fit.xmin)) * fit.alpha_se) ** 2 + _share_variance(fit))
+        half = min(half, _WIDEST)
         return one, (one * float(np.exp(-half)), min(one * float(np.exp(half)), 1.0))
     values = Tails.of_draws(draws, fit.counting).chance(size)
     return one, order_limits(values, missing=(seen.low, seen.high))

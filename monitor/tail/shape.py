@@ -111,7 +111,8 @@ def _pile_up(sample: Sample, xmin: float) -> str | None:
         return None
     return (
         f"{grouped(pile)} of {grouped(int(counts.sum()))} tail events have the largest size, {top:.6g}: it looks like "
-        "a cap (a time-out or a limit); what would lie beyond it cannot be seen, and levels above it are not to be trusted"
+        "a cap (a time-out or a limit); what would lie beyond it cannot be seen, and levels above it are not to be "
+        "trusted"
     )
 
 

@@ -13,6 +13,8 @@ from scipy.special import zeta
 Floats = NDArray[np.float64]
 
 _EXACT_INTEGERS = 2.0**53
+_LEAST = 1e-300
+_STEEP_TERMS = np.arange(2200.0)  # the last is exp(-44) of the first at most
 
 
 def log_zeta(alpha: Floats, q: Floats) -> Floats:
@@ -29,9 +31,18 @@ def log_zeta(alpha: Floats, q: Floats) -> Floats:
     fourth = (a - 1) * a * (a + 1) * (a + 2) / (720 * safe**4)
     sixth = fourth * (a + 3) * (a + 4) / (42 * safe**2)
     series = (1 - a) * np.log(np.where(far, q, 1e6)) - np.log(a - 1) + np.log1p(first + second - fourth + sixth)
-    near = np.log(np.maximum(zeta(np.where(far, 2.0, alpha), np.where(far, 1.0, q)), 1e-300))
-    out: Floats = np.where(far, series, near)
+    value = zeta(np.where(far, 2.0, alpha), np.where(far, 1.0, q))
+    out: Floats = np.where(far, series, np.log(np.maximum(value, _LEAST)))
+    if np.any(value <= _LEAST):
+        tiny = value <= _LEAST
+        out[tiny] = _log_zeta_steep(alpha[tiny], q[tiny])
     return out
+
+
+def _log_zeta_steep(alpha: Floats, q: Floats) -> Floats:
+    """ln zeta(alpha, q) where zeta is no double, float64 (r,), for q <= 50 alpha: term by term beside the first."""
+    terms = -alpha[:, None] * np.log1p(_STEEP_TERMS / q[:, None])
+    return np.asarray(np.log(np.sum(np.exp(terms), axis=1)) - alpha * np.log(q), np.float64)
 
 
 def whole_quantile(alpha: Floats, xmin: Floats, log_survival: Floats) -> Floats:

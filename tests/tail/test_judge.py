@@ -184,6 +184,25 @@ def test_thousands_of_millions_of_events_at_few_sizes_go_onto_the_grid(counting)
     assert any("are judged by their exact sizes" in sentence for sentence in judged.assumed)
 
 
+STEEP = {
+    "whole": Sample(np.array([1.0, 2.0, 18.0, 21.0, 444.0, 1126.0]), np.array([162, 635045, 7, 1304, 4580396, 1655])),
+    "neighbours of 2^53": Sample.of_sizes(2.0**53 - np.arange(40)),
+    "last digits": Sample.of_sizes(0.2297 * (1 + 1e-14 * np.arange(40))),
+}
+
+
+@pytest.mark.parametrize("kind", STEEP)
+@pytest.mark.parametrize("counting", ["measured", "whole"])
+def test_steep_tails_give_an_answer_without_a_warning(kind, counting):
+    """Exponents of hundreds and more, where zeta is no double any more, and a limit far beyond."""
+    options = Options(counting=counting, replicates=0, limit=9e17, period_days=30.0, events_per_day=1e3, min_tail=2)
+    judged = judge(STEEP[kind], options)
+    assert judged.reason or judged.alpha > 1
+    if judged.alpha is not None and judged.alpha > 20:
+        assert judged.top_share.share == pytest.approx(0.2, rel=0.05)
+    json.dumps(as_document(judged), allow_nan=False)
+
+
 def said_of(sizes, **options):
     return judge(Sample.of_sizes(sizes), Options(rivals=False, **options)).warnings
 

@@ -1,5 +1,6 @@
 """Levels, limits, the largest event and the top share: brute force, second implementations, coverage."""
 
+import mpmath
 import numpy as np
 import pytest
 from scipy import stats
@@ -132,8 +133,6 @@ def test_whole_quantile_is_the_smallest_integer(alpha, xmin):
 
 
 def test_log_zeta_with_mpmath():
-    import mpmath
-
     with mpmath.workdps(40):
         for alpha, q in [(2.5, 5), (2.5, 400), (1.05, 3e6), (1.95, 1e9), (60.0, 12)]:
             assert float(log_zeta(alpha, q)) == pytest.approx(float(mpmath.log(mpmath.zeta(alpha, q))), abs=1e-12)
@@ -310,3 +309,12 @@ def test_whole_sizes_on_the_grid_begin_at_the_first_integer_of_the_cell():
     assert first[1].expected == pytest.approx(second[1].expected, rel=1e-12)
     assert first[2] == pytest.approx(second[2], rel=1e-9)
     assert top_share(on_edge, None, alpha_interval=None).share == top_share(exact, None, alpha_interval=None).share
+
+
+@pytest.mark.parametrize(
+    ("alpha", "q"), [(110.0, 3000.0), (748.2, 444.0), (907.4, 445.0), (5000.0, 2.0), (1200.0, 5e4)]
+)
+def test_log_zeta_where_zeta_is_no_double_agrees_with_mpmath(alpha, q):
+    with mpmath.workdps(40):
+        exact = mpmath.log(mpmath.fsum((mpmath.mpf(q) + k) ** (-mpmath.mpf(alpha)) for k in range(4000)))
+    assert float(log_zeta(np.array([alpha]), np.array([q]))[0]) == pytest.approx(float(exact), rel=1e-13)

@@ -175,6 +175,27 @@ def test_compiled_and_plain_agree(name: str, data: st.DataObject, filling: int, 
             agree(parser, format_, block, header=header, first=first)
 
 
+GOOD = {
+    "json flat": b'{"at":"2026-12-01T14:05:36.5Z","n":[-1.5,{"x":true}],"dock":"north","units":12.5,"y":"a \\u00e6"}',
+    "csv": b'north,2026-12-01T14:05:36.5Z,12.5,"a ""b"", c"',
+    "pairs": b'level=info at="2026-12-01T14:05:36+01:00" units=12.5 dock=north msg="a \\"b\\""',
+    "combined": b'1.2.3.4 - joe [10/Oct/2000:13:55:36 -0700] "GET /a HTTP/1.1" 200 1234 "-" "agent"',
+}
+
+
+@pytest.mark.parametrize("name", GOOD)
+def test_every_byte_of_a_good_line_matters_as_it_does_to_the_twin(name: str) -> None:
+    """Each byte replaced, left out and put in, each time right behind the good line whose layout is known."""
+    good, format_ = GOOD[name], COMPILED[name]
+    pieces = []
+    for at in range(len(good) + 1):
+        for byte in (b"", b"\xff", *(b"%c" % c for c in b'"\\:,07.e- \r}]=Z')):
+            pieces += [good, good[:at] + byte + good[at + 1 :], good, good[:at] + byte + good[at:]]
+    block = b"\n".join([*pieces, good, b""])
+    header = b"dock,at,units,more" if name == "csv" else None
+    agree(compile_parser(format_, compiled=True), format_, block, header=header)
+
+
 def good_lines(n: int) -> list[bytes]:
     chance = np.random.default_rng(3)
     return [
@@ -204,6 +225,21 @@ class _Counting:
 
     def parse(self, block: bytes, **_: object) -> None:
         raise AssertionError("a large block must not take the slower way as a whole")
+
+
+def test_numbers_are_the_nearest_floats() -> None:
+    """As float() of the standard library gives them, whose digits are rounded correctly."""
+    chance = np.random.default_rng(11)
+    texts = []
+    for _ in range(20_000):
+        digits = "".join(map(str, chance.integers(0, 10, chance.integers(1, 20))))
+        point = int(chance.integers(0, len(digits) + 1))
+        whole, rest = digits[:point].lstrip("0") or "0", digits[point:]
+        texts.append(f"{whole}.{rest}" if rest else whole)
+    texts = [text for text in texts if float(text) > 0]
+    block = "".join(f'{{"units":{text},"x":"{"y" * 40}"}}\n' for text in texts).encode()
+    parsed = compile_parser(LineFormat(lines="json", size="units"), compiled=True).parse(block)
+    assert parsed.sizes.tolist() == [float(text) for text in texts]
 
 
 def test_more_names_than_the_table_holds() -> None:

@@ -122,7 +122,7 @@ def json_line(f: LineFormat, text: str):
     if json_depth(text) > 100:
         return "reject", "nested too deep"
     try:
-        top = json.loads(text, parse_int=Num, parse_float=Num, parse_constant=refuse)
+        top = json.loads(text, parse_int=Num, parse_float=Num, parse_constant=refuse, object_pairs_hook=checked_pairs)
         no_surrogates(top)
     except ValueError:
         return "reject", "not JSON"
@@ -147,6 +147,14 @@ def json_line(f: LineFormat, text: str):
 
 def refuse(_):
     raise ValueError
+
+
+def checked_pairs(pairs):
+    """An object; also what a later value of the same name replaces has to be text."""
+    for key, value in pairs:
+        no_surrogates(key)
+        no_surrogates(value)
+    return dict(pairs)
 
 
 def no_surrogates(value):

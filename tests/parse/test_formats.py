@@ -13,6 +13,7 @@ from hypothesis import strategies as st
 from monitor.errors import DataError, SettingsError
 from monitor.parse import LineFormat, compile_parser
 from monitor.parse.csv_lines import split
+from monitor.parse.lines import FormatError
 from monitor.parse.pattern_guard import LONGEST_LINE, Unsafe, check_pattern
 
 

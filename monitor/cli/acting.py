@@ -110,7 +110,7 @@ class Acting:
         if self._typing is not None:
             alarm = self._typing.alarm
             name = f"{alarm.rule} of {plain(alarm.stream)}"
-            return Asked(f"Acknowledge {name}, with a note if you like (Enter sends, Esc cancels):", self._typing.text)
+            return Asked(f"Acknowledge {name}, with a note or none (Enter: send, Esc: do not):", self._typing.text)
         if self.waiting:
             return Asked("Asking ...")
         if self._answer and time.monotonic() - self._answered < ANSWER_SECONDS:

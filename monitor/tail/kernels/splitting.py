@@ -103,7 +103,7 @@ def _unforeseen(state: Any, n: float, p: float, v: float) -> Any:
     """The left half of a node that the uniform number v alone does not settle."""
     q = min(p, 1.0 - p)
     if n * q < REJECTED_FROM:
-        return np.float64(binomial(state, n, p))
+        return np.float64(binomial(state, int64(n), p))
     k = by_rejection(state, n, q, v)
     return k if p <= 0.5 else n - k
 

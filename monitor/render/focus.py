@@ -11,7 +11,7 @@ from monitor.render.attention import Sorted, sorted_stream
 from monitor.render.charts import TailDrawing, chart_legend, tail_chart
 from monitor.render.frame import ABNORMAL, STRONG, Asked, Look, Part, cut_to, foot_lines, head_line, paragraph, styled
 from monitor.render.numbers import count_text, place_of, size_text, with_bounds
-from monitor.render.sayings import alarm_saying, said
+from monitor.render.sayings import alarm_saying, as_long_as_fits
 from monitor.render.seen import FeedAccount, Seen, StreamSeen
 from monitor.render.stream_rows import age_text, state_word
 from monitor.render.tables import RefitRow, history_table
@@ -42,7 +42,7 @@ CHART = 24
 COMFORTABLE_CHART = 14
 """Lines that the drawing keeps where rules and past alarms stand on the same page."""
 LEAST_REFITS = 2
-TALL = 40
+TALL = 36
 """From this height on the side of the watch tells alarms at length, though they stand in its list as well."""
 
 
@@ -77,24 +77,31 @@ def focus_page(
     foot = foot_lines(look, KEYS[side], asked) if live else []
     head = [head_line(look, f"{focused.stream.name}  ({seen.store})", now, zone)]
     head += paragraph(look, notice, style=ABNORMAL) if notice else []
-    room = look.height - len(head) - len(foot)
-    rules = _watch_block(focused, look, zone, now)
-    words = _headlines(focused, now, look, zone, brief=side == "watch" and look.height < TALL)
-    if side == "tail":
-        words += _figure_lines(focused.stream, now, look, zone)
-    tall = side == "tail" and room - len(words) - len(rules) - LEAST_REFITS >= COMFORTABLE_CHART
-    if not tall and side == "tail":
-        words = [*_headlines(focused, now, look, zone), *_watch_sentence(focused.stream, look)]
-        words += _figure_lines(focused.stream, now, look, zone)
-    most = max(4, room * 9 // 20)
-    words = words if len(words) <= most or tall else _shortened(words, most, look)
-    room -= len(words) + len(rules) * tall
-    if side == "watch":
-        below = rules if len(rules) <= room else _shortened(rules, room, look)
-    else:
-        below = [*(rules if tall else []), *_tail_side(focused, msgspec.structs.replace(look, height=room), zone)]
-    lines = [*head, *words, *below]
+    inner = msgspec.structs.replace(look, height=look.height - len(head) - len(foot))
+    body = _tail_page(focused, now, inner, zone) if side == "tail" else _watch_page(focused, now, inner, zone)
+    lines = [*head, *body]
     return cut_to(look, lines, foot) if live else lines[: look.height]
+
+
+def _tail_page(focused: Focused, now: int, look: Look, zone: str) -> list[Text]:
+    """Sentences, drawing and refits in look.height lines; the watch in full where there is room, else in a sentence."""
+    room, rules = look.height, _watch_block(focused, look, zone, now)
+    figures = _figure_lines(focused.stream, now, look, zone)
+    words = [*_headlines(focused, now, look, zone, room), *figures, *rules]
+    if room - len(words) - LEAST_REFITS < COMFORTABLE_CHART:
+        most = max(4, room * 9 // 20)
+        words = [*_headlines(focused, now, look, zone, most // 2), *_watch_sentence(focused.stream, look), *figures]
+        words = words if len(words) <= most else _shortened(words, most, look)
+    return [*words, *_tail_side(focused, msgspec.structs.replace(look, height=room - len(words)), zone)]
+
+
+def _watch_page(focused: Focused, now: int, look: Look, zone: str) -> list[Text]:
+    """Headlines, rules, past alarms and notes in look.height lines."""
+    words = _headlines(focused, now, look, zone, look.height if look.height >= TALL else 0)
+    most = max(4, look.height * 9 // 20)
+    words = words if len(words) <= most else _shortened(words, most, look)
+    room, rules = look.height - len(words), _watch_block(focused, look, zone, now)
+    return [*words, *(rules if len(rules) <= room else _shortened(rules, room, look))]
 
 
 def _watch_block(focused: Focused, look: Look, zone: str, now: int) -> list[Text]:
@@ -125,12 +132,11 @@ def _shortened(lines: list[Text], room: int, look: Look) -> list[Text]:
     return [*lines[: room - 1], styled(look, Part(f"  ({plural(hidden, 'more line')} in a taller terminal)"))]
 
 
-def _headlines(focused: Focused, now: int, look: Look, zone: str, *, brief: bool = False) -> list[Text]:
-    """What asks for a look, in a line each if brief; for a quiet stream that it is quiet."""
+def _headlines(focused: Focused, now: int, look: Look, zone: str, room: int) -> list[Text]:
+    """What asks for a look, alarms as long as `room` lines take them; for a quiet stream that it is quiet."""
     stream = focused.stream
     one = sorted_stream(stream, zone, now)
-    depth = 0 if brief else 2 if len(one.alarms) == 1 else 1
-    lines = said(look, [alarm_saying(alarm, zone, now) for alarm in one.alarms], depth)
+    lines = as_long_as_fits(look, [alarm_saying(alarm, zone, now) for alarm in one.alarms], room)
     for finding in one.findings:
         style = "" if finding.refits else ABNORMAL
         lines += paragraph(look, _headline(finding), style=style, indent="  ", first="")

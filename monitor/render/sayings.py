@@ -81,7 +81,7 @@ def said(look: Look, sayings: Iterable[Saying], depth: int) -> list[Text]:
 
 
 def as_long_as_fits(look: Look, sayings: Sequence[Saying], room: int) -> list[Text]:
-    """All of them in at most `room` lines (a line each fits): the first are the first to be told at length.
+    """All of them in at most `room` lines, but a line each at least: the first are the first to be told at length.
 
     What stands behind them is told once every one has its whole sentence.
     """
@@ -95,7 +95,7 @@ def as_long_as_fits(look: Look, sayings: Sequence[Saying], room: int) -> list[Te
                 break
             used += len(longer) - len(blocks[at])
             blocks[at], depths[at] = longer, depth
-        if min(depths) < depth:
+        if any(told < depth for told in depths):
             break
     return [line for block in blocks for line in block]
 

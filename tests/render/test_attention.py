@@ -164,7 +164,7 @@ def test_a_promise_that_could_not_be_kept_says_so(tmp_path: Path) -> None:
         (0.0, "..........", "far from speaking"), (0.07, "#.........", "far from speaking"),
         (0.12, "#.........", "on its way, towards heavier"), (0.5, "#####.....", "half way, towards heavier"),
         (0.7, "#######...", "near speaking, towards heavier"), (0.99, "#########.", "about to speak, towards heavier"),
-        (1.0, "##########", "about to speak, towards heavier"),
+        (1.0, "##########", "speaks, towards heavier"),
     ],
 )  # fmt: skip
 def test_the_way_in_cells_and_words(way: float, bar: str, words: str) -> None:

@@ -66,12 +66,12 @@ north-dock  (orders.db)                                  1 Dec 2026 14:05:09 WET
 north-dock: tail heavier since about 12:00 WET (11:00 to 13:00); one event in
   10 000 passes 13 000 units now (planned 5 200), above the limit of 6 000 units
   (unacknowledged)
-north-dock: the limit of 6 000 units has been passed more often than agreed,
-  seen at 13:00 WET; now once in 14 days (agreed once in 30 days) (acknowledged
-  by ana)
+seen: north-dock: the limit of 6 000 units has been passed more often than agr..
 Watch: exponent 7 % of the way to speaking, the others 2 % or less; not
   watched: no events, rejects, body.
-  (12 more lines in a taller terminal)
+Alpha 2.21 (2.15 to 2.27), planned 2.50; the tail starts at 120 units (as good
+  from 96 to 140) and holds 2 310 of 81 050 events.
+  (10 more lines in a taller terminal)
 Share of events at or above a size: # data, + fit, b baseline, | limit
         all ###################                                   limit 6 000 |
                               #######                                         |

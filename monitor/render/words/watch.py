@@ -26,7 +26,7 @@ LOOKS_AT: dict[Rule, str] = {
 WAY_CELLS = 10
 _SAYS_WHICH_WAY = 0.1
 """Below this part of the way the direction is chance, and is not told."""
-_STEPS = ((0.9, "about to speak"), (0.6, "near speaking"), (0.35, "half way"), (0.1, "on its way"))
+_STEPS = ((1.0, "speaks"), (0.9, "about to speak"), (0.6, "near speaking"), (0.35, "half way"), (0.1, "on its way"))
 
 
 def way_bar(way: float) -> str:

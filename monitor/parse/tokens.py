@@ -81,7 +81,7 @@ def stamps_of(
         if not 0 < length <= _LONGEST_STAMP:
             continue
         if length < _LONGEST_NUMBER:
-            stamps[rows], read[rows] = _epochs(reader, digits_of(array, starts[rows], ends[rows]))
+            stamps[rows], read[rows] = _epochs(reader, digits_of(array, starts[rows], ends[rows]), length)
             left = rows[~read[rows]]
         else:
             left = rows
@@ -91,9 +91,10 @@ def stamps_of(
     return stamps, read
 
 
-def _epochs(reader: StampReader, d: Digits) -> tuple[NDArray[np.int64], Mask]:
-    """Epoch numbers with at most nine places; the others are left."""
+def _epochs(reader: StampReader, d: Digits, length: int) -> tuple[NDArray[np.int64], Mask]:
+    """Epoch numbers of one length with at most nine places; the others are left."""
     read = d.read & ~d.negative & (d.places <= 9)
+    read &= (d.count == length) | ((d.places > 0) & (d.places < d.count))  # digits on both sides of a point
     scale = 10 ** np.where(read, d.places, 0)
     whole = np.where(read, d.whole, 0)
     integer, rest = whole // scale, whole % scale

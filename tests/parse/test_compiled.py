@@ -175,6 +175,23 @@ def test_compiled_and_plain_agree(name: str, data: st.DataObject, filling: int, 
             agree(parser, format_, block, header=header, first=first)
 
 
+@pytest.mark.parametrize("name", COMPILED)
+def test_each_hard_value_in_each_shape(name: str) -> None:
+    """One value of an otherwise good line is hard; good lines stand between, so that their layout is known."""
+    good = {"stamp": STAMPS[0], "log": LOG_STAMPS[0], "text": "plain", "name": "north", "number": "12.5"}
+    good["n"] = "1764597936123"
+    stamps = [*STAMPS, *LOG_STAMPS, *NUMBERS, *(f"[{stamp}]" for stamp in LOG_STAMPS)]
+    hard = {"stamp": stamps, "log": stamps, "text": TEXTS, "name": TEXTS, "number": NUMBERS, "n": NUMBERS}
+    lines = []
+    for shape in dict.fromkeys(TEXT_SHAPES.get(name.split()[0], SHAPES)):
+        for slot, values in hard.items():
+            if f"{{{slot}}}" in shape:
+                lines += [line for v in values for line in (shape.format(**good), shape.format(**{**good, slot: v}))]
+    block = "\n".join([*lines, ""]).encode()
+    header = b"dock,at,units,more" if name == "csv" else None
+    agree(compile_parser(COMPILED[name], compiled=True), COMPILED[name], block, header=header)
+
+
 GOOD = {
     "json flat": b'{"at":"2026-12-01T14:05:36.5Z","n":[-1.5,{"x":true}],"dock":"north","units":12.5,"y":"a \\u00e6"}',
     "csv": b'north,2026-12-01T14:05:36.5Z,12.5,"a ""b"", c"',

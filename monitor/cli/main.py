@@ -10,6 +10,7 @@ from typing import Any
 import click
 
 from monitor import VERSION
+from monitor.cli.kernel_cache import use_kernel_cache
 from monitor.errors import MonitorError
 from storage.errors import StoreError
 
@@ -64,6 +65,7 @@ def group() -> None:
 
 def main(arguments: list[str] | None = None) -> None:
     """Run the command line and exit: 0 done, else the code of the contract in the README."""
+    use_kernel_cache()
     sys.exit(run_command(sys.argv[1:] if arguments is None else arguments))
 
 

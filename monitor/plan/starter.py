@@ -23,7 +23,7 @@ unit   = "units"                       # what the size is counted in, as people 
 [watch]                                # for every stream; [stream."north-*"] overrides, the longest match wins
 counting = "measured"                  # "whole" judges by the discrete law: your choice, never guessed
 pane = "1h"                            # one judgement each; divides a day, aligned to UTC
-slot = "1m"
+# slot = "1m"                          # understood; in this version the watch reads whole panes
 window = "14d"                         # what one judgement looks back on
 lateness = "2m"                        # how far lines of one file may be out of order
 idle = "10m"                           # a file silent for so long no longer holds the clock back

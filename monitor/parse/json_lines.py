@@ -41,7 +41,7 @@ def path_of(field: Field, key: str) -> tuple[str, ...]:
     names = tuple(part.replace("\\.", ".") for part in re.split(r"(?<!\\)\.", field))
     if not all(names):
         raise FormatError(f'{key}: {field!r} has an empty name between its points; write "\\\\." for a point in a name')
-    if not all(name.isprintable() and '"' not in name and "\\" not in name for name in names):
+    if any(char < " " or char in '"\\' for name in names for char in name):
         raise FormatError(f"{key}: {field!r} holds a quote, a backslash or a control character, which no field may")
     return names
 

@@ -28,9 +28,9 @@ from monitor.service.clock import ScaledClock
 from monitor.tail.judge import compile_everything
 from storage.history import open_reader
 
-FULL_SECONDS, FAST_SECONDS = 90.0, 20.0
+FULL_SECONDS, FAST_SECONDS = 90.0, 15.0
 DAYS = 10.0
-LEAD = 3.0
+LEAD = 2.5
 """Real seconds that writer and daemon get to start."""
 PATIENCE = 20.0
 """Real seconds that the daemon gets to judge what is left after the last line."""

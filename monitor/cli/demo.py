@@ -9,7 +9,7 @@ from rich.console import Console
 
 
 @click.command()
-@click.option("--fast", is_flag=True, help="Tell the story in 20 seconds instead of 90.")
+@click.option("--fast", is_flag=True, help="Tell the story in 15 seconds instead of 90.")
 @click.option("--seconds", type=click.FloatRange(min=5.0), help="Tell the story in so many seconds.")
 @click.option("--seed", type=click.IntRange(min=0), default=7, show_default=True, help="Of the invented orders.")
 @click.option("--dir", "folder", type=click.Path(path_type=Path), help="Keep log, settings and store in this folder.")

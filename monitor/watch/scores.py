@@ -14,6 +14,9 @@ import msgspec
 import numpy as np
 from numpy.typing import NDArray
 
+_LEAST = 1e-290
+"""Sums up to this are no past to compare with: a ratio to them could leave the doubles. Log sizes are 0 or far above."""
+
 
 class Past(msgspec.Struct, frozen=True):
     """What scores compare with: n values and their sum. `known`: the mean total / n is given, not estimated."""
@@ -55,7 +58,7 @@ def self_starting(values: NDArray[np.float64], past: Past, hold: bool = False) -
         # cumsum adds one after another: the sum is the same however a slot is cut into calls.
         running = np.cumsum(np.concatenate(([past.total], values)))
         before = running[:-1]
-    counted = (n > 0) & (before > 0)
+    counted = (n > 0) & (before > _LEAST)
     ratio = np.divide(values, before, out=np.zeros_like(values), where=counted)
     scores = n * ratio if past.known else n * np.log1p(ratio)
     after = past if past.known or hold else Past(past.n + values.size, float(running[-1]))

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 _LEAST = 1e-290
-"""Sums up to this are no past to compare with: a ratio to them could leave the doubles. Log sizes are 0 or far above."""
+"""Sums up to this are no past to compare with: a ratio to them could leave the doubles. Log sizes lie far above."""
 
 
 class Past(msgspec.Struct, frozen=True):

@@ -37,9 +37,3 @@ class OutputError(MonitorError):
     """A file that should be written cannot be."""
 
     exit_code = 73
-
-
-class AccessError(MonitorError):
-    """The operating system refuses access."""
-
-    exit_code = 77

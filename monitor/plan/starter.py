@@ -47,7 +47,7 @@ false_alarm_every = "90d"              # at most one false alarm in so long on a
 # to = 2026-11-30
 # streams = "*"
 # reason = "autumn promotion"
-# effect = "hold notices"              # or "not in baseline", "new baseline after"
+# effect = "hold notices"              # or "not in baseline" ("new baseline after" is understood, not acted on yet)
 
 # [notify.desk]                        # gets each notice as a CloudEvents 1.0 JSON document
 # command = ["./page-the-desk"]        # on its standard input; or: post = "https://...", or syslog = "udp://..."
